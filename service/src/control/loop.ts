@@ -1,0 +1,214 @@
+import { checkPlant, type Plant } from './plant.js';
+import {
+  add,
+  type Complex,
+  derivative,
+  evaluate,
+  multiply,
+  type Polynomial,
+  positiveRoots,
+  roots,
+  squaredMagnitude,
+  trim,
+} from './polynomial.js';
+import { checkGains, type Gains, setPointWeights, type Structure } from './pole-placement.js';
+
+/** A ratio of polynomials in s, coefficients by ascending power, without a common root at 0. */
+export interface TransferFunction {
+  numerator: Polynomial;
+  denominator: Polynomial;
+  /** Absolute rounding uncertainty of the denominator's coefficients, for `roots`. */
+  denominatorUncertainty: readonly number[];
+}
+
+/**
+ * Kd as it acts: 0 when KαKd is lost in the rounding of α + KαKd, so that a gain which is zero to rounding does
+ * not invent a zero or a phase crossover at 10¹⁷ rad/s.
+ */
+export function effectiveKd(plant: Plant, gains: Gains): number {
+  return Math.abs(plant.gain * gains.kd) <= 4 * Number.EPSILON ? 0 : gains.kd;
+}
+
+/** x, or 0 when x is only the rounding left over from terms of the given total size. */
+function unlessRounding(x: number, size: number): number {
+  return Math.abs(x) <= 4 * Number.EPSILON * size ? 0 : x;
+}
+
+/** Δ(s) = s³ + (α + KαKd)s² + KαKp s + KαKi with the rounding uncertainty of its coefficients. */
+export function characteristicPolynomial(
+  plant: Plant,
+  gains: Gains,
+): { coefficients: number[]; uncertainty: number[] } {
+  const b = plant.gain * plant.pole;
+  const damping = b * effectiveKd(plant, gains);
+  const coefficients = [b * gains.ki, b * gains.kp, plant.pole + damping, 1];
+  const eps = 4 * Number.EPSILON;
+  return {
+    coefficients,
+    uncertainty: [
+      eps * Math.abs(coefficients[0]!),
+      eps * Math.abs(coefficients[1]!),
+      eps * (plant.pole + Math.abs(damping)),
+      0,
+    ],
+  };
+}
+
+/**
+ * L(s) = C(s)G(s) = Kα(Kd s² + Kp s + Ki) / (s²(s + α)), the loop broken at the plant input. The same for all
+ * structures; delays are left out.
+ */
+export function openLoop(plant: Plant, gains: Gains): { numerator: number[]; denominator: number[] } {
+  const b = plant.gain * plant.pole;
+  return {
+    numerator: [b * gains.ki, b * gains.kp, b * effectiveKd(plant, gains)],
+    denominator: [0, 0, plant.pole, 1],
+  };
+}
+
+/**
+ * From target to position:
+ * T(s) = Kα(Ka s³ + (γKd + Kv)s² + βKp s + Ki)/Δ(s). With full feed-forward and β = γ = 1, T = 1.
+ * A common factor s (Ki = 0) is divided out.
+ */
+export function referenceTransfer(plant: Plant, gains: Gains, structure: Structure): TransferFunction {
+  const { beta, gamma } = setPointWeights(structure);
+  const b = plant.gain * plant.pole;
+  const kd = effectiveKd(plant, gains);
+  const square = unlessRounding(gamma * kd + gains.kv, gamma * Math.abs(kd) + Math.abs(gains.kv));
+  let numerator = trim([b * gains.ki, b * beta * gains.kp, b * square, b * gains.ka]);
+  let { coefficients: denominator, uncertainty } = characteristicPolynomial(plant, gains);
+  while (denominator[0] === 0 && numerator[0] === 0 && numerator.length > 1) {
+    numerator = numerator.slice(1);
+    denominator = denominator.slice(1);
+    uncertainty = uncertainty.slice(1);
+  }
+  return { numerator, denominator, denominatorUncertainty: uncertainty };
+}
+
+/** Poles of the closed loop: the roots of Δ(s), rad/s. A triple pole comes back as three equal reals. */
+export function closedLoopPoles(plant: Plant, gains: Gains): Complex[] {
+  const { coefficients, uncertainty } = characteristicPolynomial(plant, gains);
+  return roots(coefficients, uncertainty);
+}
+
+/** Whether Δ(s) has all its roots in the open left half plane (Routh): d₂, d₁, d₀ > 0 and d₂d₁ > d₀. */
+export function isStable(plant: Plant, gains: Gains): boolean {
+  const [d0 = 0, d1 = 0, d2 = 0] = characteristicPolynomial(plant, gains).coefficients;
+  return d0 > 0 && d1 > 0 && d2 > 0 && d2 * d1 - d0 > 4 * Number.EPSILON * d0;
+}
+
+export interface ClosedLoop {
+  /** Roots of Δ(s), rad/s, all three. */
+  poles: Complex[];
+  /** Roots of T's numerator, rad/s; a common root at 0 with Δ (Ki = 0) is left out. */
+  zeros: Complex[];
+  /** First frequency where |T| falls to −3 dB (10^(−3/20)) of its value at rest, Hz; null when it never does. */
+  bandwidthHz: number | null;
+  /** Largest |T|, dB; null when the loop is not stable or T is zero. */
+  peakDb: number | null;
+  /** Where, Hz: 0 when |T| is largest at rest, null when it is only approached at infinite frequency. */
+  peakHz: number | null;
+}
+
+/**
+ * Poles, zeros, bandwidth and resonance peak of the closed loop, from the exact polynomials in ω²: the
+ * bandwidth is a root of |num|²·|T(0)|⁻² − 10^(−0.3)·|den|², the peak a root of the derivative of |T|².
+ *
+ * @throws UnphysicalInputError naming the field
+ */
+export function closedLoop(plant: Plant, gains: Gains, structure: Structure): ClosedLoop {
+  checkPlant(plant);
+  checkGains(gains);
+  const poles = closedLoopPoles(plant, gains);
+  const transfer = referenceTransfer(plant, gains, structure);
+  if (transfer.numerator.every((c) => c === 0))
+    return { poles, zeros: [], bandwidthHz: null, peakDb: null, peakHz: null };
+  const zeros = roots(transfer.numerator);
+  const above = squaredMagnitude(transfer.numerator);
+  const below = squaredMagnitude(transfer.denominator);
+  const bandwidthHz = fallsTo(above, below, 10 ** -0.3);
+  // with Ki = 0 one pole rests at 0 and cancels; what is left decides
+  const live = poles.filter((z) => z.re !== 0 || z.im !== 0);
+  const stable = live.length >= transfer.denominator.length - 1 && live.every((z) => z.re < 0);
+  if (!stable) return { poles, zeros, bandwidthHz, peakDb: null, peakHz: null };
+  const peak = supremum(above, below);
+  return {
+    poles,
+    zeros,
+    bandwidthHz,
+    peakDb: 10 * Math.log10(peak.value),
+    peakHz: peak.at === null ? null : Math.sqrt(peak.at) / (2 * Math.PI),
+  };
+}
+
+/** First frequency, Hz, where above/below (polynomials in ω²) falls to `share` of its value at 0. */
+function fallsTo(above: Polynomial, below: Polynomial, share: number): number | null {
+  const atRest = above[0]! / below[0]!;
+  if (!Number.isFinite(atRest) || atRest === 0) return null;
+  const difference = add(above, below, -share * atRest);
+  for (const x of positiveRoots(difference))
+    if (evaluate(derivative(difference), x) < 0) return Math.sqrt(x) / (2 * Math.PI);
+  return null;
+}
+
+/**
+ * Supremum over ω of above/below, polynomials in x = ω²: compared are x = 0, every stationary point (root of
+ * above'·below − above·below') and the limit at infinity. `at` is ω², or null when only approached at infinity.
+ */
+export function supremum(above: Polynomial, below: Polynomial): { value: number; at: number | null } {
+  const a = trim(above);
+  const b = trim(below);
+  let best: { value: number; at: number | null } = { value: a[0]! / b[0]!, at: 0 };
+  const stationary = add(multiply(derivative(a), b), multiply(a, derivative(b)), -1);
+  // the leading terms cancel when numerator and denominator have the same degree
+  if (a.length === b.length) stationary[a.length + b.length - 3] = 0;
+  if (stationary.some((c) => c !== 0))
+    for (const x of positiveRoots(stationary)) {
+      const value = evaluate(a, x) / evaluate(b, x);
+      // a relative 1e-12 keeps rounding from naming a peak on a flat response
+      if (value > best.value * (1 + 1e-12)) best = { value, at: x };
+    }
+  if (a.length === b.length) {
+    const limit = a[a.length - 1]! / b[b.length - 1]!;
+    if (limit > best.value * (1 + 1e-12)) best = { value: limit, at: null };
+  }
+  return best;
+}
+
+/**
+ * Steady-state errors r − y of the closed loop, from (1 − T)/s^k at s → 0:
+ *
+ * - ramp r = t: Kp(1 − β)/Ki (I-PD 3/λ for a triple pole), else 0
+ * - acceleration r = t²/2: (α + KαKd(1 − γ) − KαKv)/(KαKi)
+ *   (PID α/λ³, PI-D 3/λ², 0 with the full feed-forward), unbounded where the ramp error is not 0
+ *
+ * With Ki = 0 the ramp error is (α + KαKd(1 − γ) − KαKv)/(KαKp) and the acceleration error follows if that is
+ * 0. Null where the error grows without bound or the loop is not stable.
+ */
+export function steadyErrors(
+  plant: Plant,
+  gains: Gains,
+  structure: Structure,
+): { ramp: number | null; acceleration: number | null } {
+  checkPlant(plant);
+  checkGains(gains);
+  const none = { ramp: null, acceleration: null };
+  const { beta, gamma } = setPointWeights(structure);
+  const b = plant.gain * plant.pole;
+  const held = b * effectiveKd(plant, gains) * (1 - gamma);
+  const lag = unlessRounding(
+    plant.pole + held - b * gains.kv,
+    plant.pole + Math.abs(held) + Math.abs(b * gains.kv),
+  );
+  if (gains.ki !== 0) {
+    if (!isStable(plant, gains)) return none;
+    const ramp = ((1 - beta) * gains.kp) / gains.ki;
+    return { ramp, acceleration: ramp === 0 ? lag / (b * gains.ki) : null };
+  }
+  const [, d1 = 0, d2 = 0] = characteristicPolynomial(plant, gains).coefficients;
+  if (!(d1 > 0 && d2 > 0) || beta === 0) return none;
+  const ramp = lag / (b * gains.kp);
+  const rest = unlessRounding(1 - b * gains.ka, 1 + Math.abs(b * gains.ka));
+  return { ramp, acceleration: ramp === 0 ? rest / (b * gains.kp) : null };
+}
