@@ -1,0 +1,360 @@
+import type { PlantPrior } from './plant-estimate.js';
+import { PRODUCT_SUMS } from './motion-regression.js';
+
+/**
+ * The sample-by-sample part of identification: a delay line, the velocity's sign, six filtered signals and
+ * their sums of products, all of it in one Float64Array per axis.
+ */
+
+/** Samples that the delay line holds; a power of two. */
+const LINE = 64;
+const LINE_MASK = LINE - 1;
+/** Seconds of motion in one block of sums. */
+const BLOCK_SECONDS = 1;
+/** Stream seconds after which a block with some motion closes all the same. */
+const BLOCK_PATIENCE = 15;
+const BLOCK_LEAST_MOTION = 0.3;
+
+/** A block: its sums of products, then these counts. */
+export const BLOCK = {
+  learned: PRODUCT_SUMS,
+  elapsed: PRODUCT_SUMS + 1,
+  forward: PRODUCT_SUMS + 2,
+  reverse: PRODUCT_SUMS + 3,
+  atLimit: PRODUCT_SUMS + 4,
+  residualSquare: PRODUCT_SUMS + 5,
+  velocity: PRODUCT_SUMS + 6,
+  velocitySquare: PRODUCT_SUMS + 7,
+  simulated: PRODUCT_SUMS + 8,
+  window: PRODUCT_SUMS + 9,
+  length: PRODUCT_SUMS + 10,
+} as const;
+
+/** Where things stand in the state. */
+export const STATE = {
+  /** Samples in the delay line since the last gap, capped. */
+  filled: 0,
+  write: 1,
+  /** Samples until the filters have forgotten their start. */
+  settling: 2,
+  resting: 3,
+  phase: 4,
+  /** Dead time assumed by the delay line, s. */
+  deadTime: 5,
+  /** Velocity simulated with the current estimate: v ← a·v + gated (gain·u ∓ friction). */
+  simulatedVelocity: 6,
+  simA: 7,
+  simForward: 8,
+  simReverse: 9,
+  simFrictionForward: 10,
+  simFrictionReverse: 11,
+  simReady: 12,
+  /** Bookkeeping of blocks and windows, by the identifier. */
+  blockCount: 13,
+  blockNext: 14,
+  windowOpen: 15,
+  windowTaken: 16,
+  delayShift: 17,
+  /** Inputs of the interval before, for the hold's weighted mean. */
+  previous: 18,
+  /** Three stages of each of six signals. */
+  filters: 24,
+  positions: 42,
+  outputs: 42 + LINE,
+  block: 42 + 2 * LINE,
+  ring: 42 + 2 * LINE + BLOCK.length,
+} as const;
+
+/** Constants of an axis's filters, all following from its prior. */
+export interface FilterPlan {
+  readonly sampleTime: number;
+  readonly resolution: number;
+  /** Filter bandwidth, rad/s. */
+  readonly bandwidth: number;
+  /** Filter step 1 − e^(−ωT). */
+  readonly step: number;
+  /** Velocity span: samples on each side of the interval, 2·reach − 1 in all. */
+  readonly reach: number;
+  /** Counts over the span from which on the axis surely moves. */
+  readonly movingCounts: number;
+  readonly settleSamples: number;
+  /** Every how many samples the filtered signals enter the sums. */
+  readonly stride: number;
+  /** Hold weights of the newer and the older interval. */
+  readonly newer: number;
+  readonly older: number;
+  readonly longestDelay: number;
+}
+
+/**
+ * Filter bandwidth 1.5·α, at least 20 rad/s so that production moves pass, at most 0.35/T; span of the
+ * velocity sign a quarter of the plant's time constant, longer where the resolution is coarse (common
+ * practice, no source).
+ */
+export function filterPlan(prior: PlantPrior): FilterPlan {
+  const { sampleTime: T, resolution, pole } = prior;
+  const bandwidth = Math.min(Math.max(1.5 * pole, 20), 0.35 / T);
+  const spanSeconds = Math.min(Math.max(0.25 / pole, resolution, 3 * T), 0.04);
+  const reach = Math.min(Math.max(Math.round((spanSeconds / T + 1) / 2), 2), 16);
+  const aT = pole * T;
+  const decay = Math.exp(-aT);
+  // b₁ and b₂ of the zero-order hold, divided by their sum K(1 − a)T (see control.md, "Plant").
+  const b1 = aT < 1e-4 ? 0.5 + aT / 12 : (aT - (1 - decay)) / (aT * (1 - decay));
+  return {
+    sampleTime: T,
+    resolution,
+    bandwidth,
+    step: 1 - Math.exp(-bandwidth * T),
+    reach,
+    movingCounts: 3,
+    settleSamples: Math.ceil(10 / (bandwidth * T)),
+    stride: Math.max(1, Math.floor(0.25 / (bandwidth * T))),
+    newer: b1,
+    older: 1 - b1,
+    longestDelay: (LINE - 2 * 16 - 4) * T,
+  };
+}
+
+/** Puts the delay line and the filters at their start; sums stay. */
+export function restartFilters(state: Float64Array, plan: FilterPlan): void {
+  state[STATE.filled] = 0;
+  state[STATE.write] = 0;
+  state[STATE.settling] = plan.settleSamples;
+  state[STATE.resting] = 0;
+  state[STATE.simulatedVelocity] = 0;
+  state.fill(0, STATE.previous, STATE.block);
+}
+
+/**
+ * Takes samples until the open block is full or the chunk ends.
+ *
+ * @param position counts; @param output 0.01 %.
+ * @returns index of the first sample not taken.
+ */
+export function filterSamples(
+  state: Float64Array,
+  plan: FilterPlan,
+  position: Int32Array,
+  output: Int16Array,
+  from: number,
+  to: number,
+): number {
+  const T = plan.sampleTime;
+  const perSecond = plan.resolution / T;
+  const g = plan.step;
+  const rate = 1 / T;
+  const { newer, older, reach, movingCounts, stride, settleSamples } = plan;
+  const span = 2 * reach - 1;
+  const spanVelocity = plan.resolution / (span * T);
+  const delaySamples = state[STATE.deadTime]! / T;
+  const d = Math.floor(delaySamples);
+  const late = delaySamples - d;
+  const prompt = 1 - late;
+  const need = Math.max(span, reach + d + 1) + 1;
+  const lineP = STATE.positions;
+  const lineU = STATE.outputs;
+  const B = STATE.block;
+  const blockLearned = Math.ceil(BLOCK_SECONDS / (T * stride));
+
+  let filled = state[STATE.filled]!;
+  let w = state[STATE.write]!;
+  let settling = state[STATE.settling]!;
+  let resting = state[STATE.resting]!;
+  let phase = state[STATE.phase]!;
+  let vSim = state[STATE.simulatedVelocity]!;
+  const simReady = state[STATE.simReady]! > 0;
+  const simA = state[STATE.simA]!;
+  const simF = state[STATE.simForward]!;
+  const simR = state[STATE.simReverse]!;
+  const simCF = state[STATE.simFrictionForward]!;
+  const simCR = state[STATE.simFrictionReverse]!;
+  let learned = state[B + BLOCK.learned]!;
+
+  const P = STATE.previous;
+  let uf0 = state[P]!;
+  let ur0 = state[P + 1]!;
+  let sf0 = state[P + 2]!;
+  let sr0 = state[P + 3]!;
+  let du0 = state[P + 4]!;
+  const F = STATE.filters;
+  let v1 = state[F]!;
+  let v2 = state[F + 1]!;
+  let v3 = state[F + 2]!;
+  let a1 = state[F + 3]!;
+  let a2 = state[F + 4]!;
+  let a3 = state[F + 5]!;
+  let b1 = state[F + 6]!;
+  let b2 = state[F + 7]!;
+  let b3 = state[F + 8]!;
+  let c1 = state[F + 9]!;
+  let c2 = state[F + 10]!;
+  let c3 = state[F + 11]!;
+  let e1 = state[F + 12]!;
+  let e2 = state[F + 13]!;
+  let e3 = state[F + 14]!;
+  let h1 = state[F + 15]!;
+  let h2 = state[F + 16]!;
+  let h3 = state[F + 17]!;
+
+  let k = from;
+  for (; k < to && learned < blockLearned; k++) {
+    const p = position[k]!;
+    state[lineP + w] = p;
+    state[lineU + w] = output[k]! * 0.01;
+    const now = w;
+    w = (w + 1) & LINE_MASK;
+    if (filled < need) {
+      filled++;
+      if (filled < need) continue;
+    }
+    const i = now - reach;
+    const counts = p - state[lineP + ((now - span) & LINE_MASK)]!;
+    const velocity = (state[lineP + ((i + 1) & LINE_MASK)]! - state[lineP + (i & LINE_MASK)]!) * perSecond;
+    const uNew = state[lineU + ((i - d) & LINE_MASK)]!;
+    const uOld = state[lineU + ((i - d - 1) & LINE_MASK)]!;
+    const u = prompt * uNew + late * uOld;
+
+    let uf = 0;
+    let ur = 0;
+    let sf = 0;
+    let sr = 0;
+    let du = 0;
+    let moving = true;
+    if (counts >= movingCounts) {
+      uf = u;
+      sf = 1;
+      du = (uNew - uOld) * rate;
+      vSim = simA * vSim + simF * u - simCF;
+    } else if (counts <= -movingCounts) {
+      ur = u;
+      sr = 1;
+      du = (uNew - uOld) * rate;
+      vSim = simA * vSim + simR * u + simCR;
+    } else {
+      moving = false;
+      vSim = 0;
+    }
+
+    const vBefore = v3;
+    v1 += g * (velocity - v1);
+    v2 += g * (v1 - v2);
+    v3 += g * (v2 - v3);
+    a1 += g * (newer * uf + older * uf0 - a1);
+    a2 += g * (a1 - a2);
+    a3 += g * (a2 - a3);
+    b1 += g * (newer * ur + older * ur0 - b1);
+    b2 += g * (b1 - b2);
+    b3 += g * (b2 - b3);
+    c1 += g * (newer * sf + older * sf0 - c1);
+    c2 += g * (c1 - c2);
+    c3 += g * (c2 - c3);
+    e1 += g * (newer * sr + older * sr0 - e1);
+    e2 += g * (e1 - e2);
+    e3 += g * (e2 - e3);
+    h1 += g * (newer * du + older * du0 - h1);
+    h2 += g * (h1 - h2);
+    h3 += g * (h2 - h3);
+    uf0 = uf;
+    ur0 = ur;
+    sf0 = sf;
+    sr0 = sr;
+    du0 = du;
+
+    if (!moving) {
+      // At rest both sides of the equation are zero: a long rest settles the filters by itself.
+      if (++resting >= settleSamples) settling = 0;
+      if (settling > 0) settling--;
+      continue;
+    }
+    resting = 0;
+    if (settling > 0) {
+      settling--;
+      vSim = counts * spanVelocity;
+      continue;
+    }
+    if (++phase < stride) continue;
+    phase = 0;
+    learned++;
+    const D = (v3 - vBefore) * rate;
+    state[B]! += vBefore * vBefore;
+    state[B + 1]! -= vBefore * a3;
+    state[B + 2]! -= vBefore * b3;
+    state[B + 3]! += vBefore * c3;
+    state[B + 4]! -= vBefore * e3;
+    state[B + 5]! += vBefore * h3;
+    state[B + 6]! -= vBefore * D;
+    state[B + 7]! += a3 * a3;
+    state[B + 8]! += a3 * b3;
+    state[B + 9]! -= a3 * c3;
+    state[B + 10]! += a3 * e3;
+    state[B + 11]! -= a3 * h3;
+    state[B + 12]! += a3 * D;
+    state[B + 13]! += b3 * b3;
+    state[B + 14]! -= b3 * c3;
+    state[B + 15]! += b3 * e3;
+    state[B + 16]! -= b3 * h3;
+    state[B + 17]! += b3 * D;
+    state[B + 18]! += c3 * c3;
+    state[B + 19]! -= c3 * e3;
+    state[B + 20]! += c3 * h3;
+    state[B + 21]! -= c3 * D;
+    state[B + 22]! += e3 * e3;
+    state[B + 23]! -= e3 * h3;
+    state[B + 24]! += e3 * D;
+    state[B + 25]! += h3 * h3;
+    state[B + 26]! -= h3 * D;
+    state[B + 27]! += D * D;
+    state[B + BLOCK.forward]! += sf;
+    state[B + BLOCK.reverse]! += sr;
+    if (u >= 99.99 || u <= -99.99) state[B + BLOCK.atLimit]! += 1;
+    if (simReady) {
+      const v = counts * spanVelocity;
+      const miss = v - vSim;
+      state[B + BLOCK.residualSquare]! += miss * miss;
+      state[B + BLOCK.velocity]! += v;
+      state[B + BLOCK.velocitySquare]! += v * v;
+      state[B + BLOCK.simulated]! += 1;
+    }
+  }
+
+  state[STATE.filled] = filled;
+  state[STATE.write] = w;
+  state[STATE.settling] = settling;
+  state[STATE.resting] = resting;
+  state[STATE.phase] = phase;
+  state[STATE.simulatedVelocity] = vSim;
+  state[B + BLOCK.learned] = learned;
+  state[B + BLOCK.elapsed]! += k - from;
+  state[P] = uf0;
+  state[P + 1] = ur0;
+  state[P + 2] = sf0;
+  state[P + 3] = sr0;
+  state[P + 4] = du0;
+  state[F] = v1;
+  state[F + 1] = v2;
+  state[F + 2] = v3;
+  state[F + 3] = a1;
+  state[F + 4] = a2;
+  state[F + 5] = a3;
+  state[F + 6] = b1;
+  state[F + 7] = b2;
+  state[F + 8] = b3;
+  state[F + 9] = c1;
+  state[F + 10] = c2;
+  state[F + 11] = c3;
+  state[F + 12] = e1;
+  state[F + 13] = e2;
+  state[F + 14] = e3;
+  state[F + 15] = h1;
+  state[F + 16] = h2;
+  state[F + 17] = h3;
+  return k;
+}
+
+/** Whether the open block has enough to close: full, or old with some motion in it. */
+export function blockIsDue(state: Float64Array, plan: FilterPlan): boolean {
+  const T = plan.sampleTime;
+  const motion = state[STATE.block + BLOCK.learned]! * plan.stride * T;
+  if (motion >= BLOCK_SECONDS) return true;
+  return motion >= BLOCK_LEAST_MOTION && state[STATE.block + BLOCK.elapsed]! * T >= BLOCK_PATIENCE;
+}

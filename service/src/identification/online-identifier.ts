@@ -1,0 +1,268 @@
+import {
+  BLOCK,
+  STATE,
+  blockIsDue,
+  filterPlan,
+  filterSamples,
+  restartFilters,
+  type FilterPlan,
+} from './motion-filter.js';
+import {
+  fitBlocks,
+  motionModel,
+  plantFigures,
+  type BlockFit,
+  type PlantFigures,
+} from './motion-regression.js';
+import type { PlantEstimate, PlantPrior, WindowEstimate } from './plant-estimate.js';
+import { covarianceOf, describePlant, directionsDiffer, type PooledFit } from './describe-plant.js';
+
+/** Blocks that the state remembers. */
+const RING = 48;
+/** Weight of a block against the next newer one: 0.96 a second of motion, a memory of about 25 s. */
+const FORGETTING = 0.96;
+/** Motion that closes a window, s. */
+const WINDOW_MOTION = 5;
+/** Stream time after which a window with `WINDOW_LEAST_MOTION` closes, s. */
+const WINDOW_PATIENCE = 30;
+const WINDOW_LEAST_MOTION = 2;
+/** Share of samples a direction needs to count as present. */
+const DIRECTION_SHARE = 0.08;
+/** Motion needed before the dead time is moved, s. */
+const DELAY_MOTION = 6;
+
+/**
+ * Plant identification from a stream of samples, with constant memory.
+ *
+ * All that it knows is in `state`; a copy of it put back into an identifier of the same prior continues to
+ * the last bit.
+ */
+export class OnlineIdentifier {
+  readonly state: Float64Array;
+  private readonly plan: FilterPlan;
+
+  constructor(private readonly prior: PlantPrior) {
+    this.plan = filterPlan(prior);
+    this.state = new Float64Array(STATE.ring + RING * BLOCK.length);
+    this.reset();
+  }
+
+  /** Forgets everything. */
+  reset(): void {
+    this.state.fill(0);
+    this.state[STATE.deadTime] = Math.min(this.prior.deadTime ?? 0, this.plan.longestDelay);
+    restartFilters(this.state, this.plan);
+  }
+
+  /** The stream has a hole: filters start anew, what was learned stays. */
+  gap(): void {
+    restartFilters(this.state, this.plan);
+  }
+
+  /**
+   * Takes samples `from` … `to` − 1.
+   *
+   * @param position counts of the resolution; @param output 0.01 %.
+   */
+  push(position: Int32Array, output: Int16Array, from: number, to: number): void {
+    let k = from;
+    while (k < to) {
+      k = filterSamples(this.state, this.plan, position, output, k, to);
+      if (blockIsDue(this.state, this.plan)) this.closeBlock();
+    }
+  }
+
+  /** The oldest closed window not yet taken; null when there is none or it says nothing about K and α. */
+  takeWindow(): WindowEstimate | null {
+    const { state } = this;
+    while (state[STATE.windowTaken]! < state[STATE.windowOpen]!) {
+      const id = state[STATE.windowTaken]!;
+      state[STATE.windowTaken] = id + 1;
+      const offsets = this.blockOffsets().filter((o) => state[o + BLOCK.window] === id);
+      const window = offsets.length > 0 ? this.windowEstimate(offsets) : null;
+      if (window) return window;
+    }
+    return null;
+  }
+
+  /** Pooled estimate over the remembered blocks; null before two blocks have closed. */
+  estimate(): PlantEstimate | null {
+    if (this.state[STATE.blockCount]! < 2) return null;
+    return describePlant(
+      this.pooled(),
+      this.prior,
+      this.state[STATE.deadTime]! + this.state[STATE.delayShift]!,
+      this.movingSeconds(this.blockOffsets()),
+    );
+  }
+
+  private movingSeconds(offsets: readonly number[]): number {
+    let n = 0;
+    for (const o of offsets) n += this.state[o + BLOCK.learned]!;
+    return n * this.plan.stride * this.plan.sampleTime;
+  }
+
+  /** Offsets of the remembered blocks, oldest first. */
+  private blockOffsets(): number[] {
+    const count = this.state[STATE.blockCount]!;
+    const next = this.state[STATE.blockNext]!;
+    const offsets: number[] = [];
+    for (let i = count; i >= 1; i--) offsets.push(STATE.ring + ((next - i + 2 * RING) % RING) * BLOCK.length);
+    return offsets;
+  }
+
+  private sum(offsets: readonly number[], field: number): number {
+    let s = 0;
+    for (const o of offsets) s += this.state[o + field]!;
+    return s;
+  }
+
+  private fit(
+    offsets: readonly number[],
+    weights: readonly number[],
+    directional: boolean,
+    held: number | null,
+  ) {
+    const learned = this.sum(offsets, BLOCK.learned);
+    const forward = this.sum(offsets, BLOCK.forward) >= DIRECTION_SHARE * learned;
+    const reverse = this.sum(offsets, BLOCK.reverse) >= DIRECTION_SHARE * learned;
+    const fit = fitBlocks(motionModel(forward, reverse, directional, held), this.state, offsets, weights);
+    const figures = fit && plantFigures(fit, this.plan.sampleTime);
+    return fit && figures ? { fit, figures } : null;
+  }
+
+  private pooled(): PooledFit | null {
+    const offsets = this.blockOffsets();
+    const weights = offsets.map((_, i) => FORGETTING ** (offsets.length - 1 - i));
+    const split = this.fit(offsets, weights, true, null);
+    let chosen = this.fit(offsets, weights, false, null);
+    if (split?.fit.model.directional && directionsDiffer(split.fit, split.figures)) chosen = split;
+    if (!chosen) return null;
+    const n = this.sum(offsets, BLOCK.simulated);
+    const mean = this.sum(offsets, BLOCK.velocity) / Math.max(n, 1);
+    const spread = this.sum(offsets, BLOCK.velocitySquare) - n * mean * mean;
+    const learned = this.sum(offsets, BLOCK.learned);
+    return {
+      ...chosen,
+      movingSeconds: this.movingSeconds(offsets),
+      atLimitShare: this.sum(offsets, BLOCK.atLimit) / learned,
+      forwardShare: this.sum(offsets, BLOCK.forward) / learned,
+      fitPct:
+        n > 0 && spread > 0 ? 100 * (1 - Math.sqrt(this.sum(offsets, BLOCK.residualSquare) / spread)) : NaN,
+    };
+  }
+
+  private windowEstimate(offsets: readonly number[]): WindowEstimate | null {
+    const { state } = this;
+    const shift = state[STATE.delayShift]!;
+    const weights = offsets.map(() => 1);
+    const single = this.fit(offsets, weights, false, shift);
+    const split = this.fit(offsets, weights, true, shift);
+    const directional = split?.fit.model.directional ? split : null;
+    const chosen =
+      directional && directionsDiffer(directional.fit, directional.figures) ? directional : single;
+    if (!chosen) return null;
+    const { fit, figures } = chosen;
+    return {
+      movingSeconds: this.movingSeconds(offsets),
+      elapsedSeconds: this.sum(offsets, BLOCK.elapsed) * this.plan.sampleTime,
+      lnGain: figures.lnGain,
+      lnPole: figures.lnPole,
+      covariance: {
+        gain: covarianceOf(fit, figures.gradients.lnGain, figures.gradients.lnGain),
+        cross: covarianceOf(fit, figures.gradients.lnGain, figures.gradients.lnPole),
+        pole: covarianceOf(fit, figures.gradients.lnPole, figures.gradients.lnPole),
+      },
+      coulomb: figures.coulomb,
+      bias: figures.bias,
+      gainForward: directional ? directional.figures.gainForward : null,
+      gainReverse: directional ? directional.figures.gainReverse : null,
+      outputLimitShare: this.sum(offsets, BLOCK.atLimit) / this.sum(offsets, BLOCK.learned),
+    };
+  }
+
+  private closeBlock(): void {
+    const { state, plan } = this;
+    const open = state[STATE.windowOpen]!;
+    const at = state[STATE.blockNext]!;
+    const offset = STATE.ring + at * BLOCK.length;
+    state.copyWithin(offset, STATE.block, STATE.block + BLOCK.length);
+    state[offset + BLOCK.window] = open;
+    state.fill(0, STATE.block, STATE.block + BLOCK.length);
+    state[STATE.blockNext] = (at + 1) % RING;
+    state[STATE.blockCount] = Math.min(state[STATE.blockCount]! + 1, RING);
+
+    const window = this.blockOffsets().filter((o) => state[o + BLOCK.window] === open);
+    const motion = this.movingSeconds(window);
+    const elapsed = this.sum(window, BLOCK.elapsed) * plan.sampleTime;
+    const closes = motion >= WINDOW_MOTION || (elapsed >= WINDOW_PATIENCE && motion >= WINDOW_LEAST_MOTION);
+    if (closes) {
+      state[STATE.windowOpen] = open + 1;
+      this.forgetWhatChanged(window);
+    }
+    this.refresh();
+  }
+
+  /** Puts the pooled estimate to use: velocity simulation, held delay, and the delay line's dead time. */
+  private refresh(): void {
+    const { state, plan } = this;
+    const pooled = this.pooled();
+    if (!pooled) return;
+    const { fit, figures } = pooled;
+    const T = plan.sampleTime;
+    const shift = figures.delayShift;
+    const se = Math.sqrt(covarianceOf(fit, figures.gradients.delayShift, figures.gradients.delayShift));
+    const moved = Math.min(Math.max(state[STATE.deadTime]! + shift, 0), plan.longestDelay);
+    if (
+      pooled.movingSeconds >= DELAY_MOTION &&
+      Math.abs(moved - state[STATE.deadTime]!) > Math.max(0.4 * T, 4 * se)
+    ) {
+      // Sums of the old dead time do not fit the new one: start over with it.
+      state[STATE.deadTime] = moved;
+      state[STATE.delayShift] = 0;
+      state[STATE.blockCount] = 0;
+      restartFilters(state, plan);
+      return;
+    }
+    state[STATE.delayShift] = shift;
+    const alpha = Math.exp(figures.lnPole);
+    const a = Math.exp(-alpha * T);
+    state[STATE.simA] = a;
+    state[STATE.simForward] = figures.gainForward * (1 - a);
+    state[STATE.simReverse] = figures.gainReverse * (1 - a);
+    state[STATE.simFrictionForward] = figures.gainForward * (1 - a) * (figures.coulomb + figures.bias);
+    state[STATE.simFrictionReverse] = figures.gainReverse * (1 - a) * (figures.coulomb - figures.bias);
+    state[STATE.simReady] = 1;
+  }
+
+  /** When the newest window contradicts the older ones, only what speaks for the change is kept. */
+  private forgetWhatChanged(newest: readonly number[]): void {
+    const { state } = this;
+    const older = this.blockOffsets().filter((o) => !newest.includes(o));
+    if (older.length < 8 || newest.length < 3) return;
+    const shift = state[STATE.delayShift]!;
+    const before = this.fit(
+      older,
+      older.map(() => 1),
+      false,
+      shift,
+    );
+    const after = this.fit(
+      newest,
+      newest.map(() => 1),
+      false,
+      shift,
+    );
+    if (!before || !after) return;
+    const dGain = after.figures.lnGain - before.figures.lnGain;
+    const dPole = after.figures.lnPole - before.figures.lnPole;
+    const vGain = lnVariance(before, 'lnGain') + lnVariance(after, 'lnGain') + 0.01 ** 2;
+    const vPole = lnVariance(before, 'lnPole') + lnVariance(after, 'lnPole') + 0.02 ** 2;
+    if (dGain ** 2 / vGain > 36 || dPole ** 2 / vPole > 36) state[STATE.blockCount] = newest.length;
+  }
+}
+
+function lnVariance(part: { fit: BlockFit; figures: PlantFigures }, name: 'lnGain' | 'lnPole'): number {
+  const g = part.figures.gradients[name];
+  return covarianceOf(part.fit, g, g);
+}

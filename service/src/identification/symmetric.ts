@@ -1,0 +1,84 @@
+/**
+ * Small dense symmetric systems: the normal equations of a handful of unknowns.
+ *
+ * Matrices are row-major Float64Array of length p·p. Sums of products arrive packed: the upper triangle
+ * by rows, p(p+1)/2 numbers.
+ */
+
+/** Position of (row, column), row ≤ column, in the packed upper triangle of a p×p matrix. */
+export function packedIndex(p: number, row: number, column: number): number {
+  return row * p - (row * (row - 1)) / 2 + (column - row);
+}
+
+/**
+ * Inverse of a symmetric positive definite matrix by Cholesky's factorisation of the matrix scaled to unit
+ * diagonal.
+ *
+ * @param a p×p, row-major; left unchanged.
+ * @returns the inverse, or null when a pivot of the scaled matrix falls below `tolerance`: the columns are
+ * then too nearly dependent to tell apart.
+ */
+export function invertPositive(a: Float64Array, p: number, tolerance = 1e-10): Float64Array | null {
+  const scale = new Float64Array(p);
+  for (let i = 0; i < p; i++) {
+    const d = a[i * p + i]!;
+    if (!(d > 0)) return null;
+    scale[i] = 1 / Math.sqrt(d);
+  }
+  const l = new Float64Array(p * p);
+  for (let i = 0; i < p; i++) {
+    for (let j = 0; j <= i; j++) {
+      let s = a[i * p + j]! * scale[i]! * scale[j]!;
+      for (let k = 0; k < j; k++) s -= l[i * p + k]! * l[j * p + k]!;
+      if (i === j) {
+        if (!(s > tolerance)) return null;
+        l[i * p + i] = Math.sqrt(s);
+      } else {
+        l[i * p + j] = s / l[j * p + j]!;
+      }
+    }
+  }
+  const inverse = new Float64Array(p * p);
+  const x = new Float64Array(p);
+  for (let c = 0; c < p; c++) {
+    for (let i = 0; i < p; i++) {
+      let s = i === c ? 1 : 0;
+      for (let k = 0; k < i; k++) s -= l[i * p + k]! * x[k]!;
+      x[i] = s / l[i * p + i]!;
+    }
+    for (let i = p - 1; i >= 0; i--) {
+      let s = x[i]!;
+      for (let k = i + 1; k < p; k++) s -= l[k * p + i]! * x[k]!;
+      x[i] = s / l[i * p + i]!;
+    }
+    for (let i = 0; i < p; i++) inverse[i * p + c] = x[i]! * scale[i]! * scale[c]!;
+  }
+  return inverse;
+}
+
+/** gᵀ·C·h for a p×p matrix C. */
+export function quadraticForm(
+  g: ArrayLike<number>,
+  c: Float64Array,
+  h: ArrayLike<number>,
+  p: number,
+): number {
+  let s = 0;
+  for (let i = 0; i < p; i++) {
+    let row = 0;
+    for (let j = 0; j < p; j++) row += c[i * p + j]! * h[j]!;
+    s += g[i]! * row;
+  }
+  return s;
+}
+
+/** A·B of two p×p matrices. */
+export function multiply(a: Float64Array, b: Float64Array, p: number): Float64Array {
+  const c = new Float64Array(p * p);
+  for (let i = 0; i < p; i++)
+    for (let k = 0; k < p; k++) {
+      const f = a[i * p + k]!;
+      for (let j = 0; j < p; j++) c[i * p + j]! += f * b[k * p + j]!;
+    }
+  return c;
+}
