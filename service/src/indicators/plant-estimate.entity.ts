@@ -1,4 +1,5 @@
 import { Column, Entity, PrimaryColumn } from 'typeorm';
+import type { DriftChart } from '../drift/drift-chart.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
 
 /** The axis's plant as known after one more window of production moves. */
@@ -16,5 +17,5 @@ export class PlantEstimateRow {
 
   /** The control chart's values after this window. */
   @Column('simple-json')
-  chart: unknown;
+  chart: DriftChart | null;
 }

@@ -1,0 +1,39 @@
+import type { Alert } from './alert.entity.js';
+import { RULE_TITLES } from './rules.js';
+
+const escape = (text: string): string =>
+  text.replace(/[&<>"]/g, (c) => ({ '&': '&amp;', '<': '&lt;', '>': '&gt;', '"': '&quot;' })[c]!);
+
+/** The mail about an alert that nobody has acknowledged: what, where, what to do, and the way to the page. */
+export function alertMail(alert: Alert, step: number, publicUrl: string): { subject: string; text: string; html: string } {
+  const { axis } = alert;
+  const link = `${publicUrl}/alerts/${alert.id}`;
+  const where = `${axis.machine.name}, ${axis.site.name}`;
+  const since = alert.raisedAt.toLocaleString('en-GB', {
+    timeZone: axis.site.timeZone,
+    dateStyle: 'medium',
+    timeStyle: 'short',
+  });
+  const again = step > 1 ? ` (mail ${step}: still not acknowledged)` : '';
+  const subject = `${axis.tag}: ${RULE_TITLES[alert.rule]}${again}`;
+  const lines = [
+    `${axis.tag}, ${axis.name}. ${where}`,
+    `${alert.message}`,
+    `Since ${since} (${axis.site.timeZone}), priority ${alert.priority}, not acknowledged.`,
+    `Do: ${alert.action}`,
+  ];
+  const safety =
+    'Machines can move unexpectedly. Follow the site’s lockout and machine-safety procedures and local codes.';
+  return {
+    subject,
+    text: `${lines.join('\n\n')}\n\nAcknowledge: ${link}\n\n${safety}\n`,
+    html: `<div style="font:16px/1.5 'Work Sans',Arial,sans-serif;color:#1C2733;max-width:560px">
+<h1 style="font-size:20px;margin:0 0 4px">${escape(axis.tag)}: ${escape(RULE_TITLES[alert.rule])}</h1>
+<p style="margin:0 0 14px;color:#5B6672">${escape(axis.name)}. ${escape(where)}</p>
+<p style="margin:0 0 10px"><strong>${escape(alert.message)}</strong></p>
+<p style="margin:0 0 10px">${escape(lines[2]!)}</p>
+<p style="margin:0 0 18px">${escape(lines[3]!)}</p>
+<p style="margin:0 0 18px"><a href="${escape(link)}" style="background:#1F7A6D;color:#fff;padding:12px 20px;border-radius:4px;text-decoration:none;font-weight:600">Open and acknowledge</a></p>
+<p style="margin:0;color:#5B6672;font-size:13px">${escape(safety)}</p></div>`,
+  };
+}

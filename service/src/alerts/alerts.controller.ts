@@ -1,0 +1,178 @@
+import { BadRequestException, Body, Controller, ForbiddenException, Get, HttpCode, NotFoundException, Param, ParseIntPipe, Patch, Post, Query } from '@nestjs/common';
+import { ApiBearerAuth, ApiOkResponse, ApiTags } from '@nestjs/swagger';
+import { InjectDataSource } from '@nestjs/typeorm';
+import { Brackets, In, type DataSource } from 'typeorm';
+import { CurrentUser } from '../auth/current-user.decorator.js';
+import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
+import { pageOf, type Page } from '../page.js';
+import { LIVE_STATES, Proposal } from '../proposals/proposal.entity.js';
+import { Alert } from './alert.entity.js';
+import { AlertsService } from './alerts.service.js';
+import {
+  AcknowledgeDto,
+  AlertDto,
+  AlertPageDto,
+  AlertQuery,
+  AlertRuleDto,
+  AlertRulesDto,
+  ChangeAlertRuleDto,
+  NoteDto,
+  ShelveDto,
+} from './dto/alert.dto.js';
+import { RULE, RULES, RULE_TITLES, type RuleName } from './rules.js';
+
+const LONGEST_SHELF_MS = 30 * 86_400_000;
+
+@ApiTags('alerts')
+@ApiBearerAuth()
+@Controller('alerts')
+export class AlertsController {
+  constructor(
+    private readonly alerts: AlertsService,
+    @InjectDataSource() private readonly dataSource: DataSource,
+  ) {}
+
+  /** Newest first, except that what stands open comes with the unacknowledged and the urgent on top. */
+  @Get()
+  @ApiOkResponse({ type: AlertPageDto })
+  async list(@Query() query: AlertQuery, @CurrentUser() user: SignedInUser): Promise<Page<AlertDto>> {
+    const { limit, cursor, state, axisId, siteId } = query;
+    const find = this.dataSource
+      .getRepository(Alert)
+      .createQueryBuilder('alert')
+      .innerJoinAndSelect('alert.axis', 'axis')
+      .innerJoinAndSelect('axis.machine', 'machine')
+      .innerJoinAndSelect('axis.site', 'site')
+      .leftJoinAndSelect('alert.events', 'event', `event.action IN ('told', 'nobody on call')`)
+      .where('alert.siteId IN (:...sites)', { sites: [-1, ...sitesOf(user)] });
+    if (state === 'open') find.andWhere(`alert.state <> 'normal'`);
+    else find.andWhere('alert.state = :state', { state });
+    if (axisId !== undefined) find.andWhere('alert.axisId = :axisId', { axisId });
+    if (siteId !== undefined) find.andWhere('alert.siteId = :siteId', { siteId });
+    // Open alerts are few (one per axis and rule) and sorted by urgency; what is over is paged by number.
+    if (state === 'open')
+      find
+        .addSelect(`CASE alert.state WHEN 'unacknowledged' THEN 0 WHEN 'returned-unacknowledged' THEN 1 WHEN 'acknowledged' THEN 2 ELSE 3 END`, 'urgency')
+        .addSelect(`CASE alert.priority WHEN 'high' THEN 0 WHEN 'medium' THEN 1 ELSE 2 END`, 'rank')
+        .orderBy('urgency')
+        .addOrderBy('rank')
+        .addOrderBy('alert.raisedAt', 'DESC');
+    else find.orderBy('alert.id', 'DESC');
+    const offset = state === 'open' ? wholeNumber(cursor ?? '0') : 0;
+    if (state !== 'open' && cursor !== undefined)
+      find.andWhere(new Brackets((where) => where.where('alert.id < :cursor', { cursor: wholeNumber(cursor) })));
+    const rows = await find.skip(offset).take(limit + 1).getMany();
+    const proposals = await this.proposalsOf(rows.map((alert) => alert.axisId));
+    return pageOf(
+      rows,
+      limit,
+      (last) => String(state === 'open' ? offset + limit : last.id),
+      (alert) => AlertDto.of(alert, proposals.get(alert.axisId) ?? null),
+    );
+  }
+
+  @Get(':id')
+  @ApiOkResponse({ type: AlertDto })
+  async get(@Param('id', ParseIntPipe) id: number, @CurrentUser() user: SignedInUser): Promise<AlertDto> {
+    const alert = await this.alerts.get(id, user);
+    return AlertDto.of(alert, (await this.proposalsOf([alert.axisId])).get(alert.axisId) ?? null);
+  }
+
+  @Post(':id/acknowledge')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async acknowledge(
+    @Param('id', ParseIntPipe) id: number,
+    @Body() body: AcknowledgeDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
+    await this.alerts.acknowledge(id, user, body?.note ?? null);
+    return this.get(id, user);
+  }
+
+  @Post(':id/shelve')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async shelve(
+    @Param('id', ParseIntPipe) id: number,
+    @Body() { until, reason }: ShelveDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
+    const ahead = until.getTime() - Date.now();
+    if (ahead <= 0) throw new BadRequestException({ errors: [{ path: 'until', message: 'must lie ahead' }] });
+    if (ahead > LONGEST_SHELF_MS)
+      throw new BadRequestException({ errors: [{ path: 'until', message: 'must be within 30 days' }] });
+    await this.alerts.shelve(id, user, until, reason);
+    return this.get(id, user);
+  }
+
+  @Post(':id/unshelve')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async unshelve(@Param('id', ParseIntPipe) id: number, @CurrentUser() user: SignedInUser): Promise<AlertDto> {
+    await this.alerts.unshelve(id, user);
+    return this.get(id, user);
+  }
+
+  @Post(':id/note')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async note(
+    @Param('id', ParseIntPipe) id: number,
+    @Body() { note }: NoteDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
+    await this.alerts.addNote(id, user, note);
+    return this.get(id, user);
+  }
+
+  /** The live proposal of each axis. */
+  private async proposalsOf(axisIds: number[]): Promise<Map<number, number>> {
+    if (axisIds.length === 0) return new Map();
+    const rows = await this.dataSource
+      .getRepository(Proposal)
+      .find({ select: { id: true, axisId: true }, where: { axisId: In(axisIds), state: In([...LIVE_STATES]) } });
+    return new Map(rows.map(({ axisId, id }) => [axisId, id]));
+  }
+}
+
+@ApiTags('alerts')
+@ApiBearerAuth()
+@Controller('alert-rules')
+export class AlertRulesController {
+  constructor(private readonly alerts: AlertsService) {}
+
+  @Get()
+  @ApiOkResponse({ type: AlertRulesDto })
+  list(): AlertRulesDto {
+    return { items: RULES.map((rule) => this.dto(rule)), nextCursor: null };
+  }
+
+  @Patch(':rule')
+  @ApiOkResponse({ type: AlertRuleDto })
+  async change(
+    @Param('rule') rule: string,
+    @Body() change: ChangeAlertRuleDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertRuleDto> {
+    const known = RULES.find((name) => name === rule);
+    if (!known) throw new NotFoundException(`There is no rule "${rule}"; there are ${RULES.join(', ')}`);
+    if (sitesOf(user, 'alert-rule.change').length === 0)
+      throw new ForbiddenException('Only engineers and approvers may change rules');
+    await this.alerts.changeRule(known, change, user);
+    return this.dto(known);
+  }
+
+  private dto(rule: RuleName): AlertRuleDto {
+    const { unit, relative } = RULE[rule];
+    const { threshold, deadband, onDelay, offDelay, priority, mailAfter } = this.alerts.settingsOf(rule);
+    return { rule, title: RULE_TITLES[rule], unit, relative, threshold, deadband, onDelay, offDelay, priority, mailAfter };
+  }
+}
+
+function wholeNumber(cursor: string): number {
+  const value = Number(cursor);
+  if (!Number.isInteger(value) || value < 0)
+    throw new BadRequestException({ errors: [{ path: 'cursor', message: 'is none that this list gave' }] });
+  return value;
+}

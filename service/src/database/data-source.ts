@@ -1,0 +1,71 @@
+import type { Database } from 'better-sqlite3';
+import type { DataSourceOptions } from 'typeorm';
+import { AlertRule } from '../alerts/alert-rule.entity.js';
+import { Alert, AlertEvent } from '../alerts/alert.entity.js';
+import { AuditEntry } from '../audit/audit-entry.entity.js';
+import { RefreshToken } from '../auth/refresh-token.entity.js';
+import { Axis } from '../fleet/axis.entity.js';
+import { Gateway } from '../fleet/gateway.entity.js';
+import { Machine } from '../fleet/machine.entity.js';
+import { Site } from '../fleet/site.entity.js';
+import { TuningRevision } from '../fleet/tuning-revision.entity.js';
+import { IndicatorHour, IndicatorMinute, IndicatorSecond } from '../indicators/indicator-rollup.entity.js';
+import { MoveRecord } from '../indicators/move-record.entity.js';
+import { PlantEstimateRow } from '../indicators/plant-estimate.entity.js';
+import { Mail } from '../notifications/mail.entity.js';
+import { Invitation } from '../people/invitation.entity.js';
+import { UserRole } from '../people/user-role.entity.js';
+import { User } from '../people/user.entity.js';
+import { Proposal, ProposalEvent } from '../proposals/proposal.entity.js';
+import { HandoverNote } from '../rota/handover-note.entity.js';
+import { RotaLayer } from '../rota/rota-layer.entity.js';
+import { RotaOverride } from '../rota/rota-override.entity.js';
+import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
+import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
+import { People1764547201000 } from './migrations/1764547201000-people.js';
+
+export const ENTITIES = [
+  Site,
+  Machine,
+  Gateway,
+  Axis,
+  TuningRevision,
+  IndicatorSecond,
+  IndicatorMinute,
+  IndicatorHour,
+  MoveRecord,
+  PlantEstimateRow,
+  AxisCheckpoint,
+  AlertRule,
+  Alert,
+  AlertEvent,
+  Proposal,
+  ProposalEvent,
+  User,
+  UserRole,
+  Invitation,
+  RefreshToken,
+  AuditEntry,
+  RotaLayer,
+  RotaOverride,
+  HandoverNote,
+  Mail,
+];
+
+/** The one SQLite file: write-ahead log, foreign keys on, schema by migrations only. */
+export function dataSourceOptions(database: string): DataSourceOptions {
+  return {
+    type: 'better-sqlite3',
+    database,
+    enableWAL: true,
+    prepareDatabase: (db: Database) => {
+      db.pragma('synchronous = NORMAL');
+      db.pragma('foreign_keys = ON');
+      db.pragma('busy_timeout = 5000');
+    },
+    entities: ENTITIES,
+    migrations: [Fleet1764547200000, People1764547201000],
+    migrationsRun: true,
+    synchronize: false,
+  };
+}

@@ -1,0 +1,247 @@
+import { Injectable, Logger, type OnApplicationBootstrap, type OnApplicationShutdown } from '@nestjs/common';
+import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
+import { InjectDataSource } from '@nestjs/typeorm';
+import { Counter } from 'prom-client';
+import type { DataSource } from 'typeorm';
+import { patternFrequency } from '../control/pole-placement.js';
+import { tell, type Events } from '../events.js';
+import { Axis } from '../fleet/axis.entity.js';
+import { Gateway } from '../fleet/gateway.entity.js';
+import { AxisCheckpoint } from './axis-checkpoint.entity.js';
+import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
+import { CheckpointWriter } from './checkpoint-writer.js';
+import { decodeFrame, FrameError } from './frame-codec.js';
+
+/** How far a gateway has got; in memory it runs ahead of what is durable. */
+export interface GatewayProgress {
+  id: number;
+  siteId: number;
+  epoch: string | null;
+  /** Last sequence taken. */
+  received: number;
+  durable: number;
+  lastSeenAt: number | null;
+}
+
+export type FrameAnswer = { received: number } | { rejected: string; sequence: number | null };
+
+const CHECKPOINT_EVERY_MS = 1_000;
+
+const framesTotal = new Counter({
+  name: 'polewright_frames_total',
+  help: 'Telemetry messages by outcome',
+  labelNames: ['outcome'],
+});
+const samplesTotal = new Counter({ name: 'polewright_samples_total', help: 'Samples taken in' });
+const gapsTotal = new Counter({ name: 'polewright_sequence_gaps_total', help: 'Gaps in a gateway’s sequence' });
+
+/** Takes frames in, runs the axes' pipelines, and makes what they found durable at a steady beat. */
+@Injectable()
+export class IntakeService implements OnApplicationBootstrap, OnApplicationShutdown {
+  private readonly log = new Logger(IntakeService.name);
+  private readonly pipelines = new Map<number, AxisPipeline>();
+  private readonly gateways = new Map<number, GatewayProgress>();
+  private readonly traced = new Set<number>();
+  private writer: CheckpointWriter;
+  private timer: NodeJS.Timeout | undefined;
+  private failedCheckpoints = 0;
+
+  constructor(
+    @InjectDataSource() private readonly dataSource: DataSource,
+    private readonly emitter: EventEmitter2,
+  ) {}
+
+  async onApplicationBootstrap(): Promise<void> {
+    this.writer = new CheckpointWriter(this.dataSource);
+    for (const axis of await this.dataSource.getRepository(Axis).find()) this.addPipeline(axis);
+    for (const { axisId, state } of await this.dataSource.getRepository(AxisCheckpoint).find()) {
+      const pipeline = this.pipelines.get(axisId);
+      if (pipeline && !pipeline.restore(state))
+        this.log.warn(`The saved state of axis ${axisId} has another layout; its identification starts anew`);
+    }
+    for (const gateway of await this.dataSource.getRepository(Gateway).find()) this.addGateway(gateway);
+    this.timer = setInterval(() => this.checkpoint(), CHECKPOINT_EVERY_MS);
+  }
+
+  onApplicationShutdown(): void {
+    clearInterval(this.timer);
+    if (this.writer) this.checkpoint();
+  }
+
+  pipeline(axisId: number): AxisPipeline | undefined {
+    return this.pipelines.get(axisId);
+  }
+
+  /** The pipeline of an axis, made if the axis is new. */
+  pipelineFor(axis: Axis): AxisPipeline {
+    return this.pipelines.get(axis.id) ?? this.addPipeline(axis);
+  }
+
+  progress(gateway: Gateway): GatewayProgress {
+    return this.gateways.get(gateway.id) ?? this.addGateway(gateway);
+  }
+
+  progressOf(gatewayId: number): GatewayProgress | undefined {
+    return this.gateways.get(gatewayId);
+  }
+
+  /** A gateway says in which counting period it is; a new one counts from 1 again. */
+  startEpoch(progress: GatewayProgress, epoch: string): void {
+    if (progress.epoch === epoch) return;
+    progress.epoch = epoch;
+    progress.received = 0;
+    progress.durable = 0;
+  }
+
+  /** Which axes' raw samples somebody wants to see live. */
+  trace(axisIds: Iterable<number>): void {
+    this.traced.clear();
+    for (const id of axisIds) this.traced.add(id);
+  }
+
+  /**
+   * Takes one message of a gateway.
+   *
+   * @param served axis ids by the index that `hello` gave them
+   * @returns the sequence taken, also for one that was taken before; or why the whole message is refused
+   */
+  take(progress: GatewayProgress, served: readonly number[], message: Uint8Array): FrameAnswer {
+    let sequence: number | null = null;
+    try {
+      const frame = decodeFrame(message);
+      sequence = frame.sequence;
+      const pipelines = frame.blocks.map((block, b) => {
+        const axisId = served[block.axisIndex];
+        const pipeline = axisId === undefined ? undefined : this.pipelines.get(axisId);
+        if (!pipeline) return refuse('unknown-axis', `block ${b} names axis index ${block.axisIndex}, which hello did not give`);
+        if (block.sampleTimeUs !== Math.round(pipeline.facts.sampleTime * 1e6))
+          return refuse(
+            'wrong-sample-time',
+            `block ${b}: sample time ${block.sampleTimeUs} µs, ${pipeline.facts.tag} is registered with ${pipeline.facts.sampleTime * 1e6} µs`,
+          );
+        return pipeline;
+      });
+      progress.lastSeenAt = Date.now();
+      if (sequence <= progress.received) {
+        framesTotal.inc({ outcome: 'duplicate' });
+        return { received: sequence };
+      }
+      if (sequence > progress.received + 1) {
+        gapsTotal.inc();
+        for (const axisId of served) this.pipelines.get(axisId)?.gap();
+      }
+      let samples = 0;
+      for (let b = 0; b < pipelines.length; b++) {
+        const block = frame.blocks[b]!;
+        const pipeline = pipelines[b]!;
+        pipeline.push(block);
+        samples += block.target.length;
+        if (this.traced.has(pipeline.facts.id))
+          tell(this.emitter, 'samples.received', { axisId: pipeline.facts.id, block });
+      }
+      progress.received = sequence;
+      framesTotal.inc({ outcome: 'taken' });
+      samplesTotal.inc(samples);
+      return { received: sequence };
+    } catch (error) {
+      const reason = error instanceof FrameError || error instanceof Refusal ? error.reason : 'internal-error';
+      if (reason === 'internal-error') this.log.error('A frame could not be taken', (error as Error).stack);
+      framesTotal.inc({ outcome: reason });
+      return { rejected: `${reason}: ${(error as Error).message}`, sequence };
+    }
+  }
+
+  /** Writes what is known by now in one transaction, then tells the others. A failed write is tried again. */
+  checkpoint(): void {
+    let written;
+    try {
+      written = this.writer.write([...this.pipelines.values()], [...this.gateways.values()]);
+      this.failedCheckpoints = 0;
+    } catch (error) {
+      this.failedCheckpoints++;
+      this.log.error(`Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`);
+      return;
+    }
+    for (const { axisId, seconds, moves, estimates } of written) {
+      if (seconds.length > 0) tell(this.emitter, 'seconds.closed', { axisId, seconds });
+      const last = estimates.at(-1);
+      if (last) {
+        tell(this.emitter, 'window.closed', { axisId, t: last.t, moves });
+        tell(this.emitter, 'estimate.updated', { axisId, t: last.t, estimate: last.estimate });
+        const { decisions } = last;
+        if (decisions?.gain.state === 'drifted' || decisions?.pole.state === 'drifted')
+          tell(this.emitter, 'drift.decided', { axisId, decisions });
+      }
+    }
+    tell(this.emitter, 'checkpoint.written', { at: new Date() });
+  }
+
+  /** An axis was registered or changed: tolerances, baseline, revision and maintenance count from here on. */
+  @OnEvent('axis.changed', { suppressErrors: false })
+  async axisChanged({ axisId }: Events['axis.changed']): Promise<void> {
+    const axis = await this.dataSource.getRepository(Axis).findOneBy({ id: axisId });
+    if (axis) this.update(axis);
+  }
+
+  /** Takes over an axis's facts; a new baseline or tolerance starts its drift chart anew. */
+  update(axis: Axis): void {
+    const pipeline = this.pipelines.get(axis.id);
+    if (!pipeline) return void this.addPipeline(axis);
+    const facts = factsOf(axis);
+    const before = pipeline.facts;
+    if (facts.inMaintenance !== before.inMaintenance) pipeline.gap();
+    if (
+      JSON.stringify(facts.baseline) !== JSON.stringify(before.baseline) ||
+      JSON.stringify(facts.tolerances) !== JSON.stringify(before.tolerances)
+    )
+      pipeline.restartDrift(facts);
+    else pipeline.facts = facts;
+  }
+
+  private addPipeline(axis: Axis): AxisPipeline {
+    const pipeline = new AxisPipeline(factsOf(axis));
+    this.pipelines.set(axis.id, pipeline);
+    return pipeline;
+  }
+
+  private addGateway(gateway: Gateway): GatewayProgress {
+    const progress: GatewayProgress = {
+      id: gateway.id,
+      siteId: gateway.siteId,
+      epoch: gateway.epoch,
+      received: gateway.durableSequence,
+      durable: gateway.durableSequence,
+      lastSeenAt: gateway.lastSeenAt?.getTime() ?? null,
+    };
+    this.gateways.set(gateway.id, progress);
+    return progress;
+  }
+}
+
+class Refusal extends Error {
+  constructor(
+    readonly reason: string,
+    message: string,
+  ) {
+    super(message);
+  }
+}
+
+function refuse(reason: string, message: string): never {
+  throw new Refusal(reason, message);
+}
+
+function factsOf(axis: Axis): AxisFacts {
+  return {
+    id: axis.id,
+    siteId: axis.siteId,
+    tag: axis.tag,
+    sampleTime: axis.sampleTime,
+    resolution: axis.resolution,
+    loopFrequency: patternFrequency(axis.pattern),
+    baseline: axis.baseline,
+    tolerances: axis.tolerances,
+    revision: axis.revision,
+    inMaintenance: axis.inMaintenance,
+  };
+}
