@@ -34,7 +34,10 @@ function unlessRounding(x: number, size: number): number {
   return Math.abs(x) <= 4 * Number.EPSILON * size ? 0 : x;
 }
 
-/** Δ(s) = s³ + (α + KαKd)s² + KαKp s + KαKi with the rounding uncertainty of its coefficients. */
+/**
+ * Δ(s) = s³ + (α + KαKd)s² + KαKp s + KαKi with the rounding uncertainty of its coefficients; without the
+ * integrator (Ki = 0) the root at 0 that nothing drives is divided out: Δ(s) = s² + (α + KαKd)s + KαKp.
+ */
 export function characteristicPolynomial(
   plant: Plant,
   gains: Gains,
@@ -43,46 +46,42 @@ export function characteristicPolynomial(
   const damping = b * effectiveKd(plant, gains);
   const coefficients = [b * gains.ki, b * gains.kp, plant.pole + damping, 1];
   const eps = 4 * Number.EPSILON;
-  return {
-    coefficients,
-    uncertainty: [
-      eps * Math.abs(coefficients[0]!),
-      eps * Math.abs(coefficients[1]!),
-      eps * (plant.pole + Math.abs(damping)),
-      0,
-    ],
-  };
+  const uncertainty = [
+    eps * Math.abs(coefficients[0]!),
+    eps * Math.abs(coefficients[1]!),
+    eps * (plant.pole + Math.abs(damping)),
+    0,
+  ];
+  const from = gains.ki === 0 ? 1 : 0;
+  return { coefficients: coefficients.slice(from), uncertainty: uncertainty.slice(from) };
 }
 
 /**
- * L(s) = C(s)G(s) = Kα(Kd s² + Kp s + Ki) / (s²(s + α)), the loop broken at the plant input. The same for all
- * structures; delays are left out.
+ * L(s) = C(s)G(s) = Kα(Kd s² + Kp s + Ki) / (s²(s + α)), the loop broken at the plant input; one s less above
+ * and below when Ki = 0. The same for all structures; delays are left out.
  */
 export function openLoop(plant: Plant, gains: Gains): { numerator: number[]; denominator: number[] } {
   const b = plant.gain * plant.pole;
+  const from = gains.ki === 0 ? 1 : 0;
   return {
-    numerator: [b * gains.ki, b * gains.kp, b * effectiveKd(plant, gains)],
-    denominator: [0, 0, plant.pole, 1],
+    numerator: [b * gains.ki, b * gains.kp, b * effectiveKd(plant, gains)].slice(from),
+    denominator: [0, 0, plant.pole, 1].slice(from),
   };
 }
 
 /**
  * From target to position:
  * T(s) = Kα(Ka s³ + (γKd + Kv)s² + βKp s + Ki)/Δ(s). With full feed-forward and β = γ = 1, T = 1.
- * A common factor s (Ki = 0) is divided out.
+ * With Ki = 0 one s is divided out above and below.
  */
 export function referenceTransfer(plant: Plant, gains: Gains, structure: Structure): TransferFunction {
   const { beta, gamma } = setPointWeights(structure);
   const b = plant.gain * plant.pole;
   const kd = effectiveKd(plant, gains);
   const square = unlessRounding(gamma * kd + gains.kv, gamma * Math.abs(kd) + Math.abs(gains.kv));
-  let numerator = trim([b * gains.ki, b * beta * gains.kp, b * square, b * gains.ka]);
-  let { coefficients: denominator, uncertainty } = characteristicPolynomial(plant, gains);
-  while (denominator[0] === 0 && numerator[0] === 0 && numerator.length > 1) {
-    numerator = numerator.slice(1);
-    denominator = denominator.slice(1);
-    uncertainty = uncertainty.slice(1);
-  }
+  const from = gains.ki === 0 ? 1 : 0;
+  const numerator = trim([b * gains.ki, b * beta * gains.kp, b * square, b * gains.ka].slice(from));
+  const { coefficients: denominator, uncertainty } = characteristicPolynomial(plant, gains);
   return { numerator, denominator, denominatorUncertainty: uncertainty };
 }
 
@@ -92,16 +91,18 @@ export function closedLoopPoles(plant: Plant, gains: Gains): Complex[] {
   return roots(coefficients, uncertainty);
 }
 
-/** Whether Δ(s) has all its roots in the open left half plane (Routh): d₂, d₁, d₀ > 0 and d₂d₁ > d₀. */
+/** Whether Δ(s) has all its roots in the open left half plane (Routh): all dᵢ > 0 and d₂d₁ > d₀. */
 export function isStable(plant: Plant, gains: Gains): boolean {
-  const [d0 = 0, d1 = 0, d2 = 0] = characteristicPolynomial(plant, gains).coefficients;
-  return d0 > 0 && d1 > 0 && d2 > 0 && d2 * d1 - d0 > 4 * Number.EPSILON * d0;
+  const { coefficients } = characteristicPolynomial(plant, gains);
+  if (!coefficients.every((d) => d > 0)) return false;
+  const [d0 = 0, d1 = 0, d2 = 0] = coefficients;
+  return coefficients.length === 3 || d2 * d1 - d0 > 4 * Number.EPSILON * d0;
 }
 
 export interface ClosedLoop {
-  /** Roots of Δ(s), rad/s, all three. */
+  /** Roots of Δ(s), rad/s. */
   poles: Complex[];
-  /** Roots of T's numerator, rad/s; a common root at 0 with Δ (Ki = 0) is left out. */
+  /** Roots of T's numerator, rad/s. */
   zeros: Complex[];
   /** First frequency where |T| falls to −3 dB (10^(−3/20)) of its value at rest, Hz; null when it never does. */
   bandwidthHz: number | null;
@@ -128,10 +129,7 @@ export function closedLoop(plant: Plant, gains: Gains, structure: Structure): Cl
   const above = squaredMagnitude(transfer.numerator);
   const below = squaredMagnitude(transfer.denominator);
   const bandwidthHz = fallsTo(above, below, 10 ** -0.3);
-  // with Ki = 0 one pole rests at 0 and cancels; what is left decides
-  const live = poles.filter((z) => z.re !== 0 || z.im !== 0);
-  const stable = live.length >= transfer.denominator.length - 1 && live.every((z) => z.re < 0);
-  if (!stable) return { poles, zeros, bandwidthHz, peakDb: null, peakHz: null };
+  if (!isStable(plant, gains)) return { poles, zeros, bandwidthHz, peakDb: null, peakHz: null };
   const peak = supremum(above, below);
   return {
     poles,
@@ -206,8 +204,7 @@ export function steadyErrors(
     const ramp = ((1 - beta) * gains.kp) / gains.ki;
     return { ramp, acceleration: ramp === 0 ? lag / (b * gains.ki) : null };
   }
-  const [, d1 = 0, d2 = 0] = characteristicPolynomial(plant, gains).coefficients;
-  if (!(d1 > 0 && d2 > 0) || beta === 0) return none;
+  if (!isStable(plant, gains) || beta === 0) return none;
   const ramp = lag / (b * gains.kp);
   const rest = unlessRounding(1 - b * gains.ka, 1 + Math.abs(b * gains.ka));
   return { ramp, acceleration: ramp === 0 ? rest / (b * gains.kp) : null };

@@ -1,0 +1,328 @@
+import { type Controller, checkController } from './move.js';
+import { checkPlant, deadTimeInSamples, heldPositionShare, type Plant, zeroOrderHold } from './plant.js';
+import { abs, add, type Complex, multiply, type Polynomial, power, roots } from './polynomial.js';
+import { checkGains, type Gains } from './pole-placement.js';
+import { closedLoopPoles, isStable } from './loop.js';
+
+/**
+ * The open loop C(z)G(z) of the controller as it runs: integrator updated before use, derivative by backward
+ * difference, exact zero-order hold, output delay and dead time.
+ *
+ * Written in the delta operator δ = (z − 1)/T of Middleton & Goodwin (1986), in which nothing cancels for small
+ * sample times and the coefficients tend to those of the continuous loop. With z = 1 + Tδ, α_d = (1 − a)/T:
+ *
+ *     C = [Ki + (Kp + 2KiT)δ + (KpT + KiT² + Kd)δ²] / (δz)
+ *     G = (n₁z + n₂) / (δ(δ + α_d)·z^(d+1))
+ *
+ * n₁ from the output of the current sample and n₂ from the one before (0 unless the dead time is a fraction of
+ * a sample).
+ *
+ * Returned are numerator and denominator by ascending power of δ; one δ less in both when Ki = 0.
+ */
+export function sampledOpenLoop(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples: number,
+): { numerator: number[]; denominator: number[] } {
+  const T = sampleTime;
+  const { kp, ki, kd } = gains;
+  const late = deadTimeInSamples(plant.deadTime ?? 0, T);
+  const alpha = -Math.expm1(-plant.pole * T) / T;
+  const held = zeroOrderHold(plant, T);
+  const z: Polynomial = [1, T];
+  /** Position response to a velocity gain g (per %) and position gain p (per %) at the end of a sample. */
+  const pulse = (p: number, g: number): number[] => [
+    (p * alpha) / T + (held.positionFromVelocity * g) / (T * T),
+    p / T,
+  ];
+  let path: number[];
+  let delays = outputDelaySamples + late.whole;
+  if (late.fraction === 0) {
+    // K·α_d and K(1 − φ) in closed form, so that small αT loses nothing
+    path = [plant.gain * alpha, plant.gain * heldPositionShare(plant.pole * T)];
+  } else {
+    const rest = zeroOrderHold(plant, T * (1 - late.fraction));
+    const now = pulse(rest.positionFromOutput, rest.velocityFromOutput);
+    const before = pulse(
+      held.positionFromOutput - rest.positionFromOutput,
+      held.velocityFromOutput - rest.velocityFromOutput,
+    );
+    path = add(multiply(now, z), before);
+    delays += 1;
+  }
+  const from = ki === 0 ? 1 : 0;
+  const controller = [ki, kp + 2 * ki * T, kp * T + ki * T * T + kd].slice(from);
+  const plantAndIntegrator = [0, 0, alpha, 1].slice(from);
+  return {
+    numerator: multiply(controller, path),
+    denominator: multiply(plantAndIntegrator, power(z, 1 + delays)),
+  };
+}
+
+/** Δ of the sampled loop by ascending power of δ: denominator + numerator of `sampledOpenLoop`. */
+function sampledCharacteristic(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples: number,
+): number[] {
+  const { numerator, denominator } = sampledOpenLoop(plant, gains, sampleTime, outputDelaySamples);
+  return add(denominator, numerator);
+}
+
+/**
+ * Eigenvalues of the sampled loop in z: the four states y, v, I, y₋₁ and one per sample of delay. They, not
+ * the s-plane design, say whether the loop as it runs is stable and damped. Sorted by descending magnitude.
+ */
+export function sampledPoles(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples = 0,
+): Complex[] {
+  return roots(sampledCharacteristic(plant, gains, sampleTime, outputDelaySamples))
+    .map((d) => ({ re: 1 + sampleTime * d.re, im: sampleTime * d.im }))
+    .sort((a, b) => Math.hypot(b.re, b.im) - Math.hypot(a.re, a.im) || b.re - a.re || b.im - a.im);
+}
+
+/** Damping ratio −Re s/|s| of a pole in z, with s = ln(z)/T; 1 at z = 0, negative outside the unit circle. */
+export function poleDamping(z: Complex): number {
+  const size = Math.hypot(z.re, z.im);
+  if (size === 0) return 1;
+  const decay = -Math.log(size);
+  const turn = Math.atan2(z.im, z.re);
+  return decay === 0 && turn === 0 ? 0 : decay / Math.hypot(decay, turn);
+}
+
+/**
+ * Whether all roots of the sampled characteristic polynomial lie inside the unit circle: the bilinear map
+ * z = (1 + w)/(1 − w), δ = (2/T)·w/(1 − w), then Routh's table.
+ */
+function isSampledStable(plant: Plant, gains: Gains, sampleTime: number, delays: number): boolean {
+  const delta = sampledCharacteristic(plant, gains, sampleTime, delays);
+  const n = delta.length - 1;
+  const p = new Array<number>(n + 1).fill(0);
+  // w in units of (T/2)·σ keeps the table's numbers together
+  const sigma = Math.abs(delta[0]! / delta[n]!) ** (1 / n) || 1;
+  let edge = [1];
+  for (let i = n; i >= 0; i--) {
+    // edge = (1 − w)^(n−i) by ascending power of w·2/(Tσ)
+    const c = delta[i]! * sigma ** (i - n);
+    for (let k = 0; k < edge.length; k++) p[i + k]! += c * edge[k]!;
+    edge = multiply(edge, [1, (-sigma * sampleTime) / 2]);
+  }
+  return isHurwitz(p);
+}
+
+/** Routh's criterion for a real polynomial by ascending power. */
+function isHurwitz(p: readonly number[]): boolean {
+  const n = p.length - 1;
+  const sign = Math.sign(p[n]!);
+  if (sign === 0) return false;
+  let upper: number[] = [];
+  let lower: number[] = [];
+  for (let i = n; i >= 0; i -= 2) upper.push(sign * p[i]!);
+  for (let i = n - 1; i >= 0; i -= 2) lower.push(sign * p[i]!);
+  while (lower.length > 0) {
+    const pivot = lower[0]!;
+    if (!(pivot > 0)) return false;
+    const next: number[] = [];
+    for (let k = 1; k < upper.length; k++) next.push(upper[k]! - (upper[0]! * (lower[k] ?? 0)) / pivot);
+    upper = lower;
+    lower = next;
+  }
+  return true;
+}
+
+/**
+ * Smallest sample time at which the loop as it runs (with its output delay in samples and its dead time in
+ * seconds) stops being stable, s: a scan upwards in steps of 2 %, then bisection on Routh's criterion.
+ *
+ * Null when there is none: the continuous loop is not stable itself, or, with dead time, the loop is already
+ * unstable at a tenth of it, where sampling adds almost nothing.
+ */
+export function maxStableSampleTime(plant: Plant, gains: Gains, outputDelaySamples = 0): number | null {
+  checkPlant(plant);
+  checkGains(gains);
+  if (!isStable(plant, gains)) return null;
+  const sizes = closedLoopPoles(plant, gains).map(abs);
+  const fastest = Math.max(...sizes, plant.pole);
+  const slowest = Math.min(...sizes, plant.pole);
+  const stable = (T: number): boolean => isSampledStable(plant, gains, T, outputDelaySamples);
+  let low = Math.max(1e-3 / (fastest * (1 + outputDelaySamples)), (plant.deadTime ?? 0) / 10);
+  if (!stable(low)) return null;
+  const last = 1e4 / slowest;
+  let high = low;
+  do {
+    low = high;
+    if (low > last) return null;
+    high = low * 1.02;
+  } while (stable(high));
+  while (high - low > 1e-13 * high) {
+    const middle = (low + high) / 2;
+    if (middle <= low || middle >= high) break;
+    if (stable(middle)) low = middle;
+    else high = middle;
+  }
+  return low;
+}
+
+/**
+ * RMS of the output, %, that the position resolution q causes while the axis holds: white position noise of
+ * variance q²/12 per sample through the sampled loop, from the discrete Lyapunov equation X = AXAᵀ + BBᵀ,
+ * solved by Smith's doubling (SIAM J. Appl. Math. 16, 1968). Roughly q/√12·√((Kp + Kd/T)² + (Kd/T)²).
+ *
+ * Real quantisers stay within about ±50 % of it and exceed it when the motion per sample is far below a count.
+ * Null when the sampled loop is not stable.
+ */
+export function outputRipple(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples: number,
+  resolution: number,
+): number | null {
+  const gain = noiseToOutput(plant, gains, sampleTime, outputDelaySamples);
+  return gain === null ? null : (resolution / Math.sqrt(12)) * gain;
+}
+
+/** ‖H‖₂ from white position noise to the output, %/mm. States y, v, I, measured y₋₁, then u₋₁, u₋₂, …. */
+function noiseToOutput(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples: number,
+): number | null {
+  const T = sampleTime;
+  const late = deadTimeInSamples(plant.deadTime ?? 0, T);
+  const delay = outputDelaySamples + late.whole;
+  const past = delay + (late.fraction > 0 ? 1 : 0);
+  const n = 4 + past;
+  const full = zeroOrderHold(plant, T);
+  const rest = zeroOrderHold(plant, T * (1 - late.fraction));
+  const reaction = gains.kp + gains.ki * T + gains.kd / T;
+  // u = −reaction·(y + noise) + I + Kd/T·y₋₁
+  const u = new Float64Array(n);
+  u[0] = -reaction;
+  u[2] = 1;
+  u[3] = gains.kd / T;
+  let a = new Float64Array(n * n);
+  const b = new Float64Array(n);
+  a[0] = 1;
+  a[1] = full.positionFromVelocity;
+  a[n + 1] = full.decay;
+  const drive = (age: number, position: number, velocity: number): void => {
+    if (age === 0) {
+      for (let j = 0; j < n; j++) {
+        a[j]! += position * u[j]!;
+        a[n + j]! += velocity * u[j]!;
+      }
+      b[0]! -= position * reaction;
+      b[1]! -= velocity * reaction;
+    } else {
+      a[3 + age]! += position;
+      a[n + 3 + age]! += velocity;
+    }
+  };
+  drive(delay, rest.positionFromOutput, rest.velocityFromOutput);
+  if (late.fraction > 0)
+    drive(
+      delay + 1,
+      full.positionFromOutput - rest.positionFromOutput,
+      full.velocityFromOutput - rest.velocityFromOutput,
+    );
+  a[2 * n] = -gains.ki * T;
+  a[2 * n + 2] = 1;
+  b[2] = -gains.ki * T;
+  a[3 * n] = 1;
+  b[3] = 1;
+  if (past > 0) {
+    for (let j = 0; j < n; j++) a[4 * n + j] = u[j]!;
+    b[4] = -reaction;
+    for (let i = 1; i < past; i++) a[(4 + i) * n + 3 + i] = 1;
+  }
+  const x = new Float64Array(n * n);
+  for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) x[i * n + j] = b[i]! * b[j]!;
+  for (let i = 0; i < 60; i++) {
+    const ax = matrixProduct(a, x, n, false);
+    const grown = matrixProduct(ax, a, n, true);
+    let change = 0;
+    let size = 0;
+    for (let k = 0; k < x.length; k++) {
+      x[k]! += grown[k]!;
+      change = Math.max(change, Math.abs(grown[k]!));
+      size = Math.max(size, Math.abs(x[k]!));
+    }
+    if (!Number.isFinite(size)) return null;
+    if (change <= 1e-17 * size) {
+      let variance = reaction * reaction;
+      for (let r = 0; r < n; r++) for (let c = 0; c < n; c++) variance += u[r]! * x[r * n + c]! * u[c]!;
+      return Math.sqrt(variance);
+    }
+    a = matrixProduct(a, a, n, false);
+  }
+  return null;
+}
+
+/** p·q, or p·qᵀ, of square row-major matrices of size n. */
+function matrixProduct(
+  p: Float64Array,
+  q: Float64Array,
+  n: number,
+  transposed: boolean,
+): Float64Array<ArrayBuffer> {
+  const result = new Float64Array(n * n);
+  for (let i = 0; i < n; i++)
+    for (let k = 0; k < n; k++) {
+      if (transposed) {
+        let s = 0;
+        for (let j = 0; j < n; j++) s += p[i * n + j]! * q[k * n + j]!;
+        result[i * n + k] = s;
+      } else {
+        const v = p[i * n + k]!;
+        if (v !== 0) for (let j = 0; j < n; j++) result[i * n + j]! += v * q[k * n + j]!;
+      }
+    }
+  return result;
+}
+
+export interface SampledLoop {
+  /** Eigenvalues in z, by descending magnitude. */
+  poles: Complex[];
+  /** Largest |z|. */
+  spectralRadius: number;
+  stable: boolean;
+  /** Smallest damping ratio of all poles; see `poleDamping`. */
+  damping: number;
+  /** s; see `maxStableSampleTime`. */
+  maxStableSampleTime: number | null;
+  /** %; see `outputRipple`. */
+  outputRippleRms: number | null;
+}
+
+/**
+ * The loop as a controller really runs it: eigenvalues, stability, damping, the largest stable sample time and
+ * the output ripple caused by the resolution, with `outputDelaySamples` and the plant's dead time.
+ *
+ * @throws UnphysicalInputError naming the field
+ */
+export function sampledLoop(plant: Plant, gains: Gains, controller: Controller): SampledLoop {
+  checkPlant(plant);
+  checkGains(gains);
+  checkController(controller);
+  const delay = controller.outputDelaySamples ?? 0;
+  const poles = sampledPoles(plant, gains, controller.sampleTime, delay);
+  const spectralRadius = Math.max(...poles.map((z) => Math.hypot(z.re, z.im)));
+  const stable = spectralRadius < 1;
+  return {
+    poles,
+    spectralRadius,
+    stable,
+    damping: Math.min(...poles.map(poleDamping)),
+    maxStableSampleTime: maxStableSampleTime(plant, gains, delay),
+    outputRippleRms: stable
+      ? outputRipple(plant, gains, controller.sampleTime, delay, controller.resolution ?? 0)
+      : null,
+  };
+}
