@@ -71,6 +71,8 @@ export interface LoopTrace {
 export interface LoopStart {
   /** Position at the first tick, mm; 0 when absent. */
   position?: number;
+  /** Integrator and output before the first tick, %; 0 when absent. An axis that holds against a bias has it. */
+  output?: number;
   /**
    * `at-rest-at-zero` (default): the derivative compares the first tick with error 0 and position 0, so a
    * step gives its full kick. `first-sample`: the first tick is compared with itself.
@@ -161,47 +163,47 @@ export function moveTrajectory(move: Move, sampleTime: number): Trajectory {
 }
 
 /**
- * Advances position and velocity exactly over `duration` with a held drive `w` = u − b against Coulomb
- * friction f (both %).
+ * Advances position and velocity exactly over one hold with a constant drive w = u − b against Coulomb friction
+ * f (both %).
  *
- * While the axis moves, v' = −αv + Kα(w − f·sgn v) is linear and solved in closed form. It comes to rest at
- * t* = ln(1 + |v|/(K(f − w·sgn v)))/α if the drive along the motion is below f. At rest it sticks when
- * |w| ≤ f and otherwise leaves in the direction of w; since w is held, it cannot stop again. So at most two
- * closed-form pieces make one exact step.
+ * While the axis moves, v' = −αv + Kα(w − f·sgn v) is linear and solved in closed form; v tends monotonically to
+ * its asymptote, so it passes 0 within the hold only if its end value has changed sign. Then it comes to rest at
+ * t* = ln(1 + |v|/(K(f − w·sgn v)))/α. At rest it sticks when |w| ≤ f and otherwise leaves in the direction of w;
+ * since w is held, it cannot stop again. So at most two closed-form pieces make one exact step.
  */
-function advanceWithFriction(
+function advance(
   state: { y: number; v: number },
   plant: Plant,
   friction: number,
   drive: number,
-  duration: number,
-  held: HeldPlant,
+  hold: Hold,
 ): void {
-  let direction = Math.sign(state.v);
-  if (direction === 0) {
-    if (Math.abs(drive) <= friction) return;
-    direction = Math.sign(drive);
+  const { y, v } = state;
+  let net = drive;
+  if (friction !== 0) {
+    if (v > 0) net = drive - friction;
+    else if (v < 0) net = drive + friction;
+    else if (drive > friction) net = drive - friction;
+    else if (drive < -friction) net = drive + friction;
+    else return;
   }
-  const against = friction - drive * direction;
-  const stop =
-    state.v !== 0 && against > 0
-      ? Math.log1p(Math.abs(state.v) / (plant.gain * against)) / plant.pole
-      : Infinity;
-  if (stop >= duration) {
-    const net = drive - friction * direction;
-    const { y, v } = state;
-    state.y = y + held.positionFromVelocity * v + held.positionFromOutput * net;
-    state.v = held.decay * v + held.velocityFromOutput * net;
+  const end = hold.decay * v + hold.velocityFromOutput * net;
+  if (friction === 0 || v === 0 || end > 0 === v > 0) {
+    state.y = y + hold.positionFromVelocity * v + hold.positionFromOutput * net;
+    state.v = end;
     return;
   }
+  // net opposes v: it stops after t*
+  const stop = Math.min(hold.duration, Math.log1p(-v / (plant.gain * net)) / plant.pole);
   const x = plant.pole * stop;
-  state.y += (-Math.expm1(-x) / plant.pole) * state.v;
-  state.y -= plant.gain * stop * heldPositionShare(x) * against * direction;
+  state.y = y + (-Math.expm1(-x) / plant.pole) * v + plant.gain * stop * heldPositionShare(x) * net;
   state.v = 0;
-  const rest = duration - stop;
-  if (Math.abs(drive) > friction && rest > 0)
-    advanceWithFriction(state, plant, friction, drive, rest, zeroOrderHold(plant, rest));
+  const rest = hold.duration - stop;
+  if (rest > 0 && Math.abs(drive) > friction)
+    advance(state, plant, friction, drive, { ...zeroOrderHold(plant, rest), duration: rest });
 }
+
+type Hold = HeldPlant & { duration: number };
 
 /**
  * The loop as a controller runs it, along any trajectory, with the plant advanced exactly between ticks.
@@ -214,7 +216,7 @@ function advanceWithFriction(
  *
  * u acts `outputDelaySamples` ticks and the plant's dead time later; a dead time that is not a whole number of
  * samples splits the hold where the input changes. Coulomb friction sticks and reverses inside a sample
- * exactly (see `advanceWithFriction`). Before the first tick the output was 0 and the axis at rest.
+ * exactly (see `advance`). Before the first tick the axis was at rest with the output of `start`.
  *
  * @throws UnphysicalInputError naming the field
  */
@@ -250,21 +252,13 @@ export function simulateLoop(
   if (delay > MAX_DELAY_SAMPLES)
     throw new UnphysicalInputError('plant.deadTime', `is more than ${MAX_DELAY_SAMPLES} samples long`);
   const firstPart = late.fraction * T;
-  const holdFirst = zeroOrderHold(plant, firstPart);
-  const holdRest = zeroOrderHold(plant, T - firstPart);
-  const linear = friction === 0;
+  const holdFirst: Hold = { ...zeroOrderHold(plant, firstPart), duration: firstPart };
+  const holdRest: Hold = { ...zeroOrderHold(plant, T - firstPart), duration: T - firstPart };
   const { output, integrator, position, velocity } = trace;
   const state = { y: start.position ?? 0, v: 0 };
-  let I = 0;
+  const before = start.output ?? 0;
+  let I = before;
   let previous = 0;
-
-  const advance = (drive: number, duration: number, held: HeldPlant): void => {
-    if (linear) {
-      const { y, v } = state;
-      state.y = y + held.positionFromVelocity * v + held.positionFromOutput * drive;
-      state.v = held.decay * v + held.velocityFromOutput * drive;
-    } else advanceWithFriction(state, plant, friction, drive, duration, held);
-  };
 
   for (let k = 0; k < n; k++) {
     const r = target[k]!;
@@ -288,8 +282,9 @@ export function simulateLoop(
     output[k] = u;
     integrator[k] = I;
 
-    if (firstPart > 0) advance((k > delay ? output[k - delay - 1]! : 0) - bias, firstPart, holdFirst);
-    advance((k >= delay ? output[k - delay]! : 0) - bias, T - firstPart, holdRest);
+    if (firstPart > 0)
+      advance(state, plant, friction, (k > delay ? output[k - delay - 1]! : before) - bias, holdFirst);
+    advance(state, plant, friction, (k >= delay ? output[k - delay]! : before) - bias, holdRest);
   }
   return trace;
 }
@@ -331,7 +326,7 @@ export function moveFigures(
 }
 
 /**
- * One move from rest at 0 with the loop as it really runs (`simulateLoop`), and its figures.
+ * One move from rest (at 0 with no output unless `start` says otherwise) with the loop as it really runs (`simulateLoop`), and its figures.
  *
  * @throws UnphysicalInputError naming the field
  */
@@ -341,10 +336,11 @@ export function simulateMove(
   structure: Structure,
   controller: Controller,
   move: Move,
+  start: LoopStart = {},
 ): SimulatedMove {
   checkController(controller);
   const trajectory = moveTrajectory(move, controller.sampleTime);
-  const trace = simulateLoop(plant, gains, structure, controller, trajectory);
+  const trace = simulateLoop(plant, gains, structure, controller, trajectory, start);
   return {
     ...moveFigures(trajectory.target, trace, move.distance, controller.outputLimit),
     trajectory,

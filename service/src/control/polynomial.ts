@@ -56,11 +56,18 @@ export function evaluateComplex(p: Polynomial, z: Complex): Complex {
   return { re, im };
 }
 
-/** |p(jω)|² as a polynomial in x = ω²: E(x)² + x·O(x)² with E, O the even and odd parts at jω. */
+/** p(jω) = E(x) + jω·O(x) as polynomials in x = ω². */
+export function evenAndOdd(p: Polynomial): { even: number[]; odd: number[] } {
+  const signed = (c: number, k: number): number => (k % 2 === 0 ? c : -c);
+  const even = p.filter((_, i) => i % 2 === 0).map(signed);
+  const odd = p.filter((_, i) => i % 2 === 1).map(signed);
+  return { even, odd: odd.length === 0 ? [0] : odd };
+}
+
+/** |p(jω)|² as a polynomial in x = ω²: E(x)² + x·O(x)². */
 export function squaredMagnitude(p: Polynomial): number[] {
-  const even = p.filter((_, i) => i % 2 === 0).map((c, k) => (k % 2 === 0 ? c : -c));
-  const odd = p.filter((_, i) => i % 2 === 1).map((c, k) => (k % 2 === 0 ? c : -c));
-  return odd.length === 0 ? multiply(even, even) : add(multiply(even, even), [0, ...multiply(odd, odd)]);
+  const { even, odd } = evenAndOdd(p);
+  return trim(add(multiply(even, even), [0, ...multiply(odd, odd)]));
 }
 
 /** p without leading coefficients that are exactly zero. */
