@@ -1,5 +1,5 @@
 import type { EventEmitter2 } from '@nestjs/event-emitter';
-import type { DriftDecisions } from './drift/drift-chart.js';
+import type { DriftDecisions } from './telemetry/axis-pipeline.js';
 import type { PlantEstimate } from './identification/plant-estimate.js';
 import type { RecordedMove } from './indicators/move-recorder.js';
 import type { ClosedSecond } from './indicators/second-accumulator.js';

@@ -1,12 +1,12 @@
 import { BadRequestException, Body, Controller, ForbiddenException, Get, HttpCode, NotFoundException, Param, ParseIntPipe, Patch, Post, Query } from '@nestjs/common';
 import { ApiBearerAuth, ApiOkResponse, ApiTags } from '@nestjs/swagger';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { Brackets, In, type DataSource } from 'typeorm';
+import { In, LessThan, Not, type DataSource } from 'typeorm';
 import { CurrentUser } from '../auth/current-user.decorator.js';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
 import { pageOf, type Page } from '../page.js';
 import { LIVE_STATES, Proposal } from '../proposals/proposal.entity.js';
-import { Alert } from './alert.entity.js';
+import { Alert, PRIORITIES, type AlertState } from './alert.entity.js';
 import { AlertsService } from './alerts.service.js';
 import {
   AcknowledgeDto,
@@ -37,36 +37,25 @@ export class AlertsController {
   @ApiOkResponse({ type: AlertPageDto })
   async list(@Query() query: AlertQuery, @CurrentUser() user: SignedInUser): Promise<Page<AlertDto>> {
     const { limit, cursor, state, axisId, siteId } = query;
-    const find = this.dataSource
-      .getRepository(Alert)
-      .createQueryBuilder('alert')
-      .innerJoinAndSelect('alert.axis', 'axis')
-      .innerJoinAndSelect('axis.machine', 'machine')
-      .innerJoinAndSelect('axis.site', 'site')
-      .leftJoinAndSelect('alert.events', 'event', `event.action IN ('told', 'nobody on call')`)
-      .where('alert.siteId IN (:...sites)', { sites: [-1, ...sitesOf(user)] });
-    if (state === 'open') find.andWhere(`alert.state <> 'normal'`);
-    else find.andWhere('alert.state = :state', { state });
-    if (axisId !== undefined) find.andWhere('alert.axisId = :axisId', { axisId });
-    if (siteId !== undefined) find.andWhere('alert.siteId = :siteId', { siteId });
-    // Open alerts are few (one per axis and rule) and sorted by urgency; what is over is paged by number.
-    if (state === 'open')
-      find
-        .addSelect(`CASE alert.state WHEN 'unacknowledged' THEN 0 WHEN 'returned-unacknowledged' THEN 1 WHEN 'acknowledged' THEN 2 ELSE 3 END`, 'urgency')
-        .addSelect(`CASE alert.priority WHEN 'high' THEN 0 WHEN 'medium' THEN 1 ELSE 2 END`, 'rank')
-        .orderBy('urgency')
-        .addOrderBy('rank')
-        .addOrderBy('alert.raisedAt', 'DESC');
-    else find.orderBy('alert.id', 'DESC');
-    const offset = state === 'open' ? wholeNumber(cursor ?? '0') : 0;
-    if (state !== 'open' && cursor !== undefined)
-      find.andWhere(new Brackets((where) => where.where('alert.id < :cursor', { cursor: wholeNumber(cursor) })));
-    const rows = await find.skip(offset).take(limit + 1).getMany();
+    const from = wholeNumber(cursor ?? '0');
+    const rows = await this.dataSource.getRepository(Alert).find({
+      where: {
+        siteId: In(sitesOf(user).filter((id) => siteId === undefined || id === siteId)),
+        state: state === 'open' ? Not('normal') : state,
+        ...(axisId !== undefined && { axisId }),
+        ...(state !== 'open' && from > 0 && { id: LessThan(from) }),
+      },
+      relations: { axis: { machine: true, site: true }, events: true },
+      order: { id: 'DESC' },
+      ...(state !== 'open' && { take: limit + 1 }),
+    });
+    // Open alerts are few (one per axis and rule) and come by urgency; what is over is paged by number.
+    if (state === 'open') rows.sort(byUrgency).splice(0, from);
     const proposals = await this.proposalsOf(rows.map((alert) => alert.axisId));
     return pageOf(
       rows,
       limit,
-      (last) => String(state === 'open' ? offset + limit : last.id),
+      (last) => String(state === 'open' ? from + limit : last.id),
       (alert) => AlertDto.of(alert, proposals.get(alert.axisId) ?? null),
     );
   }
@@ -169,6 +158,13 @@ export class AlertRulesController {
     return { rule, title: RULE_TITLES[rule], unit, relative, threshold, deadband, onDelay, offDelay, priority, mailAfter };
   }
 }
+
+const URGENCY: AlertState[] = ['unacknowledged', 'returned-unacknowledged', 'acknowledged', 'shelved', 'suppressed'];
+
+const byUrgency = (a: Alert, b: Alert): number =>
+  URGENCY.indexOf(a.state) - URGENCY.indexOf(b.state) ||
+  PRIORITIES.indexOf(a.priority) - PRIORITIES.indexOf(b.priority) ||
+  b.raisedAt.getTime() - a.raisedAt.getTime();
 
 function wholeNumber(cursor: string): number {
   const value = Number(cursor);

@@ -1,4 +1,4 @@
-import type { DriftDecisions } from '../drift/drift-chart.js';
+import type { DriftDecisions } from '../telemetry/axis-pipeline.js';
 import type { Cause } from '../identification/probable-cause.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
 import type { Indicators } from '../indicators/indicators.js';

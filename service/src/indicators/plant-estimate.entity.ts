@@ -1,5 +1,5 @@
 import { Column, Entity, PrimaryColumn } from 'typeorm';
-import type { DriftChart } from '../drift/drift-chart.js';
+import type { DriftDecisions } from '../telemetry/axis-pipeline.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
 
 /** The axis's plant as known after one more window of production moves. */
@@ -15,7 +15,7 @@ export class PlantEstimateRow {
   @Column('simple-json')
   estimate: PlantEstimate;
 
-  /** The control chart's values after this window. */
+  /** What the control chart said after this window. */
   @Column('simple-json')
-  chart: DriftChart | null;
+  chart: DriftDecisions | null;
 }

@@ -1,4 +1,4 @@
-import { createDriftChart, updateDriftChart, type DriftChart, type DriftDecisions } from '../drift/drift-chart.js';
+import { createDriftChart, updateDriftChart, type DriftChart, type DriftDecision } from '../drift/drift-chart.js';
 import type { Baseline, Tolerances } from '../fleet/axis.entity.js';
 import { OnlineIdentifier } from '../identification/online-identifier.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
@@ -21,12 +21,17 @@ export interface AxisFacts {
   inMaintenance: boolean;
 }
 
+/** What the control chart says of both quantities. */
+export interface DriftDecisions {
+  gain: DriftDecision;
+  pole: DriftDecision;
+}
+
 /** A plant estimate after one more window, with what the control chart makes of it. */
 export interface EstimateAfterWindow {
   /** s since the Unix epoch */
   t: number;
   estimate: PlantEstimate;
-  chart: DriftChart | null;
   decisions: DriftDecisions | null;
 }
 
@@ -143,11 +148,13 @@ export class AxisPipeline {
       const estimate = this.identifier.estimate();
       if (!estimate) continue;
       this.estimate = estimate;
-      if (this.chart) this.decisions = updateDriftChart(this.chart, window, estimate);
+      if (this.chart) {
+        const [gain, pole] = updateDriftChart(this.chart, window, estimate);
+        this.decisions = { gain: gain!, pole: pole! };
+      }
       this.closedEstimates.push({
         t: this.lastSampleAt!,
         estimate,
-        chart: this.chart && structuredClone(this.chart),
         decisions: this.decisions,
       });
     }

@@ -110,8 +110,8 @@ export class CheckpointWriter {
       this.hour.run({ ...second, axisId, t: second.t - (second.t % 3600) });
     }
     for (const move of pipeline.closedMoves) this.move.run({ ...move, axisId });
-    for (const { t, estimate, chart } of pipeline.closedEstimates)
-      this.estimate.run(axisId, t, JSON.stringify(estimate), JSON.stringify(chart));
+    for (const { t, estimate, decisions } of pipeline.closedEstimates)
+      this.estimate.run(axisId, t, JSON.stringify(estimate), JSON.stringify(decisions));
     this.state.run(axisId, pipeline.save());
   }
 }

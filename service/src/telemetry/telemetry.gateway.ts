@@ -201,6 +201,10 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
     return this.socketServing(axisId) !== undefined;
   }
 
+  connected(gatewayId: number): boolean {
+    return this.sockets.has(gatewayId);
+  }
+
   private socketServing(axisId: number): GatewaySocket | undefined {
     for (const socket of this.sockets.values()) if (socket.data.served.includes(axisId)) return socket;
     return undefined;

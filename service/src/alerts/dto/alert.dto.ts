@@ -98,7 +98,7 @@ export class AlertDto {
   @NullableNumber('The axis’s open proposal')
   proposalId: number | null;
 
-  @ApiProperty({ type: [AlertEventDto], description: 'Oldest first; in lists only what people were told' })
+  @ApiProperty({ type: [AlertEventDto], description: 'Oldest first' })
   events: AlertEventDto[];
 
   static of(alert: Alert, proposalId: number | null): AlertDto {

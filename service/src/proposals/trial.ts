@@ -1,0 +1,151 @@
+import type { RecordedMove } from '../indicators/move-recorder.js';
+
+/** A figure of the same kind of moves before and after new gains: medians, and whether they differ. */
+export interface ComparedFigure {
+  before: number;
+  after: number;
+  /** One-sided p that "after" is no larger than "before" (rank test); small means worse. */
+  pWorse: number;
+  /** One-sided p that "after" is no smaller; small means better. */
+  pBetter: number;
+}
+
+export interface TrialResult {
+  /** ISO 8601 */
+  startedAt: string;
+  moves: { before: number; after: number };
+  /** null until there are enough moves */
+  peakFollowingError: ComparedFigure | null;
+  rmsFollowingError: ComparedFigure | null;
+  saturatedPct: ComparedFigure | null;
+  verdict: 'waiting' | 'better' | 'no different' | 'worse';
+  sentence: string;
+}
+
+/** Moves of one kind needed on both sides. */
+export const LEAST_MOVES = 8;
+/** Moves are of one kind when distance and duration agree within this share, and the direction is the same. */
+const KIND_TOLERANCE = 0.05;
+/** Level of the rank test. */
+const LEVEL = 0.01;
+/** Differences smaller than this share of "before" change nothing that anybody notices (common practice, no source). */
+const LEAST_CHANGE = 0.05;
+
+/**
+ * Compares moves of the same kind before and after.
+ *
+ * Each move after the change is matched with the kind (distance, direction, duration) that it shares with at least
+ * one move before; peak and RMS error are divided by the median of their kind before, so that kinds pool. Whether the
+ * two samples differ is judged by the Wilcoxon–Mann–Whitney rank test (normal approximation with ties corrected;
+ * Wilcoxon 1945, Mann & Whitney 1947).
+ */
+export function compareMoves(before: readonly RecordedMove[], after: readonly RecordedMove[], startedAt: Date): TrialResult {
+  const pairs = sameKind(before, after);
+  const base: TrialResult = {
+    startedAt: startedAt.toISOString(),
+    moves: { before: pairs.before.length, after: pairs.after.length },
+    peakFollowingError: null,
+    rmsFollowingError: null,
+    saturatedPct: null,
+    verdict: 'waiting',
+    sentence: `Waiting for moves of the same kind: ${pairs.after.length} of ${LEAST_MOVES} after the change, ${pairs.before.length} of ${LEAST_MOVES} before it.`,
+  };
+  if (pairs.before.length < LEAST_MOVES || pairs.after.length < LEAST_MOVES) return base;
+  const compare = (figure: (move: RecordedMove) => number, relative: boolean): ComparedFigure => {
+    const scaled = (moves: Matched[]): number[] =>
+      moves.map(({ move, kind }) => figure(move) / (relative ? median(kind.map(figure)) || 1 : 1));
+    const a = scaled(pairs.before);
+    const b = scaled(pairs.after);
+    const { pGreater, pLess } = rankTest(a, b);
+    // Shown in the unit of the figure: medians over all matched moves.
+    return {
+      before: median(pairs.before.map(({ move }) => figure(move))),
+      after: median(pairs.after.map(({ move }) => figure(move))),
+      pWorse: pGreater,
+      pBetter: pLess,
+    };
+  };
+  const peak = compare((move) => move.peakError, true);
+  const rms = compare((move) => move.rmsError, true);
+  const saturated = compare((move) => move.saturatedPct, false);
+  const changed = Math.abs(peak.after / peak.before - 1) >= LEAST_CHANGE;
+  const worse = (changed && peak.after > peak.before && peak.pWorse < LEVEL) || (saturated.pWorse < LEVEL && saturated.after > saturated.before + 1);
+  const better = changed && peak.after < peak.before && peak.pBetter < LEVEL;
+  const verdict = worse ? 'worse' : better ? 'better' : 'no different';
+  const mm = (value: number): string => (value < 0.1 ? value.toFixed(3) : value.toFixed(2));
+  return {
+    ...base,
+    peakFollowingError: peak,
+    rmsFollowingError: rms,
+    saturatedPct: saturated,
+    verdict,
+    sentence: `Median peak following error of the same moves ${mm(peak.before)} → ${mm(peak.after)} mm over ${pairs.before.length} moves before and ${pairs.after.length} after: ${verdict}.`,
+  };
+}
+
+interface Matched {
+  move: RecordedMove;
+  /** The moves before the change that are of the same kind. */
+  kind: RecordedMove[];
+}
+
+function sameKind(before: readonly RecordedMove[], after: readonly RecordedMove[]): { before: Matched[]; after: Matched[] } {
+  const alike = (a: RecordedMove, b: RecordedMove): boolean =>
+    Math.sign(a.distance) === Math.sign(b.distance) &&
+    close(Math.abs(a.distance), Math.abs(b.distance)) &&
+    close(a.duration, b.duration);
+  const matchedAfter = after
+    .map((move) => ({ move, kind: before.filter((other) => alike(move, other)) }))
+    .filter(({ kind }) => kind.length > 0);
+  const matchedBefore = before
+    .map((move) => ({ move, kind: before.filter((other) => alike(move, other)) }))
+    .filter(({ move }) => after.some((other) => alike(move, other)));
+  return { before: matchedBefore, after: matchedAfter };
+}
+
+const close = (a: number, b: number): boolean => Math.abs(a - b) <= KIND_TOLERANCE * Math.max(a, b);
+
+export function median(values: readonly number[]): number {
+  if (values.length === 0) return NaN;
+  const sorted = [...values].sort((a, b) => a - b);
+  const middle = sorted.length >> 1;
+  return sorted.length % 2 === 1 ? sorted[middle]! : (sorted[middle - 1]! + sorted[middle]!) / 2;
+}
+
+/**
+ * Wilcoxon–Mann–Whitney: U = Σ ranks of b − n_b(n_b + 1)/2 is about normal with mean n_a·n_b/2 and, with ties of
+ * sizes t, variance n_a·n_b/12 · (n + 1 − Σ(t³ − t)/(n(n − 1))).
+ *
+ * @returns one-sided p values: `pGreater` small when b tends to be greater than a, `pLess` when smaller; both 1 when
+ * every value is the same
+ */
+export function rankTest(a: readonly number[], b: readonly number[]): { pGreater: number; pLess: number } {
+  const all = [...a.map((value) => ({ value, b: false })), ...b.map((value) => ({ value, b: true }))].sort(
+    (x, y) => x.value - y.value,
+  );
+  const n = all.length;
+  let rankSum = 0;
+  let ties = 0;
+  for (let i = 0; i < n; ) {
+    let j = i;
+    while (j < n && all[j]!.value === all[i]!.value) j++;
+    const rank = (i + 1 + j) / 2;
+    for (let k = i; k < j; k++) if (all[k]!.b) rankSum += rank;
+    ties += (j - i) ** 3 - (j - i);
+    i = j;
+  }
+  const u = rankSum - (b.length * (b.length + 1)) / 2;
+  const variance = ((a.length * b.length) / 12) * (n + 1 - ties / (n * (n - 1)));
+  if (!(variance > 0)) return { pGreater: 1, pLess: 1 };
+  const off = u - (a.length * b.length) / 2;
+  const tail = (z: number): number => 1 - normal(z);
+  return { pGreater: tail((off - 0.5) / Math.sqrt(variance)), pLess: tail((-off - 0.5) / Math.sqrt(variance)) };
+}
+
+/** Standard normal distribution function, Abramowitz & Stegun 26.2.17 (error below 7.5e-8). */
+function normal(z: number): number {
+  if (z < 0) return 1 - normal(-z);
+  const t = 1 / (1 + 0.2316419 * z);
+  const polynomial = t * (0.31938153 + t * (-0.356563782 + t * (1.781477937 + t * (-1.821255978 + t * 1.330274429))));
+  return 1 - (Math.exp((-z * z) / 2) / Math.sqrt(2 * Math.PI)) * polynomial;
+}
