@@ -34,7 +34,7 @@ const LEAST_DAMPING = 1e-4;
  * friction or resolution.
  *
  * The response is y(t) = y∞ + c·e^(At)·x₀ with A the companion matrix of the closed-loop denominator, evaluated
- * by the matrix exponential and therefore exact for repeated poles too. It is followed in steps of a tenth of
+ * by the matrix exponential and therefore exact for repeated poles too. It is followed in steps of a fifth of
  * a radian of the fastest pole still alive, until every mode has decayed by e^(−40); between two points the
  * extremum (y' = 0) and every passage through 10 %, 90 % and 98 … 102 % is found by root finding on the exact
  * expression. No figure depends on a time grid: overshoot is against the final value y∞ = T(0), settling is the
@@ -78,7 +78,7 @@ export function stepFigures(plant: Plant, gains: Gains, structure: Structure): S
   modes.forEach((mode, i) => {
     if (mode.until <= time) return;
     const fastest = Math.max(...modes.slice(i).map((m) => m.size));
-    const steps = Math.max(1, Math.ceil((mode.until - time) / (0.1 / fastest)));
+    const steps = Math.max(1, Math.ceil((mode.until - time) / (0.2 / fastest)));
     walk.advance(time, (mode.until - time) / steps, steps);
     time = mode.until;
   });
