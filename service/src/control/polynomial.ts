@@ -80,7 +80,7 @@ export function trim(p: Polynomial): number[] {
 /**
  * All roots of a real polynomial, repeated ones repeated.
  *
- * 1. s is scaled by the geometric mean of the root magnitudes; the balanced companion matrix (Parlett &
+ * 1. s is scaled by the power of two next to the geometric mean of the root magnitudes; the balanced companion matrix (Parlett &
  *    Reinsch 1969) goes through ml-matrix's eigenvalue solver.
  * 2. Every root is polished by the Aberth–Ehrlich iteration (Aberth 1973), which is Newton's method that
  *    keeps the roots apart, until |p(z)| is at its own rounding level.
@@ -112,7 +112,7 @@ export function roots(p: Polynomial, uncertainty?: readonly number[]): Complex[]
   if (degree === 0) return zeros;
 
   const lead = core[degree]!;
-  const scale = Math.exp((Math.log(Math.abs(core[0]!)) - Math.log(Math.abs(lead))) / degree);
+  const scale = 2 ** Math.round((Math.log2(Math.abs(core[0]!)) - Math.log2(Math.abs(lead))) / degree);
   const monic = core.map((c, i) => (c / lead) * scale ** (i - degree));
   const errors = monic.map((c, i) => {
     const given = uncertainty?.[i + atZero];
