@@ -86,7 +86,9 @@ export class AuditService {
       before: asStored(record.before),
       after: asStored(record.after),
     };
-    await manager.insert(AuditEntry, { ...entry, previousHash, hash: chainHash(previousHash, entry) });
+    await manager.save(
+      Object.assign(new AuditEntry(), entry, { previousHash, hash: chainHash(previousHash, entry) }),
+    );
   }
 
   /**

@@ -1,0 +1,90 @@
+import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
+import { Type } from 'class-transformer';
+import { IsIn, IsInt, IsOptional, Max, Min } from 'class-validator';
+import { MAIL_STATES, type MailState } from '../mail.entity.js';
+
+export class MailQueryDto {
+  @ApiPropertyOptional({ enum: MAIL_STATES })
+  @IsOptional()
+  @IsIn(MAIL_STATES)
+  state?: MailState;
+
+  @ApiPropertyOptional({ default: 50, minimum: 1, maximum: 200 })
+  @IsOptional()
+  @Type(() => Number)
+  @IsInt()
+  @Min(1)
+  @Max(200)
+  limit: number = 50;
+
+  @ApiPropertyOptional({ type: String, description: 'nextCursor of the page before' })
+  @IsOptional()
+  @Type(() => Number)
+  @IsInt()
+  cursor?: number;
+}
+
+export class MailDto {
+  @ApiProperty()
+  id: number;
+
+  @ApiProperty()
+  to: string;
+
+  @ApiProperty()
+  subject: string;
+
+  @ApiProperty({ enum: MAIL_STATES })
+  state: MailState;
+
+  @ApiProperty()
+  attempts: number;
+
+  @ApiProperty({ format: 'date-time' })
+  createdAt: string;
+
+  @ApiProperty({ type: String, format: 'date-time', nullable: true })
+  sentAt: string | null;
+
+  @ApiProperty({ type: String, nullable: true, description: 'What the mail server answered last' })
+  error: string | null;
+
+  @ApiProperty({ type: Number, nullable: true })
+  alertId: number | null;
+}
+
+export class MailPageDto {
+  @ApiProperty({ type: [MailDto] })
+  items: MailDto[];
+
+  @ApiProperty({ type: String, nullable: true })
+  nextCursor: string | null;
+}
+
+export class DemoMessageDto {
+  @ApiProperty()
+  id: string;
+
+  @ApiProperty({ format: 'date-time' })
+  at: string;
+
+  @ApiProperty()
+  from: string;
+
+  @ApiProperty()
+  to: string;
+
+  @ApiProperty()
+  subject: string;
+
+  @ApiProperty()
+  text: string;
+
+  @ApiProperty()
+  html: string;
+}
+
+export class DemoInboxDto {
+  @ApiProperty({ type: [DemoMessageDto] })
+  items: DemoMessageDto[];
+}

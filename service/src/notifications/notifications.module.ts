@@ -1,0 +1,15 @@
+import { Module } from '@nestjs/common';
+import { TypeOrmModule } from '@nestjs/typeorm';
+import { DemoInboxService } from './demo-inbox.service.js';
+import { MailController } from './mail.controller.js';
+import { MailOutboxService } from './mail-outbox.service.js';
+import { MailSenderService } from './mail-sender.service.js';
+import { Mail } from './mail.entity.js';
+
+@Module({
+  imports: [TypeOrmModule.forFeature([Mail])],
+  controllers: [MailController],
+  providers: [MailOutboxService, MailSenderService, DemoInboxService],
+  exports: [MailOutboxService, MailSenderService],
+})
+export class NotificationsModule {}
