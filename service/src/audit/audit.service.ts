@@ -11,7 +11,7 @@ import { canonicalJson } from './canonical-json.js';
 /** What stands before the first entry. */
 const ORIGIN = '0'.repeat(64);
 /** Who is named when the service acted by itself. */
-const SERVICE = 'Polewright';
+export const SERVICE_NAME = 'Polewright';
 /** Entries that are read at once while the chain is checked. */
 const VERIFY_BATCH = 1_000;
 /** What engineers may read the record of: the subjects of their own work. */
@@ -77,7 +77,7 @@ export class AuditService {
     const entry = {
       at: new Date(),
       userId: record.user?.id ?? null,
-      actor: record.user?.name ?? SERVICE,
+      actor: record.user?.name ?? SERVICE_NAME,
       action: record.action,
       subjectType: record.subject.type,
       subjectId: String(record.subject.id),

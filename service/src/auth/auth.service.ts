@@ -3,7 +3,7 @@ import { ConfigService } from '@nestjs/config';
 import { JwtService } from '@nestjs/jwt';
 import { InjectDataSource } from '@nestjs/typeorm';
 import type { DataSource } from 'typeorm';
-import { AuditService } from '../audit/audit.service.js';
+import { AuditService, SERVICE_NAME } from '../audit/audit.service.js';
 import { Transactions } from '../database/transactions.js';
 import { User } from '../people/user.entity.js';
 import type { Settings } from '../settings.js';
@@ -90,17 +90,24 @@ export class AuthService {
   }
 
   /**
-   * Whether a signed-in person's password is this one, as asked before a dangerous step.
+   * Whether a password is that of a person, as asked before a dangerous step.
    *
    * @throws TooManyAttemptsException
    */
-  async confirmPassword(user: SignedInUser, password: string): Promise<boolean> {
+  async passwordIsOf(userId: number, password: string): Promise<boolean> {
+    const user = await this.find('user.id = :key', userId);
+    if (!user) return false;
     const succeeded = this.attempt(user.email, null);
-    const stored = await this.find('user.id = :key', user.id);
-    const right = stored !== null && (await verifyPassword(stored.passwordHash, password));
+    const right = await verifyPassword(user.passwordHash, password);
     signIns.inc({ result: right ? 'confirmed' : 'wrong' });
     if (right) succeeded();
     return right;
+  }
+
+  /** A person's name for a page or the record; the service's own for what nobody did. */
+  async nameOf(userId: number | null): Promise<string> {
+    const user = userId === null ? null : await this.find('user.id = :key', userId);
+    return user?.name ?? SERVICE_NAME;
   }
 
   /**
@@ -115,7 +122,7 @@ export class AuthService {
     next: string,
     refreshToken: string | undefined,
   ): Promise<void> {
-    if (!(await this.confirmPassword(user, current)))
+    if (!(await this.passwordIsOf(user.id, current)))
       throw new BadRequestException({
         errors: [{ path: 'current', message: 'This is not your present password' }],
       });

@@ -70,7 +70,8 @@ export async function seedDemoRota(
   const monday = new Date(now.getTime() - ((now.getUTCDay() + 6) % 7) * DAY);
   const startDate = new Date(monday.getTime() - members.length * 7 * DAY).toISOString().slice(0, 10);
   for (const [index, siteId] of siteIds.entries()) {
-    const memberIds = members.map((_, turn) => members[(turn + index) % members.length] ?? 0);
+    const first = index % members.length;
+    const memberIds = [...members.slice(first), ...members.slice(0, first)];
     await manager.insert(RotaLayer, { siteId, memberIds, handOverTime: '06:00', rotationDays: 7, startDate });
     for (const { daysAgo, by, text } of NOTES)
       await manager.insert(HandoverNote, {
