@@ -1,6 +1,6 @@
 import {
   characteristicPolynomial,
-  effectiveKd,
+  effectiveGains,
   isStable,
   openLoop,
   referenceTransfer,
@@ -44,7 +44,8 @@ export interface Margins {
  * −180° + arg(Ki − Kdω² + jKpω) − atan(ω/α).
  */
 export function openLoopPhaseDeg(plant: Plant, gains: Gains, omega: number): number {
-  const lead = Math.atan2(gains.kp * omega, gains.ki - effectiveKd(plant, gains) * omega * omega);
+  const { kp, ki, kd } = effectiveGains(plant, gains);
+  const lead = Math.atan2(kp * omega, ki - kd * omega * omega);
   return -180 + (lead - Math.atan(omega / plant.pole)) * DEGREES;
 }
 
@@ -100,15 +101,15 @@ export function margins(plant: Plant, gains: Gains): Margins {
 
 /** Where L(jω) crosses the negative real axis, rad/s, and |L| there; null when it never does. */
 function phaseCrossover(plant: Plant, gains: Gains): { omega: number; magnitude: number } | null {
-  const kd = effectiveKd(plant, gains);
-  const excess = gains.ki - plant.pole * gains.kp;
-  const size = Math.abs(gains.ki) + Math.abs(plant.pole * gains.kp);
+  const { kp, ki, kd } = effectiveGains(plant, gains);
+  const excess = ki - plant.pole * kp;
+  const size = Math.abs(ki) + Math.abs(plant.pole * kp);
   // equal to rounding: the phase meets −180° only in the limit ω → 0
   if (kd === 0 || Math.abs(excess) <= 8 * Number.EPSILON * size) return null;
   const square = excess / kd;
   if (square <= 0) return null;
   // there Ki − Kdω² + jKpω = Kp(α + jω), so L(jω) = −KαKp/ω²
-  const magnitude = (plant.gain * plant.pole * gains.kp) / square;
+  const magnitude = (plant.gain * plant.pole * kp) / square;
   return magnitude > 0 ? { omega: Math.sqrt(square), magnitude } : null;
 }
 

@@ -21,12 +21,22 @@ export interface TransferFunction {
   denominatorUncertainty: readonly number[];
 }
 
+/** Gains below this are taken as 0: their squares would leave the range of a double. */
+const DUST = 1e-100;
+
 /**
- * Kd as it acts: 0 when KαKd is lost in the rounding of α + KαKd, so that a gain which is zero to rounding does
- * not invent a zero or a phase crossover at 10¹⁷ rad/s.
+ * Gains as they act: Kd is 0 when KαKd is lost in the rounding of α + KαKd, so that a gain which is zero to
+ * rounding does not invent a zero or a phase crossover at 10¹⁷ rad/s.
  */
-export function effectiveKd(plant: Plant, gains: Gains): number {
-  return Math.abs(plant.gain * gains.kd) <= 4 * Number.EPSILON ? 0 : gains.kd;
+export function effectiveGains(plant: Plant, gains: Gains): Gains {
+  const acting = (gain: number): number => (Math.abs(gain) < DUST ? 0 : gain);
+  return {
+    kp: acting(gains.kp),
+    ki: acting(gains.ki),
+    kd: Math.abs(plant.gain * gains.kd) <= 4 * Number.EPSILON ? 0 : gains.kd,
+    kv: acting(gains.kv),
+    ka: acting(gains.ka),
+  };
 }
 
 /** x, or 0 when x is only the rounding left over from terms of the given total size. */
@@ -43,8 +53,9 @@ export function characteristicPolynomial(
   gains: Gains,
 ): { coefficients: number[]; uncertainty: number[] } {
   const b = plant.gain * plant.pole;
-  const damping = b * effectiveKd(plant, gains);
-  const coefficients = [b * gains.ki, b * gains.kp, plant.pole + damping, 1];
+  const { kp, ki, kd } = effectiveGains(plant, gains);
+  const damping = b * kd;
+  const coefficients = [b * ki, b * kp, plant.pole + damping, 1];
   const eps = 4 * Number.EPSILON;
   const uncertainty = [
     eps * Math.abs(coefficients[0]!),
@@ -52,7 +63,7 @@ export function characteristicPolynomial(
     eps * (plant.pole + Math.abs(damping)),
     0,
   ];
-  const from = gains.ki === 0 ? 1 : 0;
+  const from = ki === 0 ? 1 : 0;
   return { coefficients: coefficients.slice(from), uncertainty: uncertainty.slice(from) };
 }
 
@@ -62,9 +73,10 @@ export function characteristicPolynomial(
  */
 export function openLoop(plant: Plant, gains: Gains): { numerator: number[]; denominator: number[] } {
   const b = plant.gain * plant.pole;
-  const from = gains.ki === 0 ? 1 : 0;
+  const { kp, ki, kd } = effectiveGains(plant, gains);
+  const from = ki === 0 ? 1 : 0;
   return {
-    numerator: [b * gains.ki, b * gains.kp, b * effectiveKd(plant, gains)].slice(from),
+    numerator: [b * ki, b * kp, b * kd].slice(from),
     denominator: [0, 0, plant.pole, 1].slice(from),
   };
 }
@@ -77,10 +89,10 @@ export function openLoop(plant: Plant, gains: Gains): { numerator: number[]; den
 export function referenceTransfer(plant: Plant, gains: Gains, structure: Structure): TransferFunction {
   const { beta, gamma } = setPointWeights(structure);
   const b = plant.gain * plant.pole;
-  const kd = effectiveKd(plant, gains);
-  const square = unlessRounding(gamma * kd + gains.kv, gamma * Math.abs(kd) + Math.abs(gains.kv));
-  const from = gains.ki === 0 ? 1 : 0;
-  const numerator = trim([b * gains.ki, b * beta * gains.kp, b * square, b * gains.ka].slice(from));
+  const { kp, ki, kd, kv, ka } = effectiveGains(plant, gains);
+  const square = unlessRounding(gamma * kd + kv, gamma * Math.abs(kd) + Math.abs(kv));
+  const from = ki === 0 ? 1 : 0;
+  const numerator = trim([b * ki, b * beta * kp, b * square, b * ka].slice(from));
   const { coefficients: denominator, uncertainty } = characteristicPolynomial(plant, gains);
   return { numerator, denominator, denominatorUncertainty: uncertainty };
 }
@@ -194,18 +206,16 @@ export function steadyErrors(
   const none = { ramp: null, acceleration: null };
   const { beta, gamma } = setPointWeights(structure);
   const b = plant.gain * plant.pole;
-  const held = b * effectiveKd(plant, gains) * (1 - gamma);
-  const lag = unlessRounding(
-    plant.pole + held - b * gains.kv,
-    plant.pole + Math.abs(held) + Math.abs(b * gains.kv),
-  );
-  if (gains.ki !== 0) {
+  const { kp, ki, kd, kv, ka } = effectiveGains(plant, gains);
+  const held = b * kd * (1 - gamma);
+  const lag = unlessRounding(plant.pole + held - b * kv, plant.pole + Math.abs(held) + Math.abs(b * kv));
+  if (ki !== 0) {
     if (!isStable(plant, gains)) return none;
-    const ramp = ((1 - beta) * gains.kp) / gains.ki;
-    return { ramp, acceleration: ramp === 0 ? lag / (b * gains.ki) : null };
+    const ramp = ((1 - beta) * kp) / ki;
+    return { ramp, acceleration: ramp === 0 ? lag / (b * ki) : null };
   }
   if (!isStable(plant, gains) || beta === 0) return none;
-  const ramp = lag / (b * gains.kp);
-  const rest = unlessRounding(1 - b * gains.ka, 1 + Math.abs(b * gains.ka));
-  return { ramp, acceleration: ramp === 0 ? rest / (b * gains.kp) : null };
+  const ramp = lag / (b * kp);
+  const rest = unlessRounding(1 - b * ka, 1 + Math.abs(b * ka));
+  return { ramp, acceleration: ramp === 0 ? rest / (b * kp) : null };
 }

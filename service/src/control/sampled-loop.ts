@@ -2,7 +2,7 @@ import { type Controller, checkController } from './move.js';
 import { checkPlant, deadTimeInSamples, heldPositionShare, type Plant, zeroOrderHold } from './plant.js';
 import { abs, add, type Complex, multiply, type Polynomial, power, roots } from './polynomial.js';
 import { checkGains, type Gains } from './pole-placement.js';
-import { closedLoopPoles, isStable } from './loop.js';
+import { closedLoopPoles, effectiveGains, isStable } from './loop.js';
 
 /**
  * The open loop C(z)G(z) of the controller as it runs: integrator updated before use, derivative by backward
@@ -26,7 +26,7 @@ export function sampledOpenLoop(
   outputDelaySamples: number,
 ): { numerator: number[]; denominator: number[] } {
   const T = sampleTime;
-  const { kp, ki, kd } = gains;
+  const { kp, ki, kd } = effectiveGains(plant, gains);
   const late = deadTimeInSamples(plant.deadTime ?? 0, T);
   const alpha = -Math.expm1(-plant.pole * T) / T;
   const held = zeroOrderHold(plant, T);

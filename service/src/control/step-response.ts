@@ -26,8 +26,8 @@ const NO_FIGURES: StepFigures = {
 
 /** Excursions below this share of the final value are rounding of the exponentials, not a response. */
 const NOTHING = 1e-11;
-/** Smallest decay per radian that is still followed to its end; below it the loop does not settle. */
-const LEAST_DAMPING = 1e-4;
+/** Smallest damping ratio that is still followed to its end; below it the loop counts as not settling. */
+const LEAST_DAMPING = 1e-3;
 
 /**
  * Figures of the linear, continuous, unit-step response of T(s) (`referenceTransfer`), without delays, clamp,
@@ -43,7 +43,7 @@ const LEAST_DAMPING = 1e-4;
  * Known answers: I-PD with a triple pole −λ has y = 1 − e^(−λt)(1 + λt + (λt)²/2), no overshoot, settling at
  * λt = 7.517; PI-D with a triple pole overshoots by 5e⁻³ at λt = 3 whatever α is.
  *
- * All null when the loop is not stable, when its slowest pole pair is damped less than 1e-4, or when T(0) = 0.
+ * All null when the loop is not stable, when its slowest pole pair is damped less than 1e-3, or when T(0) = 0.
  *
  * @throws UnphysicalInputError naming the field
  */
