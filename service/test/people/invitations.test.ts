@@ -195,7 +195,7 @@ describe('password reset', () => {
 
 describe('the first administrator', () => {
   it('follows a link that the service prints while there is nobody, and may then register sites', async () => {
-    const empty = await startPeople({ DEMO: false }, false);
+    const empty = await startPeople({ DEMO: false }, { seed: false });
     const invitations = empty.app.get(InvitationService);
     const old = await invitations.createFirst();
     const link = await invitations.createFirst();
