@@ -142,6 +142,10 @@ export class AxesService {
     });
   }
 
+  async trailOf(axis: Axis): Promise<RatioPointDto[]> {
+    return (await this.trails([axis])).get(axis.id) ?? [];
+  }
+
   /** Former estimates over the baseline, thinned evenly to what a drift plot can show. */
   private async trails(axes: Axis[]): Promise<Map<number, RatioPointDto[]>> {
     const rows = await this.dataSource.getRepository(PlantEstimateRow).find({

@@ -125,9 +125,9 @@ export class AxisPipeline {
     this.seconds.push(target, position, output, startUs, stepUs, from, (second) =>
       this.closedSeconds.push(second),
     );
-    this.moves.push(target, position, output, startUs, stepUs, from, (move) =>
-      this.closedMoves.push({ ...move, revision: this.facts.revision }),
-    );
+    this.moves.push(target, position, output, startUs, stepUs, from, (move) => {
+      if (!this.facts.inMaintenance) this.closedMoves.push({ ...move, revision: this.facts.revision });
+    });
     this.noteStanding(block, from);
     own[LAST_US] = startUs + (target.length - 1) * stepUs;
     if (this.facts.inMaintenance) return; // moves by hand are not production

@@ -68,6 +68,10 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
     if (this.writer) this.checkpoint();
   }
 
+  all(): AxisPipeline[] {
+    return [...this.pipelines.values()];
+  }
+
   pipeline(axisId: number): AxisPipeline | undefined {
     return this.pipelines.get(axisId);
   }
