@@ -3,7 +3,6 @@ import { InjectRepository } from '@nestjs/typeorm';
 import { createHash } from 'node:crypto';
 import { Brackets, type EntityManager, Repository } from 'typeorm';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
-import { mayDo } from '../auth/policy.js';
 import { UserRole } from '../people/user-role.entity.js';
 import { AuditEntry } from './audit-entry.entity.js';
 import { canonicalJson } from './canonical-json.js';
@@ -100,9 +99,7 @@ export class AuditService {
     filter: AuditFilter,
   ): Promise<{ items: AuditEntry[]; nextCursor: string | null }> {
     const readable = sitesOf(user, 'audit.read');
-    const administered = user.roles
-      .filter(({ role }) => mayDo(role, 'people.manage'))
-      .map(({ siteId }) => siteId);
+    const administered = sitesOf(user, 'people.manage');
     const query = this.entries
       .createQueryBuilder('entry')
       .where(

@@ -193,6 +193,18 @@ describe('password reset', () => {
   });
 });
 
+describe('guessing links', () => {
+  it('is slowed down', async () => {
+    const other = await startPeople();
+    const tries = [];
+    for (let i = 0; i < 25; i++)
+      tries.push((await request(other.app.getHttpServer()).get(`/api/v1/invitations/guess-${i}`)).status);
+    expect(tries.filter((status) => status === 404)).toHaveLength(20);
+    expect(tries.slice(20)).toEqual(Array(5).fill(429));
+    await other.close();
+  });
+});
+
 describe('the first administrator', () => {
   it('follows a link that the service prints while there is nobody, and may then register sites', async () => {
     const empty = await startPeople({ DEMO: false }, { seed: false });
