@@ -16,7 +16,7 @@ import {
   AlertRuleDto,
   AlertRulesDto,
   ChangeAlertRuleDto,
-  NoteDto,
+  AlertNoteDto,
   ShelveDto,
 } from './dto/alert.dto.js';
 import { RULE, RULES, RULE_TITLES, type RuleName } from './rules.js';
@@ -108,7 +108,7 @@ export class AlertsController {
   @ApiOkResponse({ type: AlertDto })
   async note(
     @Param('id', ParseIntPipe) id: number,
-    @Body() { note }: NoteDto,
+    @Body() { note }: AlertNoteDto,
     @CurrentUser() user: SignedInUser,
   ): Promise<AlertDto> {
     await this.alerts.addNote(id, user, note);

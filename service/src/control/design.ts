@@ -48,11 +48,11 @@ export interface Design {
 /** Points of the frequency response when none are asked for. */
 const DEFAULT_POINTS = 200;
 
-/** 200 logarithmic points, Hz, from a tenth of the slowest pole (closed loop or plant) to the Nyquist frequency. */
+/** 200 logarithmic points, Hz, from a tenth of the slowest pole (closed loop or plant), at most seven decades, up to the Nyquist frequency. */
 export function defaultFrequencies(plant: Plant, gains: Gains, sampleTime: number): number[] {
   const sizes = [...closedLoopPoles(plant, gains).map(abs), plant.pole].filter((size) => size > 0);
   const nyquist = 0.5 / sampleTime;
-  const low = Math.min(Math.min(...sizes) / (20 * Math.PI), nyquist / 10);
+  const low = Math.min(Math.max(Math.min(...sizes) / (20 * Math.PI), nyquist * 1e-7), nyquist / 10);
   const ratio = Math.log(nyquist / low) / (DEFAULT_POINTS - 1);
   return Array.from({ length: DEFAULT_POINTS }, (_, i) => low * Math.exp(ratio * i));
 }
@@ -70,9 +70,10 @@ export function design(question: DesignQuestion): Design {
   const gains = gainsOf(question);
   const frequencies = frequenciesHz ?? defaultFrequencies(plant, gains, controller.sampleTime);
   const sampled = sampledLoop(plant, gains, controller);
-  const sensitivity = sampled.stable
+  const measured = sampled.stable
     ? sampledMaxSensitivity(plant, gains, controller.sampleTime, controller.outputDelaySamples)
     : null;
+  const sensitivity = measured !== null && Number.isFinite(measured.value) ? measured : null;
   return {
     gains,
     closedLoop: closedLoop(plant, gains, structure),

@@ -84,7 +84,9 @@ export function margins(plant: Plant, gains: Gains): Margins {
   const crossing = phaseCrossover(plant, gains);
   const marginDb = crossing === null ? null : -20 * Math.log10(crossing.magnitude);
   const delta = characteristicPolynomial(plant, gains).coefficients;
-  const peak = stable ? supremum(below, squaredMagnitude(delta)) : null;
+  const supremal = stable ? supremum(below, squaredMagnitude(delta)) : null;
+  // on the edge of stability Δ vanishes at the resonance to rounding
+  const peak = supremal !== null && Number.isFinite(supremal.value) ? supremal : null;
   return {
     gainCrossovers,
     gainMarginHighDb: stable && marginDb !== null && marginDb > 0 ? marginDb : null,

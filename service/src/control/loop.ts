@@ -21,8 +21,8 @@ export interface TransferFunction {
   denominatorUncertainty: readonly number[];
 }
 
-/** Gains below this are taken as 0: their squares would leave the range of a double. */
-const DUST = 1e-100;
+/** Gains below this, far below any drive's, are taken as 0: their powers would leave the range of a double. */
+const DUST = 1e-30;
 
 /**
  * Gains as they act: Kd is 0 when KαKd is lost in the rounding of α + KαKd, so that a gain which is zero to
@@ -143,6 +143,8 @@ export function closedLoop(plant: Plant, gains: Gains, structure: Structure): Cl
   const bandwidthHz = fallsTo(above, below, 10 ** -0.3);
   if (!isStable(plant, gains)) return { poles, zeros, bandwidthHz, peakDb: null, peakHz: null };
   const peak = supremum(above, below);
+  // on the edge of stability the denominator vanishes at the resonance to rounding
+  if (!Number.isFinite(peak.value)) return { poles, zeros, bandwidthHz, peakDb: null, peakHz: null };
   return {
     poles,
     zeros,

@@ -165,8 +165,18 @@ function companionEigenvalues(monic: Polynomial): Complex[] {
     companion.set(0, i, -monic[n - 1 - i]!);
     if (i > 0) companion.set(i, i - 1, 1);
   }
-  balance(companion);
-  const evd = new EigenvalueDecomposition(companion, { assumeSymmetric: false });
+  return eigenvalues(companion);
+}
+
+/**
+ * Eigenvalues of a real square matrix (which is balanced in place): ml-matrix, conjugate pairs adjacent.
+ *
+ * @throws RangeError when an entry is not finite; the solver would not end
+ */
+export function eigenvalues(matrix: Matrix): Complex[] {
+  if (!matrix.to1DArray().every(Number.isFinite)) throw new RangeError('a matrix needs finite entries');
+  balance(matrix);
+  const evd = new EigenvalueDecomposition(matrix, { assumeSymmetric: false });
   const re = evd.realEigenvalues;
   const im = evd.imaginaryEigenvalues;
   return re.map((x, i) => ({ re: x, im: im[i]! }));

@@ -1,6 +1,23 @@
+import { Matrix } from 'ml-matrix';
 import { type Controller, checkController } from './move.js';
-import { checkPlant, deadTimeInSamples, heldPositionShare, type Plant, zeroOrderHold } from './plant.js';
-import { abs, add, type Complex, multiply, type Polynomial, power, roots } from './polynomial.js';
+import {
+  checkPlant,
+  deadTimeInSamples,
+  heldPositionShare,
+  type Plant,
+  UnphysicalInputError,
+  zeroOrderHold,
+} from './plant.js';
+import {
+  abs,
+  add,
+  type Complex,
+  eigenvalues,
+  multiply,
+  type Polynomial,
+  power,
+  roots,
+} from './polynomial.js';
 import { checkGains, type Gains } from './pole-placement.js';
 import { closedLoopPoles, effectiveGains, isStable } from './loop.js';
 
@@ -71,9 +88,20 @@ function sampledCharacteristic(
   return add(denominator, numerator);
 }
 
+/** Delay in whole samples up to which the poles come from the δ-polynomial, beyond from the state matrix. */
+const POLYNOMIAL_DELAYS = 4;
+/** Most delay, output delay and dead time together, that the sampled loop is analysed with, samples. */
+const MAX_ANALYSED_DELAYS = 100;
+
 /**
  * Eigenvalues of the sampled loop in z: the four states y, v, I, y₋₁ and one per sample of delay. They, not
  * the s-plane design, say whether the loop as it runs is stable and damped. Sorted by descending magnitude.
+ *
+ * Up to a few samples of delay they are the roots of the δ-polynomial, which keeps all digits near z = 1;
+ * with more delay the many roots near z = 0 make any polynomial ill-conditioned, and the eigenvalues of the
+ * state matrix are taken.
+ *
+ * @throws UnphysicalInputError when output delay and dead time are more than 100 samples together
  */
 export function sampledPoles(
   plant: Plant,
@@ -81,9 +109,23 @@ export function sampledPoles(
   sampleTime: number,
   outputDelaySamples = 0,
 ): Complex[] {
-  return roots(sampledCharacteristic(plant, gains, sampleTime, outputDelaySamples))
-    .map((d) => ({ re: 1 + sampleTime * d.re, im: sampleTime * d.im }))
-    .sort((a, b) => Math.hypot(b.re, b.im) - Math.hypot(a.re, a.im) || b.re - a.re || b.im - a.im);
+  const delays = outputDelaySamples + (plant.deadTime ?? 0) / sampleTime;
+  if (delays > MAX_ANALYSED_DELAYS)
+    throw new UnphysicalInputError(
+      'plant.deadTime',
+      `and output delay are ${Math.round(delays)} samples long; at most ${MAX_ANALYSED_DELAYS} are analysed`,
+    );
+  let poles: Complex[];
+  if (delays <= POLYNOMIAL_DELAYS)
+    poles = roots(sampledCharacteristic(plant, gains, sampleTime, outputDelaySamples)).map((d) => ({
+      re: 1 + sampleTime * d.re,
+      im: sampleTime * d.im,
+    }));
+  else {
+    const { a, n } = sampledStates(plant, gains, sampleTime, outputDelaySamples);
+    poles = eigenvalues(Matrix.from1DArray(n, n, a));
+  }
+  return poles.sort((p, q) => abs(q) - abs(p) || q.re - p.re || q.im - p.im);
 }
 
 /** Damping ratio −Re s/|s| of a pole in z, with s = ln(z)/T; 1 at z = 0, negative outside the unit circle. */
@@ -187,13 +229,22 @@ export function outputRipple(
   return gain === null ? null : (resolution / Math.sqrt(12)) * gain;
 }
 
-/** ‖H‖₂ from white position noise to the output, %/mm. States y, v, I, measured y₋₁, then u₋₁, u₋₂, …. */
-function noiseToOutput(
+/** x⁺ = Ax + B·noise, u = Cx − reaction·noise, row-major; states y, v, I, measured y₋₁, then u₋₁, u₋₂, …. */
+interface SampledStates {
+  n: number;
+  a: Float64Array<ArrayBuffer>;
+  b: Float64Array;
+  c: Float64Array;
+  reaction: number;
+}
+
+/** The sampled loop in state space, driven by noise on the measured position. */
+function sampledStates(
   plant: Plant,
   gains: Gains,
   sampleTime: number,
   outputDelaySamples: number,
-): number | null {
+): SampledStates {
   const T = sampleTime;
   const late = deadTimeInSamples(plant.deadTime ?? 0, T);
   const delay = outputDelaySamples + late.whole;
@@ -201,13 +252,13 @@ function noiseToOutput(
   const n = 4 + past;
   const full = zeroOrderHold(plant, T);
   const rest = zeroOrderHold(plant, T * (1 - late.fraction));
-  const reaction = gains.kp + gains.ki * T + gains.kd / T;
-  // u = −reaction·(y + noise) + I + Kd/T·y₋₁
-  const u = new Float64Array(n);
-  u[0] = -reaction;
-  u[2] = 1;
-  u[3] = gains.kd / T;
-  let a = new Float64Array(n * n);
+  const { kp, ki, kd } = effectiveGains(plant, gains);
+  const reaction = kp + ki * T + kd / T;
+  const c = new Float64Array(n);
+  c[0] = -reaction;
+  c[2] = 1;
+  c[3] = kd / T;
+  const a = new Float64Array(n * n);
   const b = new Float64Array(n);
   a[0] = 1;
   a[1] = full.positionFromVelocity;
@@ -215,8 +266,8 @@ function noiseToOutput(
   const drive = (age: number, position: number, velocity: number): void => {
     if (age === 0) {
       for (let j = 0; j < n; j++) {
-        a[j]! += position * u[j]!;
-        a[n + j]! += velocity * u[j]!;
+        a[j]! += position * c[j]!;
+        a[n + j]! += velocity * c[j]!;
       }
       b[0]! -= position * reaction;
       b[1]! -= velocity * reaction;
@@ -232,16 +283,28 @@ function noiseToOutput(
       full.positionFromOutput - rest.positionFromOutput,
       full.velocityFromOutput - rest.velocityFromOutput,
     );
-  a[2 * n] = -gains.ki * T;
+  a[2 * n] = -ki * T;
   a[2 * n + 2] = 1;
-  b[2] = -gains.ki * T;
+  b[2] = -ki * T;
   a[3 * n] = 1;
   b[3] = 1;
   if (past > 0) {
-    for (let j = 0; j < n; j++) a[4 * n + j] = u[j]!;
+    for (let j = 0; j < n; j++) a[4 * n + j] = c[j]!;
     b[4] = -reaction;
     for (let i = 1; i < past; i++) a[(4 + i) * n + 3 + i] = 1;
   }
+  return { n, a, b, c, reaction };
+}
+
+/** ‖H‖₂ from white position noise to the output, %/mm; null when the loop is not stable. */
+function noiseToOutput(
+  plant: Plant,
+  gains: Gains,
+  sampleTime: number,
+  outputDelaySamples: number,
+): number | null {
+  const { n, b, c: u, reaction, a: once } = sampledStates(plant, gains, sampleTime, outputDelaySamples);
+  let a = once;
   const x = new Float64Array(n * n);
   for (let i = 0; i < n; i++) for (let j = 0; j < n; j++) x[i * n + j] = b[i]! * b[j]!;
   for (let i = 0; i < 60; i++) {

@@ -2,6 +2,7 @@ import { supremum } from './loop.js';
 import { type Controller, checkController } from './move.js';
 import { checkPlant, type Plant } from './plant.js';
 import {
+  abs,
   add,
   evaluate,
   evaluateComplex,
@@ -53,10 +54,16 @@ function bilinearLoop(
   return { numerator: mapped(numerator), denominator: mapped(denominator) };
 }
 
+/** Largest degree of the open loop for which Ms is a root of a polynomial: four states and six delays. */
+const POLYNOMIAL_DEGREE = 10;
+
 /**
  * Ms = max |1/(1 + L)| of the loop as it runs, with the hold, the output delay and the dead time all in it,
- * exact on the unit circle: roots of the derivative of |D|²/|D + N|² in ν², and the Nyquist frequency.
- * Infinity for a loop on the edge of stability; meaningful for a stable loop only.
+ * exact on the unit circle: roots of the derivative of |D|²/|D + N|² in ν², and the Nyquist frequency. With more
+ * than a few samples of delay those polynomials lose their digits; then the peak is bracketed on 2000 points of
+ * the exact expression and refined by golden section.
+ *
+ * Meaningful for a stable loop only.
  */
 export function sampledMaxSensitivity(
   plant: Plant,
@@ -64,6 +71,8 @@ export function sampledMaxSensitivity(
   sampleTime: number,
   outputDelaySamples = 0,
 ): { value: number; frequencyHz: number } {
+  const open = sampledOpenLoop(plant, gains, sampleTime, outputDelaySamples);
+  if (open.denominator.length - 1 > POLYNOMIAL_DEGREE) return searchedMaxSensitivity(open, sampleTime);
   const loop = bilinearLoop(plant, gains, sampleTime, outputDelaySamples);
   const closed = add(loop.denominator, loop.numerator);
   const peak = supremum(squaredMagnitude(loop.denominator), squaredMagnitude(closed));
@@ -73,9 +82,39 @@ export function sampledMaxSensitivity(
   };
 }
 
+function searchedMaxSensitivity(
+  open: { numerator: number[]; denominator: number[] },
+  sampleTime: number,
+): { value: number; frequencyHz: number } {
+  const sensitivity = (angle: number): number => {
+    // δ = (e^(jθ) − 1)/T without cancellation at small θ
+    const half = Math.sin(angle / 2);
+    const delta = { re: (-2 * half * half) / sampleTime, im: Math.sin(angle) / sampleTime };
+    const below = evaluateComplex(open.denominator, delta);
+    const above = evaluateComplex(open.numerator, delta);
+    return abs(below) / Math.hypot(below.re + above.re, below.im + above.im);
+  };
+  const points = 2000;
+  const angles = Array.from({ length: points + 1 }, (_, i) => Math.PI * (i / points) ** 3);
+  let best = 1;
+  for (let i = 2; i <= points; i++) if (sensitivity(angles[i]!) > sensitivity(angles[best]!)) best = i;
+  let low = angles[best - 1]!;
+  let high = angles[Math.min(points, best + 1)]!;
+  const golden = (Math.sqrt(5) - 1) / 2;
+  for (let i = 0; i < 60; i++) {
+    const a = high - golden * (high - low);
+    const b = low + golden * (high - low);
+    if (sensitivity(a) > sensitivity(b)) high = b;
+    else low = a;
+  }
+  const angle = (low + high) / 2;
+  return { value: sensitivity(angle), frequencyHz: angle / (2 * Math.PI * sampleTime) };
+}
+
 /**
  * Margins of the sampled loop with all its delays, each from the exact polynomials in ν²; coefficients that
- * differ by many powers of ten lose nothing, because no z-polynomial is ever multiplied out.
+ * differ by many powers of ten lose nothing, because no z-polynomial is ever multiplied out. For at most six
+ * samples of delay (output delay and dead time together).
  *
  * @throws UnphysicalInputError naming the field
  */

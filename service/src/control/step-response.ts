@@ -71,15 +71,22 @@ export function stepFigures(plant: Plant, gains: Gains, structure: Structure): S
   const response = new ModalResponse(d, c);
 
   const modes = poles
-    .map((p, i) => ({ until: 40 / (-p.re / sigma), size: sizes[i]! / sigma }))
+    .map((p, i) => ({
+      until: (40 * sigma) / -p.re,
+      size: sizes[i]! / sigma,
+      decay: -p.re / sigma,
+      turn: Math.abs(p.im) / sigma,
+    }))
     .sort((a, b) => a.until - b.until);
   const walk = new Walk(jump, response);
   let time = 0;
   modes.forEach((mode, i) => {
     if (mode.until <= time) return;
-    const fastest = Math.max(...modes.slice(i).map((m) => m.size));
+    const alive = modes.slice(i);
+    const fastest = Math.max(...alive.map((m) => m.size));
     const steps = Math.max(1, Math.ceil((mode.until - time) / (0.2 / fastest)));
-    walk.advance(time, (mode.until - time) / steps, steps);
+    const single = alive.every((m) => m.until === mode.until) && mode.turn > 0;
+    walk.advance(time, (mode.until - time) / steps, steps, single ? mode : undefined);
     time = mode.until;
   });
 
@@ -89,7 +96,7 @@ export function stepFigures(plant: Plant, gains: Gains, structure: Structure): S
     peakTime: walk.highest > NOTHING ? walk.highestAt / sigma : null,
     undershootPct: walk.lowest < -NOTHING ? -100 * walk.lowest : 0,
     riseTime: rise === null ? null : rise / sigma,
-    settlingTime: walk.settled / sigma,
+    settlingTime: walk.settled() / sigma,
   };
 }
 
@@ -163,7 +170,8 @@ class Walk {
   lowest: number;
   first10: number | null;
   first90: number | null;
-  settled = 0;
+  /** Finds the last time outside the band so far; asked once, at the end. */
+  private outside = (): number => 0;
   private x: number[];
   private e: number;
   private rate: number;
@@ -181,24 +189,70 @@ class Walk {
     this.first90 = jump >= 0.9 ? 0 : null;
   }
 
-  advance(from: number, step: number, steps: number): void {
-    const forward = exponential(this.response.a, step);
+  settled(): number {
+    return this.outside();
+  }
+
+  /**
+   * Follows `steps` steps from time `from`. With the decay and turn of the one pair still alive, it stops once
+   * the envelope A of e = A·e^(−σt)cos(ωt + φ), A² = e² + ((e' + σe)/ω)², can change no figure any more.
+   */
+  advance(from: number, step: number, steps: number, pair?: { decay: number; turn: number }): void {
+    const n = this.x.length;
+    const forward = Float64Array.from(exponential(this.response.a, step).flat());
+    const { c, slope } = this.response;
+    let x = Float64Array.from(this.x);
+    let next = new Float64Array(n);
     for (let i = 0; i < steps; i++) {
-      const t = from + i * step;
-      const x = this.x;
-      const next = times(forward, x);
-      const e = this.response.deviation(next);
-      const rate = this.response.rate(next);
-      if (this.rate !== 0 && rate !== 0 && this.rate > 0 !== rate > 0) {
-        const at = this.root(x, step, (z) => this.response.rate(z), this.rate);
-        const turning = this.response.deviation(this.response.after(x, at));
-        this.piece(x, t, 0, this.e, at, turning);
-        this.piece(x, t, at, turning, step, e);
-      } else this.piece(x, t, 0, this.e, step, e);
-      this.x = next;
+      let e = 0;
+      let rate = 0;
+      for (let r = 0; r < n; r++) {
+        let sum = 0;
+        for (let k = 0; k < n; k++) sum += forward[r * n + k]! * x[k]!;
+        next[r] = sum;
+        e += c[r]! * sum;
+        rate += slope[r]! * sum;
+      }
+      const turns = this.rate !== 0 && rate !== 0 && this.rate > 0 !== rate > 0;
+      const refine = turns && (!pair || this.turningMatters(e));
+      if (refine || this.matters(e)) {
+        const t = from + i * step;
+        const state = Array.from(x);
+        if (refine) {
+          const at = this.root(state, step, (z) => this.response.rate(z), this.rate);
+          const turning = this.response.deviation(this.response.after(state, at));
+          this.piece(state, t, 0, this.e, at, turning);
+          this.piece(state, t, at, turning, step, e);
+        } else this.piece(state, t, 0, this.e, step, e);
+      }
+      [x, next] = [next, x];
       this.e = e;
       this.rate = rate;
+      if (pair && Math.hypot(e, (rate + pair.decay * e) / pair.turn) < Math.min(0.02, this.highest)) break;
     }
+    this.x = Array.from(x);
+  }
+
+  /** Whether a pair's turning point between this.e and e can: it lies at most 1 − cos 0.1 = 0.5 % beyond them. */
+  private turningMatters(e: number): boolean {
+    const furthest = Math.max(Math.abs(this.e), Math.abs(e));
+    return (
+      (furthest <= 0.02 && 1.01 * furthest > 0.02) ||
+      1.01 * Math.max(this.e, e) > this.highest ||
+      1 + 1.01 * Math.min(this.e, e) < this.lowest
+    );
+  }
+
+  /** Whether a stretch from this.e to e without a turning point can change a figure. */
+  private matters(e: number): boolean {
+    return (
+      e > this.highest ||
+      1 + e < this.lowest ||
+      this.first10 === null ||
+      this.first90 === null ||
+      Math.abs(e) > 0.02 ||
+      Math.abs(this.e) > 0.02
+    );
   }
 
   /** One stretch without a turning point, from local time `a` to `b` after the state `x` at time `t`. */
@@ -210,8 +264,8 @@ class Walk {
     if (1 + eb < this.lowest) this.lowest = 1 + eb;
     if (this.first10 === null && 1 + eb >= 0.1) this.first10 = t + this.passage(x, a, ea, b, -0.9);
     if (this.first90 === null && 1 + eb >= 0.9) this.first90 = t + this.passage(x, a, ea, b, -0.1);
-    if (Math.abs(eb) > 0.02) this.settled = t + b;
-    else if (Math.abs(ea) > 0.02) this.settled = t + this.passage(x, a, ea, b, ea > 0 ? 0.02 : -0.02);
+    if (Math.abs(eb) > 0.02) this.outside = () => t + b;
+    else if (Math.abs(ea) > 0.02) this.outside = () => t + this.passage(x, a, ea, b, ea > 0 ? 0.02 : -0.02);
   }
 
   private passage(x: number[], a: number, ea: number, b: number, level: number): number {

@@ -1,6 +1,6 @@
 import { quadraticForm } from './symmetric.js';
 import type { BlockFit, PlantFigures } from './motion-regression.js';
-import type { Interval, PlantEstimate, PlantPrior, Verdict } from './plant-estimate.js';
+import type { Interval, LnCovariance, PlantEstimate, PlantPrior, Verdict } from './plant-estimate.js';
 
 /** A pooled fit with what it was made from. */
 export interface PooledFit {
@@ -26,6 +26,23 @@ export function student95(degrees: number): number {
 /** gᵀ·cov(θ)·h. */
 export function covarianceOf(fit: BlockFit, g: Float64Array, h: Float64Array): number {
   return quadraticForm(g, fit.covariance, h, fit.model.parameters);
+}
+
+/**
+ * Variance that the equation itself leaves, beside the residuals': the start of motion and the velocity's sign
+ * are known to a fraction of a sample only. Standard deviations of ln K, ln α and of f and b in % of output
+ * (measured on simulated axes with noise near zero).
+ */
+const EQUATION_VARIANCE = { lnGain: 1e-4 ** 2, lnPole: 2e-4 ** 2, friction: 1.5e-3 ** 2 };
+
+/** Covariance of (ln K, ln α). */
+export function lnCovariance(fit: BlockFit, figures: PlantFigures): LnCovariance {
+  const { lnGain, lnPole } = figures.gradients;
+  return {
+    gain: covarianceOf(fit, lnGain, lnGain) + EQUATION_VARIANCE.lnGain,
+    cross: covarianceOf(fit, lnGain, lnPole),
+    pole: covarianceOf(fit, lnPole, lnPole) + EQUATION_VARIANCE.lnPole,
+  };
 }
 
 /** Whether K⁺ and K⁻ differ by more than 2 % and by more than four standard errors. */
@@ -79,17 +96,18 @@ export function describePlant(
   const { fit, figures } = pooled;
   const { gradients } = figures;
   const t = student95(fit.effectiveBlocks);
-  const deviation = (g: Float64Array): number => Math.sqrt(Math.max(covarianceOf(fit, g, g), 0));
-  const logInterval = (ln: number, g: Float64Array): Interval => {
-    const half = t * deviation(g);
+  const deviation = (g: Float64Array, beside: number): number =>
+    Math.sqrt(Math.max(covarianceOf(fit, g, g), 0) + beside);
+  const logInterval = (ln: number, g: Float64Array, beside = EQUATION_VARIANCE.lnGain): Interval => {
+    const half = t * deviation(g, beside);
     return { value: Math.exp(ln), low: Math.exp(ln - half), high: Math.exp(ln + half) };
   };
   const plainInterval = (value: number, g: Float64Array): Interval => {
-    const half = t * deviation(g);
+    const half = t * deviation(g, EQUATION_VARIANCE.friction);
     return { value, low: value - half, high: value + half };
   };
   const gain = logInterval(figures.lnGain, gradients.lnGain);
-  const pole = logInterval(figures.lnPole, gradients.lnPole);
+  const pole = logInterval(figures.lnPole, gradients.lnPole, EQUATION_VARIANCE.lnPole);
   let coulomb = plainInterval(figures.coulomb, gradients.coulomb);
   let bias = plainInterval(figures.bias, gradients.bias);
 
@@ -136,11 +154,7 @@ export function describePlant(
     coulomb,
     bias,
     deadTime: Math.max(deadTime, 0),
-    lnCovariance: {
-      gain: covarianceOf(fit, gradients.lnGain, gradients.lnGain),
-      cross: covarianceOf(fit, gradients.lnGain, gradients.lnPole),
-      pole: covarianceOf(fit, gradients.lnPole, gradients.lnPole),
-    },
+    lnCovariance: lnCovariance(fit, figures),
     fitPct: pooled.fitPct,
     movingSeconds,
     verdict,

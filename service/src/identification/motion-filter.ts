@@ -1,4 +1,5 @@
 import type { PlantPrior } from './plant-estimate.js';
+import { holdTaps } from './hold-taps.js';
 import { PRODUCT_SUMS } from './motion-regression.js';
 
 /**
@@ -69,6 +70,7 @@ export const STATE = {
 export interface FilterPlan {
   readonly sampleTime: number;
   readonly resolution: number;
+  readonly pole: number;
   /** Filter bandwidth, rad/s. */
   readonly bandwidth: number;
   /** Filter step 1 − e^(−ωT). */
@@ -77,7 +79,9 @@ export interface FilterPlan {
   readonly reach: number;
   /** Counts over the span from which on the axis surely moves. */
   readonly movingCounts: number;
+  /** Samples after a gap until the filters have forgotten it, and after a start until breakaway is forgotten. */
   readonly settleSamples: number;
+  readonly clearSamples: number;
   /** Every how many samples the filtered signals enter the sums. */
   readonly stride: number;
   /** Hold weights of the newer and the older interval. */
@@ -87,19 +91,17 @@ export interface FilterPlan {
 }
 
 /**
- * Filter bandwidth 1.5·α, at least 20 rad/s so that production moves pass, at most 0.35/T; span of the
- * velocity sign a quarter of the plant's time constant, longer where the resolution is coarse (common
- * practice, no source).
+ * Filter bandwidth α, at least 30 rad/s so that production moves pass, at most 0.35/T; span of the velocity's
+ * sign a quarter of the plant's time constant, longer where the resolution is coarse; learning from seven
+ * filter time constants after the axis has begun to move, when 3 % of what happened at breakaway is left in
+ * a third-order filter (common practice, no source; chosen on the simulated axes of the tests).
  */
 export function filterPlan(prior: PlantPrior): FilterPlan {
   const { sampleTime: T, resolution, pole } = prior;
-  const bandwidth = Math.min(Math.max(1.5 * pole, 20), 0.35 / T);
+  const bandwidth = Math.min(Math.max(pole, 30), 0.35 / T);
   const spanSeconds = Math.min(Math.max(0.25 / pole, resolution, 3 * T), 0.04);
   const reach = Math.min(Math.max(Math.round((spanSeconds / T + 1) / 2), 2), 16);
-  const aT = pole * T;
-  const decay = Math.exp(-aT);
-  // b₁ and b₂ of the zero-order hold, divided by their sum K(1 − a)T (see control.md, "Plant").
-  const b1 = aT < 1e-4 ? 0.5 + aT / 12 : (aT - (1 - decay)) / (aT * (1 - decay));
+  const [newer, older] = holdTaps(pole, T, 0).weights;
   return {
     sampleTime: T,
     resolution,
@@ -108,9 +110,11 @@ export function filterPlan(prior: PlantPrior): FilterPlan {
     reach,
     movingCounts: 3,
     settleSamples: Math.ceil(10 / (bandwidth * T)),
+    clearSamples: Math.ceil(7 / (bandwidth * T)),
     stride: Math.max(1, Math.floor(0.25 / (bandwidth * T))),
-    newer: b1,
-    older: 1 - b1,
+    newer,
+    older,
+    pole,
     longestDelay: (LINE - 2 * 16 - 4) * T,
   };
 }
@@ -143,14 +147,15 @@ export function filterSamples(
   const perSecond = plan.resolution / T;
   const g = plan.step;
   const rate = 1 / T;
-  const { newer, older, reach, movingCounts, stride, settleSamples } = plan;
+  const { newer, older, reach, movingCounts, stride, settleSamples, clearSamples } = plan;
   const span = 2 * reach - 1;
   const spanVelocity = plan.resolution / (span * T);
   const delaySamples = state[STATE.deadTime]! / T;
   const d = Math.floor(delaySamples);
-  const late = delaySamples - d;
-  const prompt = 1 - late;
-  const need = Math.max(span, reach + d + 1) + 1;
+  const taps = holdTaps(plan.pole, T, delaySamples - d);
+  const [n1, n2, n3] = taps.weights;
+  const [m1, m2, m3] = taps.slopes;
+  const need = Math.max(span, reach + d + 2) + 1;
   const lineP = STATE.positions;
   const lineU = STATE.outputs;
   const B = STATE.block;
@@ -171,11 +176,8 @@ export function filterSamples(
   let learned = state[B + BLOCK.learned]!;
 
   const P = STATE.previous;
-  let uf0 = state[P]!;
-  let ur0 = state[P + 1]!;
-  let sf0 = state[P + 2]!;
-  let sr0 = state[P + 3]!;
-  let du0 = state[P + 4]!;
+  let sf0 = state[P]!;
+  let sr0 = state[P + 1]!;
   const F = STATE.filters;
   let v1 = state[F]!;
   let v2 = state[F + 1]!;
@@ -212,7 +214,8 @@ export function filterSamples(
     const velocity = (state[lineP + ((i + 1) & LINE_MASK)]! - state[lineP + (i & LINE_MASK)]!) * perSecond;
     const uNew = state[lineU + ((i - d) & LINE_MASK)]!;
     const uOld = state[lineU + ((i - d - 1) & LINE_MASK)]!;
-    const u = prompt * uNew + late * uOld;
+    const uOlder = state[lineU + ((i - d - 2) & LINE_MASK)]!;
+    const u = n1 * uNew + n2 * uOld + n3 * uOlder;
 
     let uf = 0;
     let ur = 0;
@@ -223,12 +226,12 @@ export function filterSamples(
     if (counts >= movingCounts) {
       uf = u;
       sf = 1;
-      du = (uNew - uOld) * rate;
+      du = -(m1 * uNew + m2 * uOld + m3 * uOlder);
       vSim = simA * vSim + simF * u - simCF;
     } else if (counts <= -movingCounts) {
       ur = u;
       sr = 1;
-      du = (uNew - uOld) * rate;
+      du = -(m1 * uNew + m2 * uOld + m3 * uOlder);
       vSim = simA * vSim + simR * u + simCR;
     } else {
       moving = false;
@@ -239,10 +242,10 @@ export function filterSamples(
     v1 += g * (velocity - v1);
     v2 += g * (v1 - v2);
     v3 += g * (v2 - v3);
-    a1 += g * (newer * uf + older * uf0 - a1);
+    a1 += g * (uf - a1);
     a2 += g * (a1 - a2);
     a3 += g * (a2 - a3);
-    b1 += g * (newer * ur + older * ur0 - b1);
+    b1 += g * (ur - b1);
     b2 += g * (b1 - b2);
     b3 += g * (b2 - b3);
     c1 += g * (newer * sf + older * sf0 - c1);
@@ -251,14 +254,11 @@ export function filterSamples(
     e1 += g * (newer * sr + older * sr0 - e1);
     e2 += g * (e1 - e2);
     e3 += g * (e2 - e3);
-    h1 += g * (newer * du + older * du0 - h1);
+    h1 += g * (du - h1);
     h2 += g * (h1 - h2);
     h3 += g * (h2 - h3);
-    uf0 = uf;
-    ur0 = ur;
     sf0 = sf;
     sr0 = sr;
-    du0 = du;
 
     if (!moving) {
       // At rest both sides of the equation are zero: a long rest settles the filters by itself.
@@ -266,10 +266,12 @@ export function filterSamples(
       if (settling > 0) settling--;
       continue;
     }
-    resting = 0;
+    if (resting > 0) {
+      resting = 0;
+      if (settling < clearSamples) settling = clearSamples;
+    }
     if (settling > 0) {
       settling--;
-      vSim = counts * spanVelocity;
       continue;
     }
     if (++phase < stride) continue;
@@ -325,11 +327,8 @@ export function filterSamples(
   state[STATE.simulatedVelocity] = vSim;
   state[B + BLOCK.learned] = learned;
   state[B + BLOCK.elapsed]! += k - from;
-  state[P] = uf0;
-  state[P + 1] = ur0;
-  state[P + 2] = sf0;
-  state[P + 3] = sr0;
-  state[P + 4] = du0;
+  state[P] = sf0;
+  state[P + 1] = sr0;
   state[F] = v1;
   state[F + 1] = v2;
   state[F + 2] = v3;

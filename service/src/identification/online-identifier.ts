@@ -15,17 +15,23 @@ import {
   type PlantFigures,
 } from './motion-regression.js';
 import type { PlantEstimate, PlantPrior, WindowEstimate } from './plant-estimate.js';
-import { covarianceOf, describePlant, directionsDiffer, type PooledFit } from './describe-plant.js';
+import {
+  covarianceOf,
+  describePlant,
+  directionsDiffer,
+  lnCovariance,
+  type PooledFit,
+} from './describe-plant.js';
 
 /** Blocks that the state remembers. */
 const RING = 48;
 /** Weight of a block against the next newer one: 0.96 a second of motion, a memory of about 25 s. */
 const FORGETTING = 0.96;
 /** Motion that closes a window, s. */
-const WINDOW_MOTION = 5;
+const WINDOW_MOTION = 3;
 /** Stream time after which a window with `WINDOW_LEAST_MOTION` closes, s. */
 const WINDOW_PATIENCE = 30;
-const WINDOW_LEAST_MOTION = 2;
+const WINDOW_LEAST_MOTION = 1.5;
 /** Share of samples a direction needs to count as present. */
 const DIRECTION_SHARE = 0.08;
 /** Motion needed before the dead time is moved, s. */
@@ -168,11 +174,7 @@ export class OnlineIdentifier {
       elapsedSeconds: this.sum(offsets, BLOCK.elapsed) * this.plan.sampleTime,
       lnGain: figures.lnGain,
       lnPole: figures.lnPole,
-      covariance: {
-        gain: covarianceOf(fit, figures.gradients.lnGain, figures.gradients.lnGain),
-        cross: covarianceOf(fit, figures.gradients.lnGain, figures.gradients.lnPole),
-        pole: covarianceOf(fit, figures.gradients.lnPole, figures.gradients.lnPole),
-      },
+      covariance: lnCovariance(fit, figures),
       coulomb: figures.coulomb,
       bias: figures.bias,
       gainForward: directional ? directional.figures.gainForward : null,
@@ -239,7 +241,7 @@ export class OnlineIdentifier {
   private forgetWhatChanged(newest: readonly number[]): void {
     const { state } = this;
     const older = this.blockOffsets().filter((o) => !newest.includes(o));
-    if (older.length < 8 || newest.length < 3) return;
+    if (older.length < 6 || newest.length < 2) return;
     const shift = state[STATE.delayShift]!;
     const before = this.fit(
       older,

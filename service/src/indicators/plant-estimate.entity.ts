@@ -16,6 +16,6 @@ export class PlantEstimateRow {
   estimate: PlantEstimate;
 
   /** What the control chart said after this window. */
-  @Column('simple-json')
+  @Column({ type: 'simple-json', nullable: true })
   chart: DriftDecisions | null;
 }

@@ -2,7 +2,7 @@ import { BadRequestException, ConflictException, ForbiddenException, Injectable,
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { LessThan, type DataSource, type EntityManager } from 'typeorm';
+import { IsNull, LessThan, Not, type DataSource, type EntityManager } from 'typeorm';
 import { AuditService } from '../audit/audit.service.js';
 import { AuthService } from '../auth/auth.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
@@ -128,11 +128,16 @@ export class ApplyService {
 
   /** Revisions count up and are never used again, also those that a machine refused. */
   private async nextRevision(manager: EntityManager, axisId: number): Promise<number> {
-    const [proposals, tunings] = await Promise.all([
-      manager.maximum(Proposal, 'revision', { axisId }),
-      manager.maximum(TuningRevision, 'revision', { axisId }),
-    ]);
-    return Math.max(proposals ?? 0, tunings ?? 0) + 1;
+    const largest = async (entity: typeof Proposal | typeof TuningRevision): Promise<number> => {
+      const [row] = await manager.find<Proposal | TuningRevision>(entity, {
+        select: { revision: true },
+        where: { axisId, revision: Not(IsNull()) },
+        order: { revision: 'DESC' },
+        take: 1,
+      });
+      return row?.revision ?? 0;
+    };
+    return Math.max(await largest(Proposal), await largest(TuningRevision)) + 1;
   }
 
   @OnEvent('gains.read-back')

@@ -111,7 +111,7 @@ export class CheckpointWriter {
     }
     for (const move of pipeline.closedMoves) this.move.run({ ...move, axisId });
     for (const { t, estimate, decisions } of pipeline.closedEstimates)
-      this.estimate.run(axisId, t, JSON.stringify(estimate), JSON.stringify(decisions));
+      this.estimate.run(axisId, t, JSON.stringify(estimate), decisions && JSON.stringify(decisions));
     this.state.run(axisId, pipeline.save());
   }
 }

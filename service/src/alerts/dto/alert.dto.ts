@@ -166,7 +166,7 @@ export class AcknowledgeDto {
   note?: string;
 }
 
-export class NoteDto {
+export class AlertNoteDto {
   @ApiProperty({ maxLength: 2000 })
   @IsString()
   @IsNotEmpty()

@@ -23,7 +23,7 @@ export class PatternDto {
   @ArrayMaxSize(3)
   @IsNumber({}, { each: true })
   @IsPositive({ each: true })
-  poles?: [number, number, number];
+  poles?: readonly [number, number, number];
 
   @ApiPropertyOptional({ description: 'kind "pair": the real pole, rad/s' })
   @ValidateIf(({ kind }: PatternDto) => kind === 'pair')
