@@ -214,7 +214,7 @@ class Walk {
         rate += slope[r]! * sum;
       }
       const turns = this.rate !== 0 && rate !== 0 && this.rate > 0 !== rate > 0;
-      const refine = turns && (!pair || this.turningMatters(e));
+      const refine = turns && this.turningMatters(e, Math.max(Math.abs(this.rate), Math.abs(rate)) * step);
       if (refine || this.matters(e)) {
         const t = from + i * step;
         const state = Array.from(x);
@@ -233,13 +233,15 @@ class Walk {
     this.x = Array.from(x);
   }
 
-  /** Whether a pair's turning point between this.e and e can: it lies at most 1 − cos 0.1 = 0.5 % beyond them. */
-  private turningMatters(e: number): boolean {
+  /** Whether a turning point between this.e and e, at most `reach` beyond them, can change a figure. */
+  private turningMatters(e: number, reach: number): boolean {
     const furthest = Math.max(Math.abs(this.e), Math.abs(e));
     return (
-      (furthest <= 0.02 && 1.01 * furthest > 0.02) ||
-      1.01 * Math.max(this.e, e) > this.highest ||
-      1 + 1.01 * Math.min(this.e, e) < this.lowest
+      (furthest <= 0.02 && furthest + reach > 0.02) ||
+      Math.max(this.e, e) + reach > this.highest ||
+      1 + Math.min(this.e, e) - reach < this.lowest ||
+      this.first10 === null ||
+      this.first90 === null
     );
   }
 
