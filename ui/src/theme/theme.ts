@@ -1,0 +1,45 @@
+import { createTheme, type CSSVariablesResolver, type MantineColorsTuple } from '@mantine/core';
+import { palette } from './palette';
+
+/** Verdigris: what can be pressed. */
+const verdigris: MantineColorsTuple = [
+  '#e8f4f1',
+  '#d3e6e1',
+  '#a8cdc5',
+  '#7ab3a8',
+  '#549d90',
+  '#3c9081',
+  '#1f7a6d',
+  '#196a5e',
+  '#115b50',
+  '#034b41',
+];
+
+export const theme = createTheme({
+  fontFamily: "'Work Sans Variable', 'Work Sans', system-ui, sans-serif",
+  fontSizes: { xs: '12px', sm: '13px', md: '15px', lg: '18px', xl: '26px' },
+  headings: { fontFamily: "'Work Sans Variable', 'Work Sans', system-ui, sans-serif", fontWeight: '620' },
+  colors: { verdigris },
+  primaryColor: 'verdigris',
+  primaryShade: { light: 6, dark: 4 },
+  defaultRadius: 4,
+  cursorType: 'pointer',
+  respectReducedMotion: true,
+  autoContrast: true,
+});
+
+/** Our colours by meaning, for both schemes, and Mantine's own grounds set to them. */
+export const cssVariables: CSSVariablesResolver = () => {
+  const variables = (scheme: keyof typeof palette): Record<string, string> => ({
+    ...Object.fromEntries(Object.entries(palette[scheme]).map(([name, value]) => [`--${name}`, value])),
+    '--mantine-color-body': palette[scheme].ground,
+    '--mantine-color-text': palette[scheme].ink,
+    '--mantine-color-dimmed': palette[scheme].soft,
+    '--mantine-color-default-border': palette[scheme].rule,
+    '--mantine-color-default': palette[scheme].surface,
+    '--mantine-color-error': palette[scheme].out,
+    '--mantine-color-placeholder': palette[scheme].soft,
+    '--mantine-color-anchor': palette[scheme].press,
+  });
+  return { variables: {}, light: variables('light'), dark: variables('dark') };
+};
