@@ -159,7 +159,7 @@ export function frequencyResponse(
   return response;
 }
 
-/** 20·log₁₀|z|, not below −400 dB, so that a zero on the axis stays a number. */
+/** 10·log₁₀|z|², not below −400 dB, so that a zero on the axis stays a number. */
 function decibels(re: number, im: number): number {
-  return Math.max(-400, 20 * Math.log10(Math.hypot(re, im)));
+  return Math.max(-400, 10 * Math.log10(re * re + im * im));
 }

@@ -104,6 +104,7 @@ export function stepFigures(plant: Plant, gains: Gains, structure: Structure): S
 class ModalResponse {
   readonly a: number[][];
   readonly slope: number[];
+  private readonly norm: number;
 
   constructor(
     d: readonly number[],
@@ -114,6 +115,7 @@ class ModalResponse {
       Array.from({ length: n }, (_, j) => (i === n - 1 ? -d[j]! : j === i + 1 ? 1 : 0)),
     );
     this.slope = Array.from({ length: n }, (_, j) => c.reduce((s, ci, i) => s + ci * this.a[i]![j]!, 0));
+    this.norm = Math.max(1, d.reduce((sum, v) => sum + Math.abs(v), 0) - 1);
     // from rest, minus the steady state [1/d₀, 0, …]
     this.start = Array.from({ length: n }, (_, i) => (i === 0 ? -1 / d[0]! : 0));
   }
@@ -128,8 +130,29 @@ class ModalResponse {
     return dot(this.slope, x);
   }
 
+  /** e^(At)·x: the Taylor series applied to the vector over short times, the whole matrix over long ones. */
   after(x: readonly number[], t: number): number[] {
-    return times(exponential(this.a, t), x);
+    const pieces = Math.max(1, Math.ceil(this.norm * t));
+    if (pieces > 16) return times(exponential(this.a, t), x);
+    const n = x.length;
+    const h = t / pieces;
+    let state = x.slice();
+    for (let piece = 0; piece < pieces; piece++) {
+      let term = state;
+      const sum = state.slice();
+      for (let k = 1; k <= 18; k++) {
+        // A is a companion matrix: it shifts, and its last row is −d
+        const next = new Array<number>(n);
+        let last = 0;
+        for (let j = 0; j < n; j++) last += this.a[n - 1]![j]! * term[j]!;
+        for (let j = 0; j < n - 1; j++) next[j] = (term[j + 1]! * h) / k;
+        next[n - 1] = (last * h) / k;
+        term = next;
+        for (let j = 0; j < n; j++) sum[j]! += term[j]!;
+      }
+      state = sum;
+    }
+    return state;
   }
 }
 
