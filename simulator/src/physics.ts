@@ -36,17 +36,21 @@ export interface PlantFigures {
 
 const MM_PER_M = 1000;
 
-/** K = g/B, α = B/M, f = F/g, b = o/g, with the mean of both directions' g where one is asked for. */
+/**
+ * K = g/B, α = B/M, f = F/g, b = o/g. Where g differs by direction, K is the mean of both, and f and b are what
+ * v' = −αv + K±·α(u − f·sgn(v) − b) needs: f ± b is the output that overcomes F ± o in either direction.
+ */
 export function plantOf(physics: Physics): PlantFigures {
   const { mass, viscous, coulomb, forceForward, forceReverse, offset, deadTime } = physics;
-  const force = (forceForward + forceReverse) / 2;
+  const againstForward = (coulomb + offset) / forceForward;
+  const againstReverse = (coulomb - offset) / forceReverse;
   return {
-    gain: (MM_PER_M * force) / viscous,
+    gain: (MM_PER_M * (forceForward + forceReverse)) / 2 / viscous,
     gainForward: (MM_PER_M * forceForward) / viscous,
     gainReverse: (MM_PER_M * forceReverse) / viscous,
     pole: viscous / mass,
-    coulomb: coulomb / force,
-    bias: offset / force,
+    coulomb: (againstForward + againstReverse) / 2,
+    bias: (againstForward - againstReverse) / 2,
     deadTime,
   };
 }
