@@ -29,7 +29,6 @@ const DUST = 1e-30;
  * rounding does not invent a zero or a phase crossover at 10¹⁷ rad/s.
  */
 export function effectiveGains(plant: Plant, gains: Gains): Gains {
-  const acting = (gain: number): number => (Math.abs(gain) < DUST ? 0 : gain);
   return {
     kp: acting(gains.kp),
     ki: acting(gains.ki),
@@ -37,6 +36,10 @@ export function effectiveGains(plant: Plant, gains: Gains): Gains {
     kv: acting(gains.kv),
     ka: acting(gains.ka),
   };
+}
+
+function acting(gain: number): number {
+  return Math.abs(gain) < DUST ? 0 : gain;
 }
 
 /** x, or 0 when x is only the rounding left over from terms of the given total size. */

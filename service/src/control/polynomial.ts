@@ -232,16 +232,15 @@ function polish(monic: Polynomial, start: Complex[]): Complex[] {
       const w = divide(value, evaluateComplex(slope, z));
       let sumRe = 0;
       let sumIm = 0;
-      const repel = (re: number, im: number): void => {
-        const d2 = re * re + im * im;
-        if (d2 === 0) return;
-        sumRe += re / d2;
-        sumIm -= im / d2;
-      };
       for (let j = 0; j < upper.length; j++) {
         const other = upper[j]!;
-        if (j !== i) repel(z.re - other.re, z.im - other.im);
-        if (other.im !== 0) repel(z.re - other.re, z.im + other.im);
+        const re = z.re - other.re;
+        for (const im of other.im === 0 ? [z.im] : [z.im - other.im, z.im + other.im]) {
+          const square = re * re + im * im;
+          if (square === 0) continue;
+          sumRe += re / square;
+          sumIm -= im / square;
+        }
       }
       const step = divide(w, {
         re: 1 - (w.re * sumRe - w.im * sumIm),

@@ -48,11 +48,6 @@ export function sampledOpenLoop(
   const alpha = -Math.expm1(-plant.pole * T) / T;
   const held = zeroOrderHold(plant, T);
   const z: Polynomial = [1, T];
-  /** Position response to a velocity gain g (per %) and position gain p (per %) at the end of a sample. */
-  const pulse = (p: number, g: number): number[] => [
-    (p * alpha) / T + (held.positionFromVelocity * g) / (T * T),
-    p / T,
-  ];
   let path: number[];
   let delays = outputDelaySamples + late.whole;
   if (late.fraction === 0) {
@@ -60,11 +55,14 @@ export function sampledOpenLoop(
     path = [plant.gain * alpha, plant.gain * heldPositionShare(plant.pole * T)];
   } else {
     const rest = zeroOrderHold(plant, T * (1 - late.fraction));
-    const now = pulse(rest.positionFromOutput, rest.velocityFromOutput);
-    const before = pulse(
-      held.positionFromOutput - rest.positionFromOutput,
-      held.velocityFromOutput - rest.velocityFromOutput,
-    );
+    // n(δ) of an input that leaves a position and a velocity at the end of its sample
+    const [now, before] = [
+      [rest.positionFromOutput, rest.velocityFromOutput],
+      [held.positionFromOutput - rest.positionFromOutput, held.velocityFromOutput - rest.velocityFromOutput],
+    ].map(([y = 0, v = 0]) => [(y * alpha) / T + (held.positionFromVelocity * v) / (T * T), y / T]) as [
+      number[],
+      number[],
+    ];
     path = add(multiply(now, z), before);
     delays += 1;
   }
@@ -196,20 +194,19 @@ export function maxStableSampleTime(plant: Plant, gains: Gains, outputDelaySampl
   const sizes = closedLoopPoles(plant, gains).map(abs);
   const fastest = Math.max(...sizes, plant.pole);
   const slowest = Math.min(...sizes, plant.pole);
-  const stable = (T: number): boolean => isSampledStable(plant, gains, T, outputDelaySamples);
   let low = Math.max(0.01 / (fastest * (1 + outputDelaySamples)), (plant.deadTime ?? 0) / 10);
-  if (!stable(low)) return null;
+  if (!isSampledStable(plant, gains, low, outputDelaySamples)) return null;
   const last = 1e4 / slowest;
   let high = low;
   do {
     low = high;
     if (low > last) return null;
     high = low * 1.08;
-  } while (stable(high));
+  } while (isSampledStable(plant, gains, high, outputDelaySamples));
   while (high - low > 1e-12 * high) {
     const middle = (low + high) / 2;
     if (middle <= low || middle >= high) break;
-    if (stable(middle)) low = middle;
+    if (isSampledStable(plant, gains, middle, outputDelaySamples)) low = middle;
     else high = middle;
   }
   return low;
