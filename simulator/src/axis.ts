@@ -1,5 +1,5 @@
 import { Controller, inRegisters, type Gains, type Structure, type Target } from './controller.js';
-import { physicsWith, reached, type ActiveFault, type Fault } from './faults.js';
+import { physicsWith, reached, type ActiveFault, type Fault, type ScheduledFault } from './faults.js';
 import { Body, type Physics } from './physics.js';
 import { Program, type Step } from './program.js';
 import { randomFrom, type Random } from './random.js';
@@ -49,6 +49,8 @@ export class Axis {
   revision = 0;
   maintenance = false;
   faults: ActiveFault[] = [];
+  /** Faults that come by themselves; each is taken out once it has come. */
+  scheduled: ScheduledFault[] = [];
   private physicsNow: Physics;
   private readonly body: Body;
   private readonly program: Program;
@@ -207,8 +209,12 @@ export class Axis {
     }
   }
 
-  private get ramping(): boolean {
-    return this.faults.some((fault) => reached(fault, this.time - RAMP_STEP) < 1);
+  /** Scheduled faults come and slow ones grow. */
+  private age(): void {
+    for (const { kind, amount, rampSeconds } of this.scheduled.filter(({ at }) => at <= this.time))
+      this.addFault({ kind, amount, rampSeconds });
+    this.scheduled = this.scheduled.filter(({ at }) => at > this.time);
+    if (this.faults.some((fault) => reached(fault, this.time - 2 * RAMP_STEP) < 1)) this.refresh();
   }
 
   /** Lets n samples of time pass. */
@@ -219,7 +225,7 @@ export class Axis {
     const position = new Int32Array(n);
     const output = new Int16Array(n);
     for (let k = 0; k < n; k++) {
-      if (this.ticks % this.rampTicks === 0 && this.faults.length > 0 && this.ramping) this.refresh();
+      if (this.ticks % this.rampTicks === 0) this.age();
       const measured =
         this.grain * Math.round((body.position / q + make.noiseCounts * noise.normal()) / this.grain);
       const wanted = this.running ? this.nextTarget() : null;
