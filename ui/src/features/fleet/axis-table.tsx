@@ -1,0 +1,64 @@
+import { Link } from 'react-router-dom';
+import { significant } from '../../components/quantity';
+import { StateWord } from '../../components/state-glyph';
+import type { Axis } from './fleet-api';
+import { useTile, type LiveTiles } from './live-tiles';
+
+/** The fleet, dense: one line an axis. */
+export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
+  return (
+    <div className="card scroll-x">
+      <table className="plain-table">
+        <thead>
+          <tr>
+            <th>Axis</th>
+            <th style={{ textAlign: 'left' }}>State</th>
+            <th>Error, mm</th>
+            <th>of</th>
+            <th>At limit, %</th>
+            <th>K, (mm/s)/%</th>
+            <th>of</th>
+            <th>α, rad/s</th>
+            <th>of</th>
+            <th style={{ textAlign: 'left' }}>Why</th>
+          </tr>
+        </thead>
+        <tbody>
+          {axes.map((axis) => (
+            <Row key={axis.id} axis={axis} tiles={tiles} />
+          ))}
+        </tbody>
+      </table>
+    </div>
+  );
+}
+
+function Row({ axis, tiles }: { axis: Axis; tiles: LiveTiles }) {
+  const { tile } = useTile(tiles, axis.id);
+  const indicators = tile ? tile.indicators : axis.indicators;
+  const estimate = tile?.estimate ?? axis.estimate;
+  const number = (value: number | null | undefined): string => (value == null ? '–' : significant(value));
+  return (
+    <tr>
+      <td className="nowrap">
+        <Link to={`/axes/${axis.id}`} style={{ fontWeight: 600, color: 'var(--ink)' }}>
+          {axis.tag}
+        </Link>{' '}
+        <span className="soft small">{axis.siteName}</span>
+      </td>
+      <td style={{ textAlign: 'left' }}>
+        <StateWord state={tile?.state ?? axis.state} />
+      </td>
+      <td>{number(indicators?.peakFollowingError)}</td>
+      <td className="soft">{axis.tolerances.followingError}</td>
+      <td>{indicators?.saturatedPct == null ? '–' : indicators.saturatedPct.toFixed(1)}</td>
+      <td>{number(estimate?.gain.value)}</td>
+      <td className="soft">{number(axis.baseline?.gain)}</td>
+      <td>{number(estimate?.pole.value)}</td>
+      <td className="soft">{number(axis.baseline?.pole)}</td>
+      <td style={{ textAlign: 'left', minWidth: 260 }} className="small soft">
+        {tile?.stateReason ?? axis.stateReason}
+      </td>
+    </tr>
+  );
+}
