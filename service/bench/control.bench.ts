@@ -32,15 +32,16 @@ const questions: DesignQuestion[] = [
   })),
 );
 
-/** Median milliseconds of one run of `work`, after warming up. */
-function medianMs(work: () => void, runs: number): number {
+/** Milliseconds of the least disturbed run of `work`, after warming up. */
+function bestMs(work: () => void, runs: number): number {
   for (let i = 0; i < Math.min(runs, 20); i++) work();
-  const times = Array.from({ length: runs }, () => {
+  let best = Infinity;
+  for (let i = 0; i < runs; i++) {
     const from = performance.now();
     work();
-    return performance.now() - from;
-  }).sort((a, b) => a - b);
-  return times[runs >> 1]!;
+    best = Math.min(best, performance.now() - from);
+  }
+  return best;
 }
 
 /** The bare recursion of a move in one loop: what simulating it costs at least. */
@@ -108,10 +109,12 @@ def design(q):
     return len(out)
 qs = json.load(sys.stdin)
 for q in qs: design(q)
-t = time.perf_counter(); n = 0
-while time.perf_counter()-t < 2:
-    for q in qs: design(q); n += 1
-print(n/(time.perf_counter()-t))
+best = math.inf; end = time.perf_counter()+4
+while time.perf_counter() < end:
+    t = time.perf_counter()
+    for q in qs: design(q)
+    best = min(best, time.perf_counter()-t)
+print(len(qs)/best)
 `;
 
 async function scipyDesignsPerSecond(): Promise<number | null> {
@@ -127,14 +130,14 @@ async function scipyDesignsPerSecond(): Promise<number | null> {
 
 /** Figures of the control core: designs per second, one move, the limits of one axis. */
 export default async function controlBench(): Promise<BenchRecord[]> {
-  const rate = (1000 * questions.length) / medianMs(() => questions.forEach((q) => design(q)), 25);
+  const rate = (1000 * questions.length) / bestMs(() => questions.forEach((q) => design(q)), 100);
   const scipy = await scipyDesignsPerSecond();
 
   const plant = { gain: 8, pole: 25 };
   const gains = placeGains(plant, 'PI-D', { kind: 'triple', lambda: 40 }, false);
   const move = { distance: 40, duration: 1, settle: 1, profile: 'raised-cosine' as const };
-  const moveMs = medianMs(() => simulateMove(plant, gains, 'PI-D', { sampleTime: 0.001 }, move), 300);
-  const bareMs = medianMs(() => bareMove(2000, new Float64Array(2000), new Float64Array(2000)), 300);
+  const moveMs = bestMs(() => simulateMove(plant, gains, 'PI-D', { sampleTime: 0.001 }, move), 300);
+  const bareMs = bestMs(() => bareMove(2000, new Float64Array(2000), new Float64Array(2000)), 300);
 
   const axis: LimitQuestion = {
     plant: { ...plant, coulomb: 3, bias: 1 },
@@ -146,7 +149,7 @@ export default async function controlBench(): Promise<BenchRecord[]> {
     move: { distance: 200, duration: 1.5, profile: 'raised-cosine' },
     tolerances: { followingError: 1 },
   };
-  const limitsMs = medianMs(() => lambdaLimits(axis), 9);
+  const limitsMs = bestMs(() => lambdaLimits(axis), 9);
   // every λ of the coarse search on the estimate and its four corners, nothing but the bare move
   const limitsFloor = (19 * 5 * bareMs * 2500) / 2000;
 

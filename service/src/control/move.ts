@@ -135,6 +135,12 @@ export function checkMove(move: Move, sampleTime: number): void {
     );
 }
 
+/** Columns of n numbers in one allocation, which is what a short simulation would otherwise spend its time on. */
+function columns(count: number, n: number): Float64Array[] {
+  const block = new Float64Array(count * n);
+  return Array.from({ length: count }, (_, i) => block.subarray(i * n, (i + 1) * n));
+}
+
 /**
  * Target of a move at every tick kT, k = 0 … N−1.
  *
@@ -233,12 +239,12 @@ export function simulateLoop(
   checkController(controller);
   const { target, velocity: targetVelocity, acceleration: targetAcceleration } = trajectory;
   const n = target.length;
-  const trace: LoopTrace = {
-    position: new Float64Array(n),
-    velocity: new Float64Array(n),
-    output: new Float64Array(n),
-    integrator: new Float64Array(n),
-  };
+  const [position, velocity, output, integrator] = columns(4, n) as [
+    Float64Array,
+    Float64Array,
+    Float64Array,
+    Float64Array,
+  ];
   const T = controller.sampleTime;
   const { kp, ki, kd, kv, ka } = gains;
   const { beta, gamma } = setPointWeights(structure);
@@ -254,15 +260,16 @@ export function simulateLoop(
   const firstPart = late.fraction * T;
   const holdFirst: Hold = { ...zeroOrderHold(plant, firstPart), duration: firstPart };
   const holdRest: Hold = { ...zeroOrderHold(plant, T - firstPart), duration: T - firstPart };
-  const { output, integrator, position, velocity } = trace;
   const state = { y: start.position ?? 0, v: 0 };
+  let { y: trueY, v: trueV } = state;
+  const plain = friction === 0 && firstPart === 0;
   const before = start.output ?? 0;
   let I = before;
   let previous = 0;
 
   for (let k = 0; k < n; k++) {
     const r = target[k]!;
-    const y = q > 0 ? q * Math.floor(state.y / q + 0.5) : state.y;
+    const y = q > 0 ? q * Math.floor(trueY / q + 0.5) : trueY;
     const e = r - y;
     const P = kp * (beta * r - y);
     const weighted = gamma * r - y;
@@ -277,16 +284,27 @@ export function simulateLoop(
       ? Math.max(Math.min(next, Math.max(I, high)), Math.min(I, low))
       : Math.min(Math.max(next, low), high);
     const u = Math.min(Math.max(P + I + D + F, -limit), limit);
-    position[k] = state.y;
-    velocity[k] = state.v;
+    position[k] = trueY;
+    velocity[k] = trueV;
     output[k] = u;
     integrator[k] = I;
 
+    const drive = (k >= delay ? output[k - delay]! : before) - bias;
+    if (plain) {
+      const old = trueV;
+      trueV = holdRest.decay * old + holdRest.velocityFromOutput * drive;
+      trueY = trueY + holdRest.positionFromVelocity * old + holdRest.positionFromOutput * drive;
+      continue;
+    }
+    state.y = trueY;
+    state.v = trueV;
     if (firstPart > 0)
       advance(state, plant, friction, (k > delay ? output[k - delay - 1]! : before) - bias, holdFirst);
-    advance(state, plant, friction, (k >= delay ? output[k - delay]! : before) - bias, holdRest);
+    advance(state, plant, friction, drive, holdRest);
+    trueY = state.y;
+    trueV = state.v;
   }
-  return trace;
+  return { position, velocity, output, integrator };
 }
 
 /** Figures of a simulated move towards `distance` from its target and trace; see `MoveFigures`. */
