@@ -52,6 +52,7 @@ export class RotaController {
       items: items.map(({ site, onCall }) => ({
         siteId: site.id,
         siteName: site.name,
+        timeZone: site.timeZone,
         userId: onCall?.userId ?? null,
         name: onCall?.name ?? null,
         until: onCall?.until.toISOString() ?? null,

@@ -141,7 +141,8 @@ export function decodeFrame(message: Uint8Array): Frame {
     throw new FrameError('too-long', `${message.byteLength} bytes, at most ${MAX_FRAME_BYTES} are accepted`);
   if (message.byteLength < HEADER_BYTES)
     throw new FrameError('too-short', `${message.byteLength} bytes, the header alone takes ${HEADER_BYTES}`);
-  const bytes = message.byteOffset % 4 === 0 ? message : message.slice();
+  // Not slice(): a Node Buffer's slice shares its memory and stays where it is.
+  const bytes = message.byteOffset % 4 === 0 ? message : Uint8Array.from(message);
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   if (view.getUint32(0, true) !== FRAME_MAGIC)
     throw new FrameError('wrong-magic', `magic 0x${view.getUint32(0, true).toString(16)}, expected 0x31545750`);

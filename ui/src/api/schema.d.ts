@@ -1914,6 +1914,8 @@ export interface components {
         SiteOnCallDto: {
             siteId: number;
             siteName: string;
+            /** @example Europe/London */
+            timeZone: string;
             /** @description null: nobody is on call */
             userId: number | null;
             name: string | null;

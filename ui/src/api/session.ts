@@ -52,8 +52,8 @@ export function refreshSession(): Promise<boolean> {
   return refreshing;
 }
 
-function inTurn<T>(work: () => Promise<T>): Promise<T> {
-  return 'locks' in navigator ? navigator.locks.request('polewright-refresh', work) : work();
+async function inTurn<T>(work: () => Promise<T>): Promise<T> {
+  return 'locks' in navigator ? await navigator.locks.request('polewright-refresh', work) : work();
 }
 
 export async function signOut(): Promise<void> {

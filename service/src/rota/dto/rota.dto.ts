@@ -207,6 +207,9 @@ export class SiteOnCallDto {
   @ApiProperty()
   siteName: string;
 
+  @ApiProperty({ example: 'Europe/London' })
+  timeZone: string;
+
   @ApiProperty({ type: Number, nullable: true, description: 'null: nobody is on call' })
   userId: number | null;
 
