@@ -71,6 +71,7 @@ export async function serveSmtp(
     authOptional: true,
     disabledCommands: ['STARTTLS'],
     size: LARGEST_MESSAGE,
+    closeTimeout: 500,
     logger: false,
     onConnect: (_session, done) =>
       done(
