@@ -25,6 +25,9 @@ import {
 import { LIVE_STATES, Proposal } from './proposal.entity.js';
 import { ReviewService } from './review.service.js';
 
+/** Refuses the step with 409 when the proposal has another version by now. */
+const IF_MATCH = { name: 'if-match', required: false, description: 'The version that you have seen, such as "2"' };
+
 @ApiTags('proposals')
 @ApiBearerAuth()
 @Controller('proposals')
@@ -83,7 +86,7 @@ export class ProposalsController {
   }
 
   @Patch(':id')
-  @ApiHeader({ name: 'If-Match', required: true, description: 'The version that you alter, such as "2"' })
+  @ApiHeader({ ...IF_MATCH, required: true })
   @ApiOkResponse({ type: ProposalDto })
   async alter(
     @Param('id', ParseIntPipe) id: number,
@@ -96,6 +99,7 @@ export class ProposalsController {
   }
 
   @Post(':id/submit')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async submit(
@@ -108,6 +112,7 @@ export class ProposalsController {
   }
 
   @Post(':id/approve')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async approve(
@@ -120,6 +125,7 @@ export class ProposalsController {
   }
 
   @Post(':id/decline')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async decline(
@@ -133,6 +139,7 @@ export class ProposalsController {
   }
 
   @Post(':id/withdraw')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async withdraw(
@@ -145,6 +152,7 @@ export class ProposalsController {
   }
 
   @Post(':id/schedule')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async schedule(
@@ -159,6 +167,7 @@ export class ProposalsController {
 
   /** Sends the approved gains to the machine: unexpected motion is possible, see the checklist. */
   @Post(':id/apply')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async apply(
@@ -172,6 +181,7 @@ export class ProposalsController {
   }
 
   @Post(':id/keep')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async keep(
@@ -185,6 +195,7 @@ export class ProposalsController {
 
   /** Asks the machine for the former gains again; the axis must be in maintenance and at rest. */
   @Post(':id/roll-back')
+  @ApiHeader(IF_MATCH)
   @HttpCode(200)
   @ApiOkResponse({ type: ProposalDto })
   async rollBack(

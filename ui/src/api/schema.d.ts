@@ -3251,9 +3251,8 @@ export interface operations {
         parameters: {
             query?: never;
             header: {
+                /** @description The version that you have seen, such as "2" */
                 "if-match": string;
-                /** @description The version that you alter, such as "2" */
-                "If-Match": string;
             };
             path: {
                 id: number;
@@ -3279,8 +3278,9 @@ export interface operations {
     ProposalsController_submit: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3302,8 +3302,9 @@ export interface operations {
     ProposalsController_approve: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3325,8 +3326,9 @@ export interface operations {
     ProposalsController_decline: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3352,8 +3354,9 @@ export interface operations {
     ProposalsController_withdraw: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3375,8 +3378,9 @@ export interface operations {
     ProposalsController_schedule: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3402,8 +3406,9 @@ export interface operations {
     ProposalsController_apply: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3429,8 +3434,9 @@ export interface operations {
     ProposalsController_keep: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
@@ -3452,8 +3458,9 @@ export interface operations {
     ProposalsController_rollBack: {
         parameters: {
             query?: never;
-            header: {
-                "if-match": string;
+            header?: {
+                /** @description The version that you have seen, such as "2" */
+                "if-match"?: string;
             };
             path: {
                 id: number;
