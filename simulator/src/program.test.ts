@@ -28,18 +28,21 @@ function movesOf(program: Program, seconds: number): { distance: number; duratio
 }
 
 describe('profileAt', () => {
-  it.each<Profile>(['raised-cosine', 'trapezoid'])('%s goes from 0 to 1 and its derivatives belong to it', (profile) => {
-    expect(profileAt(profile, 0).position).toBeCloseTo(0, 12);
-    expect(profileAt(profile, 1).position).toBeCloseTo(1, 12);
-    expect(profileAt(profile, 0).velocity).toBeCloseTo(0, 12);
-    expect(profileAt(profile, 1).velocity).toBeCloseTo(0, 12);
-    const h = 1e-5;
-    for (const s of [0.03, 0.2, 0.31, 0.5, 0.66, 0.8, 0.97]) {
-      const [a, b, c] = [profileAt(profile, s - h), profileAt(profile, s), profileAt(profile, s + h)];
-      expect((c.position - a.position) / (2 * h)).toBeCloseTo(b.velocity, 6);
-      expect((c.velocity - a.velocity) / (2 * h)).toBeCloseTo(b.acceleration, 5);
-    }
-  });
+  it.each<Profile>(['raised-cosine', 'trapezoid'])(
+    '%s goes from 0 to 1 and its derivatives belong to it',
+    (profile) => {
+      expect(profileAt(profile, 0).position).toBeCloseTo(0, 12);
+      expect(profileAt(profile, 1).position).toBeCloseTo(1, 12);
+      expect(profileAt(profile, 0).velocity).toBeCloseTo(0, 12);
+      expect(profileAt(profile, 1).velocity).toBeCloseTo(0, 12);
+      const h = 1e-5;
+      for (const s of [0.03, 0.2, 0.31, 0.5, 0.66, 0.8, 0.97]) {
+        const [a, b, c] = [profileAt(profile, s - h), profileAt(profile, s), profileAt(profile, s + h)];
+        expect((c.position - a.position) / (2 * h)).toBeCloseTo(b.velocity, 6);
+        expect((c.velocity - a.velocity) / (2 * h)).toBeCloseTo(b.acceleration, 5);
+      }
+    },
+  );
 });
 
 describe('Program', () => {

@@ -160,7 +160,7 @@ export const KILN_YARD_1: readonly TarnwickAxis[] = [
     structure: 'PI-D',
     lambda: 26,
     feedForward: true,
-    baseline: { gain: 6.184, pole: 20.98, coulomb: 1.7, bias: 2.8 },
+    baseline: { gain: 6.184, pole: 20.98, coulomb: 1.7, bias: 2.94 },
     tolerances: { followingError: 0.25, gainPct: 15, polePct: 20, saturatedPct: 5 },
     move: { distance: 210, duration: 1 },
   },
