@@ -1,0 +1,117 @@
+import { Button } from '@mantine/core';
+import { useMutation } from '@tanstack/react-query';
+import { useState } from 'react';
+import { Link } from 'react-router-dom';
+import { may } from '../../api/policy';
+import { useSession } from '../../api/use-session';
+import { SiteTime } from '../../components/site-time';
+import { StateEdge } from '../../components/state-edge';
+import { STATE_COLOUR, STATE_TINT, type AxisState } from '../../components/states';
+import classes from './alerts.module.css';
+import { acknowledge, unshelve, type Alert } from './alerts-api';
+import { ShelveDialog } from './shelve-dialog';
+
+const WORDS: Record<Alert['state'], string> = {
+  unacknowledged: 'Unacknowledged',
+  acknowledged: 'Acknowledged',
+  'returned-unacknowledged': 'Returned to normal, unacknowledged',
+  shelved: 'Shelved',
+  suppressed: 'Suppressed: in maintenance',
+  normal: 'Over',
+};
+
+/** The edge that an alert has: what needs a person now is broken, what somebody has taken is tilted. */
+export function edgeOf({ state, priority }: Alert): AxisState {
+  if (state === 'unacknowledged') return priority === 'low' ? 'drifting' : 'out-of-tune';
+  if (state === 'acknowledged' || state === 'returned-unacknowledged') return 'drifting';
+  return state === 'normal' ? 'in-tune' : 'in-maintenance';
+}
+
+export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?: boolean }) {
+  const { user } = useSession();
+  const [shelving, setShelving] = useState(false);
+  const take = useMutation({ mutationFn: () => acknowledge(alert.id) });
+  const unshelving = useMutation({ mutationFn: () => unshelve(alert.id) });
+  const edge = edgeOf(alert);
+  const told = alert.events.filter(({ action }) => action === 'told' || action === 'nobody on call').at(-1);
+  const acknowledgeable = alert.state === 'unacknowledged' || alert.state === 'returned-unacknowledged';
+  const shelvable = acknowledgeable || alert.state === 'acknowledged';
+  const allowed = may(user, 'alert.acknowledge', alert.siteId);
+  return (
+    <article className={classes.card} style={{ background: STATE_TINT[edge] }} data-alert={alert.id} data-state={alert.state}>
+      <StateEdge state={edge} />
+      <div className={classes.meta}>
+        <b style={{ color: STATE_COLOUR[edge], fontWeight: 600 }}>
+          {WORDS[alert.state]}
+          {alert.state === 'unacknowledged' && `, ${alert.priority}`}
+        </b>
+        {alert.acknowledgedBy && alert.acknowledgedAt && (
+          <>
+            {' '}
+            by {alert.acknowledgedBy}, <SiteTime at={alert.acknowledgedAt} timeZone={alert.timeZone} />
+          </>
+        )}
+        {alert.shelvedUntil && (
+          <>
+            {' '}
+            until <SiteTime at={alert.shelvedUntil} timeZone={alert.timeZone} /> by {alert.shelvedBy}: {alert.shelveReason}
+          </>
+        )}{' '}
+        · <SiteTime at={alert.raisedAt} timeZone={alert.timeZone} relative />
+        {alert.nextStepAt && alert.state === 'unacknowledged' && (
+          <>
+            , next mail at <SiteTime at={alert.nextStepAt} timeZone={alert.timeZone} />
+          </>
+        )}
+      </div>
+      <h2 className={classes.title}>
+        <Link to={`/alerts/${alert.id}`}>
+          {alert.axisTag}: {alert.title}
+        </Link>
+      </h2>
+      <div className={classes.meta}>
+        {alert.axisName}, {alert.machineName}, {alert.siteName}
+      </div>
+      <p style={{ fontWeight: 560 }}>{alert.message}</p>
+      {alert.state !== 'normal' && <p className="soft">Do: {alert.action}</p>}
+      {told && (
+        <p className="soft small">
+          {told.action === 'told' ? `Told: ${told.note}` : told.note}, <SiteTime at={told.at} timeZone={alert.timeZone} />
+        </p>
+      )}
+      {(take.error ?? unshelving.error) && (
+        <p role="alert" style={{ color: 'var(--out)', fontWeight: 560 }}>
+          {(take.error ?? unshelving.error)!.message}
+        </p>
+      )}
+      <div className={classes.actions}>
+        {allowed && acknowledgeable && (
+          <Button size="lg" loading={take.isPending} onClick={() => take.mutate()}>
+            Acknowledge
+          </Button>
+        )}
+        {allowed && shelvable && (
+          <Button size="lg" variant="outline" onClick={() => setShelving(true)}>
+            Shelve …
+          </Button>
+        )}
+        {allowed && alert.state === 'shelved' && (
+          <Button size="lg" variant="outline" loading={unshelving.isPending} onClick={() => unshelving.mutate()}>
+            Take off the shelf
+          </Button>
+        )}
+        {alert.proposalId !== null && (
+          <Button size="lg" variant="outline" component={Link} to={`/proposals/${alert.proposalId}`}>
+            Open proposal
+          </Button>
+        )}
+        {detailed && (
+          <Button size="lg" variant="default" component={Link} to={`/axes/${alert.axisId}`}>
+            Open axis
+          </Button>
+        )}
+      </div>
+      {shelving && <ShelveDialog alert={alert} onClose={() => setShelving(false)} />}
+    </article>
+  );
+}
