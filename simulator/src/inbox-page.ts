@@ -22,7 +22,7 @@ h1 { font-size: 1.4rem; margin: 0 0 .25rem; } h2 { font-size: 1.15rem; margin: 0
 p.about { margin: 0 0 1.5rem; color: var(--soft); }
 ol { list-style: none; margin: 0; padding: 0; border-top: 1px solid var(--rule); }
 li { border-bottom: 1px solid var(--rule); }
-li a { display: grid; grid-template-columns: 11rem 1fr; gap: .1rem 1rem; padding: .7rem .5rem; color: inherit;
+li a { display: grid; grid-template-columns: 13rem 1fr; gap: .1rem 1rem; padding: .7rem .5rem; color: inherit;
   text-decoration: none; }
 li a:hover { background: var(--surface); } a { color: var(--press); }
 a:focus-visible { outline: 3px solid var(--press); outline-offset: 2px; }
