@@ -1754,6 +1754,10 @@ export interface components {
             reason: string;
             waysOut: string[];
         };
+        NamedPersonDto: {
+            id: number;
+            name: string;
+        };
         ProposalEventDto: {
             /** Format: date-time */
             at: string;
@@ -1795,9 +1799,9 @@ export interface components {
             binding: components["schemas"]["BindingDto"] | null;
             note: string | null;
             /** @description null while it is as the service made it */
-            alteredBy: components["schemas"]["PersonDto"] | null;
-            submittedBy: components["schemas"]["PersonDto"] | null;
-            approvedBy: components["schemas"]["PersonDto"] | null;
+            alteredBy: components["schemas"]["NamedPersonDto"] | null;
+            submittedBy: components["schemas"]["NamedPersonDto"] | null;
+            approvedBy: components["schemas"]["NamedPersonDto"] | null;
             approvedVersion: number | null;
             /** @description The tuning revision that was sent */
             revision: number | null;

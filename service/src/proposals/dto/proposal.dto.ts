@@ -296,7 +296,7 @@ class ChecklistItemDto {
   text: string;
 }
 
-class PersonDto {
+class NamedPersonDto {
   @ApiProperty()
   id: number;
 
@@ -382,14 +382,14 @@ export class ProposalDto extends ProposalSummaryDto {
   @NullableText()
   note: string | null;
 
-  @ApiProperty({ type: PersonDto, nullable: true, description: 'null while it is as the service made it' })
-  alteredBy: PersonDto | null;
+  @ApiProperty({ type: NamedPersonDto, nullable: true, description: 'null while it is as the service made it' })
+  alteredBy: NamedPersonDto | null;
 
-  @ApiProperty({ type: PersonDto, nullable: true })
-  submittedBy: PersonDto | null;
+  @ApiProperty({ type: NamedPersonDto, nullable: true })
+  submittedBy: NamedPersonDto | null;
 
-  @ApiProperty({ type: PersonDto, nullable: true })
-  approvedBy: PersonDto | null;
+  @ApiProperty({ type: NamedPersonDto, nullable: true })
+  approvedBy: NamedPersonDto | null;
 
   @NullableNumber()
   approvedVersion: number | null;
@@ -451,7 +451,7 @@ export function summaryOf(proposal: Proposal): ProposalSummaryDto {
 
 /** @param names people's names by id */
 export function proposalOf(proposal: Proposal, names: Map<number, string>, possibilities: Possibilities): ProposalDto {
-  const person = (id: number | null): PersonDto | null => (id === null ? null : { id, name: names.get(id) ?? 'somebody' });
+  const person = (id: number | null): NamedPersonDto | null => (id === null ? null : { id, name: names.get(id) ?? 'somebody' });
   const { evidence } = proposal;
   return {
     ...summaryOf(proposal),
