@@ -11,10 +11,14 @@ export default defineConfig([
   {
     rules: {
       '@typescript-eslint/no-unused-vars': ['error', { argsIgnorePattern: '^_', varsIgnorePattern: '^_' }],
-      eqeqeq: 'error',
+      // `== null` stands for "null or undefined".
+      eqeqeq: ['error', 'always', { null: 'ignore' }],
     },
   },
-  { files: ['service/**/*.ts', 'simulator/**/*.ts', 'ui/e2e/**/*.ts'], languageOptions: { globals: globals.node } },
+  {
+    files: ['service/**/*.ts', 'simulator/**/*.ts', 'ui/e2e/**/*.ts'],
+    languageOptions: { globals: globals.node },
+  },
   { files: ['**/*.{mjs,js}'], languageOptions: { globals: { ...globals.node, ...globals.browser } } },
   {
     files: ['ui/src/**/*.{ts,tsx}', 'ui/test/**/*.{ts,tsx}'],

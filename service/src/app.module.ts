@@ -32,7 +32,12 @@ export class AppModule {
     return {
       module: AppModule,
       imports: [
-        ConfigModule.forRoot({ isGlobal: true, ignoreEnvFile: true, ignoreEnvVars: true, load: [() => settings] }),
+        ConfigModule.forRoot({
+          isGlobal: true,
+          ignoreEnvFile: true,
+          ignoreEnvVars: true,
+          load: [() => settings],
+        }),
         EventEmitterModule.forRoot(),
         ScheduleModule.forRoot(),
         // Gateways send thousands of messages; the intake has its own limits.

@@ -10,7 +10,9 @@ import { setup } from './setup.js';
 const target = process.argv[2];
 if (!target) throw new Error('Name the file to write');
 const folder = mkdtempSync(join(tmpdir(), 'polewright-openapi-'));
-const app = await NestFactory.create(AppModule.with(readSettings({ DATA_DIR: folder, DEMO: '0' })), { logger: ['error'] });
+const app = await NestFactory.create(AppModule.with(readSettings({ DATA_DIR: folder, DEMO: '0' })), {
+  logger: ['error'],
+});
 writeFileSync(target, JSON.stringify(setup(app)));
 await app.close();
 rmSync(folder, { recursive: true });

@@ -41,7 +41,12 @@ export function PageOf<T>(Item: Constructor<T>, name: string): Constructor<Page<
 }
 
 /** Cuts one page out of rows that were read with one more than asked for. */
-export function pageOf<Row, T>(rows: Row[], limit: number, cursorOf: (row: Row) => string, toDto: (row: Row) => T): Page<T> {
+export function pageOf<Row, T>(
+  rows: Row[],
+  limit: number,
+  cursorOf: (row: Row) => string,
+  toDto: (row: Row) => T,
+): Page<T> {
   const items = rows.slice(0, limit);
   return { items: items.map(toDto), nextCursor: rows.length > limit ? cursorOf(items.at(-1)!) : null };
 }
@@ -52,7 +57,9 @@ export const NullableNumber = (description?: string): PropertyDecorator =>
 
 /** A time that may be missing. */
 export const NullableTime = (description?: string): PropertyDecorator =>
-  applyDecorators(ApiProperty({ type: String, format: 'date-time', nullable: true, ...(description && { description }) }));
+  applyDecorators(
+    ApiProperty({ type: String, format: 'date-time', nullable: true, ...(description && { description }) }),
+  );
 
 /** A text that may be missing. */
 export const NullableText = (description?: string): PropertyDecorator =>

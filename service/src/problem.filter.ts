@@ -59,14 +59,22 @@ export class ProblemFilter implements ExceptionFilter {
       const body = exception.getResponse();
       if (typeof body === 'string') problem.detail = body;
       else {
-        const { message, errors, ...rest } = body as { message?: string | string[]; errors?: FieldProblem[]; error?: unknown; statusCode?: unknown };
+        const { message, errors, ...rest } = body as {
+          message?: string | string[];
+          errors?: FieldProblem[];
+          error?: unknown;
+          statusCode?: unknown;
+        };
         delete rest.error;
         delete rest.statusCode;
         Object.assign(problem, rest);
         problem.detail = Array.isArray(message) ? message.join('; ') : (message ?? title);
         if (errors) {
           problem.errors = errors;
-          problem.detail = message && !Array.isArray(message) ? message : errors.map((e) => `${e.path}: ${e.message}`).join('; ');
+          problem.detail =
+            message && !Array.isArray(message)
+              ? message
+              : errors.map((e) => `${e.path}: ${e.message}`).join('; ');
         }
       }
     } else if (status < 500 && exception instanceof Error) problem.detail = exception.message;

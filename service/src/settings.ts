@@ -35,7 +35,9 @@ export function readSettings(env: NodeJS.ProcessEnv): Settings {
     mkdirSync(dataDir, { recursive: true });
     accessSync(dataDir, constants.W_OK);
   } catch (error) {
-    throw new SettingsError(`The data folder ${dataDir} cannot be written (${(error as Error).message}). Set DATA_DIR to one that can.`);
+    throw new SettingsError(
+      `The data folder ${dataDir} cannot be written (${(error as Error).message}). Set DATA_DIR to one that can.`,
+    );
   }
   const demo = (env.DEMO ?? '1') !== '0';
   return {

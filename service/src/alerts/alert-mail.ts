@@ -5,7 +5,11 @@ const escape = (text: string): string =>
   text.replace(/[&<>"]/g, (c) => ({ '&': '&amp;', '<': '&lt;', '>': '&gt;', '"': '&quot;' })[c]!);
 
 /** The mail about an alert that nobody has acknowledged: what, where, what to do, and the way to the page. */
-export function alertMail(alert: Alert, step: number, publicUrl: string): { subject: string; text: string; html: string } {
+export function alertMail(
+  alert: Alert,
+  step: number,
+  publicUrl: string,
+): { subject: string; text: string; html: string } {
   const { axis } = alert;
   const link = `${publicUrl}/alerts/${alert.id}`;
   const where = `${axis.machine.name}, ${axis.site.name}`;

@@ -1,4 +1,17 @@
-import { BadRequestException, Body, Controller, ForbiddenException, Get, HttpCode, NotFoundException, Param, ParseIntPipe, Patch, Post, Query } from '@nestjs/common';
+import {
+  BadRequestException,
+  Body,
+  Controller,
+  ForbiddenException,
+  Get,
+  HttpCode,
+  NotFoundException,
+  Param,
+  ParseIntPipe,
+  Patch,
+  Post,
+  Query,
+} from '@nestjs/common';
 import { ApiBearerAuth, ApiOkResponse, ApiTags } from '@nestjs/swagger';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { In, LessThan, Not, type DataSource } from 'typeorm';
@@ -98,7 +111,10 @@ export class AlertsController {
   @Post(':id/unshelve')
   @HttpCode(200)
   @ApiOkResponse({ type: AlertDto })
-  async unshelve(@Param('id', ParseIntPipe) id: number, @CurrentUser() user: SignedInUser): Promise<AlertDto> {
+  async unshelve(
+    @Param('id', ParseIntPipe) id: number,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
     await this.alerts.unshelve(id, user);
     return this.get(id, user);
   }
@@ -120,7 +136,10 @@ export class AlertsController {
     if (axisIds.length === 0) return new Map();
     const rows = await this.dataSource
       .getRepository(Proposal)
-      .find({ select: { id: true, axisId: true }, where: { axisId: In(axisIds), state: In([...LIVE_STATES]) } });
+      .find({
+        select: { id: true, axisId: true },
+        where: { axisId: In(axisIds), state: In([...LIVE_STATES]) },
+      });
     return new Map(rows.map(({ axisId, id }) => [axisId, id]));
   }
 }
@@ -155,11 +174,28 @@ export class AlertRulesController {
   private dto(rule: RuleName): AlertRuleDto {
     const { unit, relative } = RULE[rule];
     const { threshold, deadband, onDelay, offDelay, priority, mailAfter } = this.alerts.settingsOf(rule);
-    return { rule, title: RULE_TITLES[rule], unit, relative, threshold, deadband, onDelay, offDelay, priority, mailAfter };
+    return {
+      rule,
+      title: RULE_TITLES[rule],
+      unit,
+      relative,
+      threshold,
+      deadband,
+      onDelay,
+      offDelay,
+      priority,
+      mailAfter,
+    };
   }
 }
 
-const URGENCY: AlertState[] = ['unacknowledged', 'returned-unacknowledged', 'acknowledged', 'shelved', 'suppressed'];
+const URGENCY: AlertState[] = [
+  'unacknowledged',
+  'returned-unacknowledged',
+  'acknowledged',
+  'shelved',
+  'suppressed',
+];
 
 const byUrgency = (a: Alert, b: Alert): number =>
   URGENCY.indexOf(a.state) - URGENCY.indexOf(b.state) ||

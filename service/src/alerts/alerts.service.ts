@@ -1,4 +1,9 @@
-import { ConflictException, Injectable, NotFoundException, type OnApplicationBootstrap } from '@nestjs/common';
+import {
+  ConflictException,
+  Injectable,
+  NotFoundException,
+  type OnApplicationBootstrap,
+} from '@nestjs/common';
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { Gauge } from 'prom-client';
@@ -14,7 +19,15 @@ import { AlertRule } from './alert-rule.entity.js';
 import { Alert, AlertEvent } from './alert.entity.js';
 import { AxisLevelsService } from './axis-levels.service.js';
 import { nextState, type AlertStep } from './life-cycle.js';
-import { lookAtLevel, RULE, RULES, type AxisLevels, type RuleName, type RuleSettings, type RuleTimer } from './rules.js';
+import {
+  lookAtLevel,
+  RULE,
+  RULES,
+  type AxisLevels,
+  type RuleName,
+  type RuleSettings,
+  type RuleTimer,
+} from './rules.js';
 
 const openAlerts = new Gauge({ name: 'polewright_alerts_open', help: 'Alerts that are not over' });
 
@@ -43,7 +56,10 @@ export class AlertsService implements OnApplicationBootstrap {
   async loadRules(): Promise<void> {
     const repository = this.dataSource.getRepository(AlertRule);
     const stored = new Map((await repository.find()).map((row) => [row.rule, row]));
-    const missing = RULES.filter((rule) => !stored.has(rule)).map((rule) => ({ rule, ...RULE[rule].defaults }));
+    const missing = RULES.filter((rule) => !stored.has(rule)).map((rule) => ({
+      rule,
+      ...RULE[rule].defaults,
+    }));
     if (missing.length > 0) for (const row of await repository.save(missing)) stored.set(row.rule, row);
     this.settings = new Map(stored);
   }
@@ -82,26 +98,50 @@ export class AlertsService implements OnApplicationBootstrap {
     }
   }
 
-  private async lookAt(axis: Axis, rule: RuleName, levels: AxisLevels, at: Date, open: Alert | undefined): Promise<void> {
+  private async lookAt(
+    axis: Axis,
+    rule: RuleName,
+    levels: AxisLevels,
+    at: Date,
+    open: Alert | undefined,
+  ): Promise<void> {
     const { measure, tolerance, relative } = RULE[rule];
     const settings = this.settingsOf(rule);
     const timer = this.timer(axis.id, rule);
     const value = measure(levels);
     const scale = relative ? tolerance(levels) : 1;
     const threshold = settings.threshold * scale;
-    const verdict = lookAtLevel(timer, value, threshold, settings.deadband * scale, settings, at.getTime() / 1000);
+    const verdict = lookAtLevel(
+      timer,
+      value,
+      threshold,
+      settings.deadband * scale,
+      settings,
+      at.getTime() / 1000,
+    );
     if (axis.inMaintenance) {
       if (open && open.state !== 'suppressed' && open.state !== 'normal' && rule !== 'trial-regression')
         await this.step(open.id, 'suppress', null, { note: 'The axis is in maintenance' });
       return;
     }
     if (open?.state === 'suppressed')
-      await this.step(open.id, 'unsuppress', null, { note: 'The axis is out of maintenance', holding: timer.active });
-    if (verdict === 'raise' || (timer.active && !open)) await this.raise(axis, rule, value ?? threshold, threshold, levels, at);
+      await this.step(open.id, 'unsuppress', null, {
+        note: 'The axis is out of maintenance',
+        holding: timer.active,
+      });
+    if (verdict === 'raise' || (timer.active && !open))
+      await this.raise(axis, rule, value ?? threshold, threshold, levels, at);
     else if (verdict === 'clear' && open) await this.step(open.id, 'clear', null, { at });
   }
 
-  private async raise(axis: Axis, rule: RuleName, value: number, threshold: number, levels: AxisLevels, at: Date): Promise<void> {
+  private async raise(
+    axis: Axis,
+    rule: RuleName,
+    value: number,
+    threshold: number,
+    levels: AxisLevels,
+    at: Date,
+  ): Promise<void> {
     const settings = this.settingsOf(rule);
     const alert = await this.transactions.run(async (manager) => {
       const standing = await manager.findOneBy(Alert, { axisId: axis.id, rule, state: Not('normal') });
@@ -181,14 +221,21 @@ export class AlertsService implements OnApplicationBootstrap {
     id: number,
     step: AlertStep,
     user: SignedInUser | null,
-    { note = null, until, at = new Date(), holding }: { note?: string | null; until?: Date; at?: Date; holding?: boolean },
+    {
+      note = null,
+      until,
+      at = new Date(),
+      holding,
+    }: { note?: string | null; until?: Date; at?: Date; holding?: boolean },
   ): Promise<void> {
     const alert = await this.transactions.run(async (manager) => {
       const found = await manager.findOneByOrFail(Alert, { id });
       const before = found.state;
       const next = nextState(before, step, holding ?? this.timer(found.axisId, found.rule).active);
       if (next === null)
-        throw new ConflictException(`Alert ${id} is ${before.replaceAll('-', ' ')}; it cannot be ${PAST[step]} now`);
+        throw new ConflictException(
+          `Alert ${id} is ${before.replaceAll('-', ' ')}; it cannot be ${PAST[step]} now`,
+        );
       found.state = next;
       if (step === 'acknowledge') {
         found.acknowledgedAt = at;
@@ -196,10 +243,17 @@ export class AlertsService implements OnApplicationBootstrap {
         found.nextStepAt = null;
       }
       if (step === 'clear') found.returnedAt = at;
-      if (step === 'shelve') Object.assign(found, { shelvedUntil: until, shelvedBy: user?.name ?? null, shelveReason: note, nextStepAt: null });
+      if (step === 'shelve')
+        Object.assign(found, {
+          shelvedUntil: until,
+          shelvedBy: user?.name ?? null,
+          shelveReason: note,
+          nextStepAt: null,
+        });
       if (step === 'unshelve' || step === 'unsuppress') {
         Object.assign(found, { shelvedUntil: null, shelvedBy: null, shelveReason: null });
-        if (next === 'unacknowledged') found.nextStepAt = new Date(at.getTime() + this.settingsOf(found.rule).mailAfter * 1000);
+        if (next === 'unacknowledged')
+          found.nextStepAt = new Date(at.getTime() + this.settingsOf(found.rule).mailAfter * 1000);
       }
       if (step === 'suppress') Object.assign(found, { nextStepAt: null, shelvedUntil: null });
       if (next === 'normal') found.nextStepAt = null;
@@ -219,7 +273,14 @@ export class AlertsService implements OnApplicationBootstrap {
     tell(this.emitter, 'alert.changed', { alertId: id, axisId: alert.axisId, siteId: alert.siteId });
   }
 
-  private async note(manager: EntityManager, alertId: number, by: string, action: string, note: string | null, at: Date): Promise<void> {
+  private async note(
+    manager: EntityManager,
+    alertId: number,
+    by: string,
+    action: string,
+    note: string | null,
+    at: Date,
+  ): Promise<void> {
     await manager.save(AlertEvent, { alertId, by, action, note, at });
   }
 
@@ -244,7 +305,10 @@ export class AlertsService implements OnApplicationBootstrap {
   async standingRules(): Promise<Map<number, string[]>> {
     const standing = await this.dataSource
       .getRepository(Alert)
-      .find({ select: { axisId: true, rule: true }, where: { state: In(['unacknowledged', 'acknowledged']) } });
+      .find({
+        select: { axisId: true, rule: true },
+        where: { state: In(['unacknowledged', 'acknowledged']) },
+      });
     const byAxis = new Map<number, string[]>();
     for (const { axisId, rule } of standing) byAxis.set(axisId, [...(byAxis.get(axisId) ?? []), rule]);
     return byAxis;

@@ -29,12 +29,17 @@ export class AxisLevelsService {
     const off = (ratio: number | undefined): number => (ratio === undefined ? 0 : 100 * (ratio - 1));
     const heardAt = pipeline?.heardAt ?? null;
     const silence = heardAt === null ? null : Math.max(0, at.getTime() / 1000 - heardAt);
-    const enough = minute !== null && minute.movingSeconds >= LEAST_MOTION && silence !== null && silence < ERROR_WINDOW;
+    const enough =
+      minute !== null && minute.movingSeconds >= LEAST_MOTION && silence !== null && silence < ERROR_WINDOW;
     return {
       saturatedPct: enough ? minute.saturatedPct : null,
       peakFollowingError: enough ? (lately?.peakFollowingError ?? null) : null,
-      gainDriftPct: decisions && (decisions.gain.state === 'drifted' ? Math.abs(off(decisions.gain.pooledRatio?.value)) : 0),
-      poleDriftPct: decisions && (decisions.pole.state === 'drifted' ? Math.abs(off(decisions.pole.pooledRatio?.value)) : 0),
+      gainDriftPct:
+        decisions &&
+        (decisions.gain.state === 'drifted' ? Math.abs(off(decisions.gain.pooledRatio?.value)) : 0),
+      poleDriftPct:
+        decisions &&
+        (decisions.pole.state === 'drifted' ? Math.abs(off(decisions.pole.pooledRatio?.value)) : 0),
       frictionRise:
         estimate && axis.baseline && axis.baseline.coulomb !== null
           ? Math.max(0, estimate.coulomb.low - axis.baseline.coulomb)

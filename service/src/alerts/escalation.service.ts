@@ -61,7 +61,8 @@ export class EscalationService {
         note: onCall ? `${onCall.name} by mail` : 'The rota has a gap: nobody could be told',
       });
       fresh.stepsTaken++;
-      fresh.nextStepAt = factor === undefined ? null : new Date(at.getTime() + factor * settings.mailAfter * 1000);
+      fresh.nextStepAt =
+        factor === undefined ? null : new Date(at.getTime() + factor * settings.mailAfter * 1000);
       await manager.save(fresh);
     });
   }

@@ -73,7 +73,8 @@ export interface Rule {
 
 const mm = (value: number): string => (value < 0.1 ? value.toFixed(3) : value.toFixed(2));
 const absolute = (): number => 1;
-const INSPECT = 'Inspect the mechanics and the supply before any retune: new gains around worn parts hide the fault.';
+const INSPECT =
+  'Inspect the mechanics and the supply before any retune: new gains around worn parts hide the fault.';
 
 /** The rules by name. Their defaults are ours, chosen for axes that move every few seconds (no source). */
 export const RULE: Record<RuleName, Rule> = {
@@ -96,7 +97,8 @@ export const RULE: Record<RuleName, Rule> = {
     measure: (levels) => levels.peakFollowingError,
     tolerance: (levels) => levels.tolerances.followingError,
     message: (value, threshold) => `Following error reaches ${mm(value)} mm, allowed ${mm(threshold)} mm.`,
-    action: () => 'Check the parts made since it began. Look for a change of load or tooling, then at the axis page.',
+    action: () =>
+      'Check the parts made since it began. Look for a change of load or tooling, then at the axis page.',
     defaults: { threshold: 1, deadband: 0.1, onDelay: 20, offDelay: 60, priority: 'high', mailAfter: 60 },
   },
   'gain-drift': {
@@ -124,9 +126,17 @@ export const RULE: Record<RuleName, Rule> = {
     relative: false,
     measure: (levels) => levels.frictionRise,
     tolerance: absolute,
-    message: (value) => `Dry friction has risen by at least ${value.toFixed(1)} % of output since the baseline.`,
+    message: (value) =>
+      `Dry friction has risen by at least ${value.toFixed(1)} % of output since the baseline.`,
     action: () => `Look at guides, seals and lubrication. ${INSPECT}`,
-    defaults: { threshold: 1.5, deadband: 0.3, onDelay: 20, offDelay: 120, priority: 'medium', mailAfter: 120 },
+    defaults: {
+      threshold: 1.5,
+      deadband: 0.3,
+      onDelay: 20,
+      offDelay: 120,
+      priority: 'medium',
+      mailAfter: 120,
+    },
   },
   'output-activity': {
     unit: '% RMS',
@@ -145,7 +155,8 @@ export const RULE: Record<RuleName, Rule> = {
     measure: (levels) => levels.silence,
     tolerance: absolute,
     message: (value) => `No samples for ${value.toFixed(0)} s.`,
-    action: () => 'See whether the machine is switched off, then the gateway and the network. The axis is not being watched.',
+    action: () =>
+      'See whether the machine is switched off, then the gateway and the network. The axis is not being watched.',
     defaults: { threshold: 10, deadband: 5, onDelay: 0, offDelay: 5, priority: 'medium', mailAfter: 120 },
   },
   'trial-regression': {

@@ -38,13 +38,28 @@ export class DemoSeed {
     const tokens = this.tokens();
     const started = Date.now();
     await this.transactions.run(async (manager) => {
-      const sites = await manager.save(Site, SITES.map((site) => ({ ...site })));
+      const sites = await manager.save(
+        Site,
+        SITES.map((site) => ({ ...site })),
+      );
       const siteId = (name: string): number => sites.find((site) => site.name === name)!.id;
       for (const { name, site } of GATEWAYS)
-        await manager.insert(Gateway, { name, siteId: siteId(site), tokenHash: hashOfToken(tokens[name]!), epoch: null, lastSeenAt: null });
+        await manager.insert(Gateway, {
+          name,
+          siteId: siteId(site),
+          tokenHash: hashOfToken(tokens[name]!),
+          epoch: null,
+          lastSeenAt: null,
+        });
       const axes = await this.seedAxes(manager, siteId);
-      await seedDemoPeople(manager, sites.map(({ id }) => id));
-      await seedDemoRota(manager, sites.map(({ id }) => id));
+      await seedDemoPeople(
+        manager,
+        sites.map(({ id }) => id),
+      );
+      await seedDemoRota(
+        manager,
+        sites.map(({ id }) => id),
+      );
       await writeHistory(manager, axes, new Date(started));
     });
     this.log.log(`Tarnwick Tileworks made up in ${Date.now() - started} ms`);
@@ -56,7 +71,8 @@ export class DemoSeed {
     const axes: Axis[] = [];
     for (const { site, machine, lambda, ...sheet } of AXES) {
       const key = `${site} ${machine}`;
-      if (!machines.has(key)) machines.set(key, await manager.save(Machine, { siteId: siteId(site), name: machine }));
+      if (!machines.has(key))
+        machines.set(key, await manager.save(Machine, { siteId: siteId(site), name: machine }));
       const pattern = { kind: 'triple', lambda } as const;
       const axis = await manager.save(Axis, {
         ...sheet,
@@ -73,7 +89,12 @@ export class DemoSeed {
         structure: sheet.structure,
         pattern,
         feedForward: sheet.feedForward,
-        gains: placeGains({ gain: sheet.baseline.gain, pole: sheet.baseline.pole }, sheet.structure, pattern, sheet.feedForward),
+        gains: placeGains(
+          { gain: sheet.baseline.gain, pole: sheet.baseline.pole },
+          sheet.structure,
+          pattern,
+          sheet.feedForward,
+        ),
         plant: sheet.baseline,
         source: 'commissioning',
         proposalId: null,
@@ -90,7 +111,9 @@ export class DemoSeed {
   private tokens(): Record<string, string> {
     const path = join(this.config.get('DATA_DIR', { infer: true }), 'gateway-tokens.json');
     if (existsSync(path)) return JSON.parse(readFileSync(path, 'utf8')) as Record<string, string>;
-    const tokens = Object.fromEntries(GATEWAYS.map(({ name }) => [name, randomBytes(32).toString('base64url')]));
+    const tokens = Object.fromEntries(
+      GATEWAYS.map(({ name }) => [name, randomBytes(32).toString('base64url')]),
+    );
     writeFileSync(path, JSON.stringify(tokens, null, 2), { mode: 0o600 });
     return tokens;
   }

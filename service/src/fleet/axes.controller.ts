@@ -1,4 +1,15 @@
-import { BadRequestException, Body, Controller, Get, HttpCode, Param, ParseIntPipe, Patch, Post, Query } from '@nestjs/common';
+import {
+  BadRequestException,
+  Body,
+  Controller,
+  Get,
+  HttpCode,
+  Param,
+  ParseIntPipe,
+  Patch,
+  Post,
+  Query,
+} from '@nestjs/common';
 import { ApiBearerAuth, ApiCreatedResponse, ApiOkResponse, ApiTags } from '@nestjs/swagger';
 import { CurrentUser } from '../auth/current-user.decorator.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
@@ -63,7 +74,10 @@ export class AxesController {
   @ApiOkResponse({ type: StripsDto })
   async strips(@Query() { siteId }: SiteQuery, @CurrentUser() user: SignedInUser): Promise<StripsDto> {
     const ids = await this.axes.ids(user, siteId);
-    return { items: ids.map((id) => ({ id, seconds: this.recent.of(id).map(stripPoint) })), nextCursor: null };
+    return {
+      items: ids.map((id) => ({ id, seconds: this.recent.of(id).map(stripPoint) })),
+      nextCursor: null,
+    };
   }
 
   @Get('summary')

@@ -17,7 +17,16 @@ import { IntakeService } from '../telemetry/intake.service.js';
 import { TelemetryGateway } from '../telemetry/telemetry.gateway.js';
 import { groupBy } from '../group-by.js';
 import { Axis, AXIS_STATES, type Baseline } from './axis.entity.js';
-import type { FleetSummaryDto, AxisDto, AxisEstimateDto, AxisQuery, ChangeAxisDto, CreateAxisDto, MaintenanceDto, RatioPointDto } from './dto/axis.dto.js';
+import type {
+  FleetSummaryDto,
+  AxisDto,
+  AxisEstimateDto,
+  AxisQuery,
+  ChangeAxisDto,
+  CreateAxisDto,
+  MaintenanceDto,
+  RatioPointDto,
+} from './dto/axis.dto.js';
 import { Machine } from './machine.entity.js';
 import { TuningRevision } from './tuning-revision.entity.js';
 
@@ -86,7 +95,10 @@ export class AxesService {
       this.dataSource.getRepository(Alert).findBy({ axisId: In(ids), state: Not('normal') }),
       this.dataSource
         .getRepository(Proposal)
-        .find({ select: { id: true, axisId: true, state: true }, where: { axisId: In(ids), state: In([...LIVE_STATES]) } }),
+        .find({
+          select: { id: true, axisId: true, state: true },
+          where: { axisId: In(ids), state: In([...LIVE_STATES]) },
+        }),
       this.dataSource.getRepository(TuningRevision).findBy({ axisId: In(ids) }),
       this.trails(axes),
     ]);
@@ -180,7 +192,9 @@ export class AxesService {
   async summary(user: SignedInUser, siteId?: number): Promise<FleetSummaryDto> {
     const siteIds = sitesOf(user).filter((id) => siteId === undefined || id === siteId);
     const [axes, alerts, openProposals] = await Promise.all([
-      this.dataSource.getRepository(Axis).find({ select: { id: true, state: true }, where: { siteId: In(siteIds) } }),
+      this.dataSource
+        .getRepository(Axis)
+        .find({ select: { id: true, state: true }, where: { siteId: In(siteIds) } }),
       this.dataSource
         .getRepository(Alert)
         .find({ select: { id: true, state: true }, where: { siteId: In(siteIds), state: Not('normal') } }),
@@ -203,13 +217,16 @@ export class AxesService {
    */
   async register(body: CreateAxisDto, user: SignedInUser): Promise<Axis> {
     const machine = await this.dataSource.getRepository(Machine).findOneBy({ id: body.machineId });
-    if (!machine) throw new BadRequestException({ errors: [{ path: 'machineId', message: 'is no machine' }] });
+    if (!machine)
+      throw new BadRequestException({ errors: [{ path: 'machineId', message: 'is no machine' }] });
     requireRole(user, machine.siteId, 'axis.register', `machine ${machine.id}`);
     checkTravel(body.travel);
     const pattern = body.pattern as PolePattern;
     checkPattern(pattern);
     if (!body.gains && !body.baseline)
-      throw new BadRequestException({ errors: [{ path: 'gains', message: 'are needed where there is no baseline to place them from' }] });
+      throw new BadRequestException({
+        errors: [{ path: 'gains', message: 'are needed where there is no baseline to place them from' }],
+      });
     const gains = body.gains ?? placeGains(body.baseline!, body.structure, pattern, body.feedForward);
     const baseline: Baseline | null = body.baseline
       ? { ...body.baseline, coulomb: null, bias: null, gainForward: null, gainReverse: null }
@@ -307,7 +324,9 @@ export class AxesService {
     const axis = await this.get(id, user, 'axis.baseline');
     const estimate = this.intake.pipeline(id)?.estimate;
     if (!estimate || estimate.verdict === 'unidentifiable')
-      throw new ConflictException('There is no usable estimate of this axis yet; let it make some production moves');
+      throw new ConflictException(
+        'There is no usable estimate of this axis yet; let it make some production moves',
+      );
     await this.transactions.run(async (manager) => {
       await manager.update(Axis, id, { baseline: baselineOf(estimate), baselineAt: new Date() });
       await this.audit.record(manager, {
@@ -345,7 +364,8 @@ export const estimateDto = (estimate: PlantEstimate, t: number): AxisEstimateDto
 });
 
 function checkTravel({ min, max }: { min: number; max: number }): void {
-  if (max <= min) throw new BadRequestException({ errors: [{ path: 'travel.max', message: 'must be above travel.min' }] });
+  if (max <= min)
+    throw new BadRequestException({ errors: [{ path: 'travel.max', message: 'must be above travel.min' }] });
 }
 
 /** How far an axis is off its baseline in shares of its tolerance; orders axes of one state. */

@@ -35,18 +35,26 @@ export class AxisStateService {
       const standing = groupBy(
         await this.dataSource
           .getRepository(Alert)
-          .find({ select: { axisId: true, rule: true }, where: { state: In(['unacknowledged', 'acknowledged']) } }),
+          .find({
+            select: { axisId: true, rule: true },
+            where: { state: In(['unacknowledged', 'acknowledged']) },
+          }),
         ({ axisId }) => axisId,
       );
       for (const axis of axes) {
-        const { state, reason } = this.judge(axis, (standing.get(axis.id) ?? []).map(({ rule }) => rule), at);
+        const { state, reason } = this.judge(
+          axis,
+          (standing.get(axis.id) ?? []).map(({ rule }) => rule),
+          at,
+        );
         if (state === axis.state && reason === axis.stateReason) continue;
         await this.dataSource.getRepository(Axis).update(axis.id, {
           state,
           stateReason: reason,
           ...(state !== axis.state && { stateSince: at }),
         });
-        if (state !== axis.state) tell(this.emitter, 'axis.state-changed', { axisId: axis.id, siteId: axis.siteId });
+        if (state !== axis.state)
+          tell(this.emitter, 'axis.state-changed', { axisId: axis.id, siteId: axis.siteId });
         axis.state = state;
       }
       for (const state of AXIS_STATES)
@@ -60,7 +68,9 @@ export class AxisStateService {
     const pipeline = this.intake.pipeline(axis.id);
     const lastSampleAt = pipeline?.lastSampleAt ?? null;
     return judgeAxis({
-      maintenance: axis.inMaintenance ? { until: axis.maintenanceUntil, reason: axis.maintenanceReason } : null,
+      maintenance: axis.inMaintenance
+        ? { until: axis.maintenanceUntil, reason: axis.maintenanceReason }
+        : null,
       silence: pipeline?.heardAt == null ? null : at.getTime() / 1000 - pipeline.heardAt,
       lastSampleAt: lastSampleAt === null ? null : new Date(lastSampleAt * 1000),
       indicators: this.recent.over(axis.id),

@@ -38,13 +38,25 @@ const percent = (ratio: number): string => `${Math.abs((ratio - 1) * 100).toFixe
  * following-error alert stands), drifting (the chart signals, or another alert stands), in tune.
  */
 export function judgeAxis(evidence: AxisEvidence): Judgement {
-  const { maintenance, silence, lastSampleAt, decisions, estimate, baseline, cause, indicators, standing, tolerances } = evidence;
+  const {
+    maintenance,
+    silence,
+    lastSampleAt,
+    decisions,
+    estimate,
+    baseline,
+    cause,
+    indicators,
+    standing,
+    tolerances,
+  } = evidence;
   if (maintenance)
     return {
       state: 'in-maintenance',
       reason: `In maintenance${maintenance.until ? ` until ${evidence.timeOf(maintenance.until)}` : ''}.${maintenance.reason ? ` ${sentence(maintenance.reason)}` : ''}`,
     };
-  if (silence === null) return { state: 'no-signal', reason: 'No samples yet. Its gateway has not reported this axis.' };
+  if (silence === null)
+    return { state: 'no-signal', reason: 'No samples yet. Its gateway has not reported this axis.' };
   if (silence >= SILENT_AFTER)
     return { state: 'no-signal', reason: `No samples since ${evidence.timeOf(lastSampleAt!)}.` };
 
@@ -102,5 +114,6 @@ function calm(estimate: PlantEstimate | null, baseline: Baseline | null): string
   return `K and pole within ${Math.max(1, Math.ceil(worst * 100))} % of baseline.`;
 }
 
-const digits = (value: number): string => (value >= 100 ? value.toFixed(0) : value >= 10 ? value.toFixed(1) : value.toFixed(2));
+const digits = (value: number): string =>
+  value >= 100 ? value.toFixed(0) : value >= 10 ? value.toFixed(1) : value.toFixed(2);
 const sentence = (text: string): string => (/[.!?]$/.test(text) ? text : `${text}.`);

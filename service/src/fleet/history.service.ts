@@ -9,7 +9,14 @@ import { PlantEstimateRow } from '../indicators/plant-estimate.entity.js';
 import { pageOf, type Page } from '../page.js';
 import { estimateDto } from './axes.service.js';
 import type { Axis } from './axis.entity.js';
-import type { ChartPointDto, HistoricEstimateDto, IndicatorPointDto, IndicatorQuery, SpanQuery, TuningRevisionDto } from './dto/history.dto.js';
+import type {
+  ChartPointDto,
+  HistoricEstimateDto,
+  IndicatorPointDto,
+  IndicatorQuery,
+  SpanQuery,
+  TuningRevisionDto,
+} from './dto/history.dto.js';
 import { TuningRevision } from './tuning-revision.entity.js';
 
 const ROLLUPS = { second: IndicatorSecond, minute: IndicatorMinute, hour: IndicatorHour };
@@ -87,10 +94,12 @@ const cursorAfter = ({ t }: { t: number }): string => String(t);
 function span({ from, to, cursor }: SpanQuery, reach: number): { from: number; to: number } {
   const end = (to ?? new Date()).getTime() / 1000;
   let start = from ? from.getTime() / 1000 : end - reach;
-  if (start > end) throw new BadRequestException({ errors: [{ path: 'from', message: 'must not be after to' }] });
+  if (start > end)
+    throw new BadRequestException({ errors: [{ path: 'from', message: 'must not be after to' }] });
   if (cursor !== undefined) {
     const after = Number(cursor);
-    if (!Number.isFinite(after)) throw new BadRequestException({ errors: [{ path: 'cursor', message: 'is none that this list gave' }] });
+    if (!Number.isFinite(after))
+      throw new BadRequestException({ errors: [{ path: 'cursor', message: 'is none that this list gave' }] });
     start = after + 1e-6;
   }
   return { from: start, to: end };

@@ -47,20 +47,31 @@ export class SitesController {
 
   @Get('machines')
   @ApiOkResponse({ type: MachinePageDto })
-  async machines(@Query() { siteId }: SiteQuery, @CurrentUser() user: SignedInUser): Promise<Page<MachineDto>> {
-    return whole((await this.service.machines(user, siteId)).map((m) => ({ id: m.id, siteId: m.siteId, name: m.name })));
+  async machines(
+    @Query() { siteId }: SiteQuery,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<Page<MachineDto>> {
+    return whole(
+      (await this.service.machines(user, siteId)).map((m) => ({ id: m.id, siteId: m.siteId, name: m.name })),
+    );
   }
 
   @Post('machines')
   @ApiCreatedResponse({ type: MachineDto })
-  async createMachine(@Body() body: CreateMachineDto, @CurrentUser() user: SignedInUser): Promise<MachineDto> {
+  async createMachine(
+    @Body() body: CreateMachineDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<MachineDto> {
     const { id, siteId, name } = await this.service.createMachine(body, user);
     return { id, siteId, name };
   }
 
   @Get('gateways')
   @ApiOkResponse({ type: GatewayPageDto })
-  async gateways(@Query() { siteId }: SiteQuery, @CurrentUser() user: SignedInUser): Promise<Page<GatewayDto>> {
+  async gateways(
+    @Query() { siteId }: SiteQuery,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<Page<GatewayDto>> {
     return whole(
       (await this.service.gateways(user, siteId)).map((gateway) => {
         const heardAt = this.intake.progressOf(gateway.id)?.lastSeenAt ?? null;
@@ -77,7 +88,10 @@ export class SitesController {
 
   @Post('gateways')
   @ApiCreatedResponse({ type: CreatedGatewayDto })
-  createGateway(@Body() body: CreateGatewayDto, @CurrentUser() user: SignedInUser): Promise<CreatedGatewayDto> {
+  createGateway(
+    @Body() body: CreateGatewayDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<CreatedGatewayDto> {
     return this.service.createGateway(body, user);
   }
 }

@@ -28,7 +28,9 @@ export class SitesService {
   ) {}
 
   sites(user: SignedInUser): Promise<Site[]> {
-    return this.dataSource.getRepository(Site).find({ where: { id: In(sitesOf(user)) }, order: { name: 'ASC' } });
+    return this.dataSource
+      .getRepository(Site)
+      .find({ where: { id: In(sitesOf(user)) }, order: { name: 'ASC' } });
   }
 
   machines(user: SignedInUser, siteId?: number): Promise<Machine[]> {
@@ -47,7 +49,9 @@ export class SitesService {
     return this.dataSource
       .getRepository(entity)
       .createQueryBuilder('thing')
-      .where('thing.siteId IN (:...sites)', { sites: [-1, ...sitesOf(user).filter((id) => siteId === undefined || id === siteId)] })
+      .where('thing.siteId IN (:...sites)', {
+        sites: [-1, ...sitesOf(user).filter((id) => siteId === undefined || id === siteId)],
+      })
       .orderBy('thing.name')
       .getMany();
   }
@@ -97,7 +101,13 @@ export class SitesService {
     const gateway = await this.transactions.run(async (manager) => {
       if (await manager.existsBy(Gateway, { siteId: body.siteId, name: body.name }))
         throw new ConflictException(`The site already has a gateway "${body.name}"`);
-      const saved = await manager.save(Gateway, { siteId: body.siteId, name: body.name, tokenHash: hashOfToken(token), epoch: null, lastSeenAt: null });
+      const saved = await manager.save(Gateway, {
+        siteId: body.siteId,
+        name: body.name,
+        tokenHash: hashOfToken(token),
+        epoch: null,
+        lastSeenAt: null,
+      });
       await this.audit.record(manager, {
         user,
         action: 'gateway.registered',
@@ -111,7 +121,11 @@ export class SitesService {
     return { id: gateway.id, token };
   }
 
-  private async requireSite(siteId: number, user: SignedInUser, action: 'machine.register' | 'gateway.register'): Promise<void> {
+  private async requireSite(
+    siteId: number,
+    user: SignedInUser,
+    action: 'machine.register' | 'gateway.register',
+  ): Promise<void> {
     if (!(await this.dataSource.getRepository(Site).existsBy({ id: siteId })))
       throw new BadRequestException({ errors: [{ path: 'siteId', message: 'is no site' }] });
     requireRole(user, siteId, action, `site ${siteId}`);

@@ -1,6 +1,13 @@
 import { OnEvent } from '@nestjs/event-emitter';
 import { Interval } from '@nestjs/schedule';
-import { ConnectedSocket, MessageBody, SubscribeMessage, WebSocketGateway, WebSocketServer, type OnGatewayInit } from '@nestjs/websockets';
+import {
+  ConnectedSocket,
+  MessageBody,
+  SubscribeMessage,
+  WebSocketGateway,
+  WebSocketServer,
+  type OnGatewayInit,
+} from '@nestjs/websockets';
 import type { Namespace, Socket } from 'socket.io';
 import { AuthService } from '../auth/auth.service.js';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
@@ -118,7 +125,10 @@ export class LiveGateway implements OnGatewayInit<Namespace> {
     }
   }
 
-  private deliver(socket: LiveSocket, message: { at: Date; tiles: unknown[]; trace: TraceMessage | null }): void {
+  private deliver(
+    socket: LiveSocket,
+    message: { at: Date; tiles: unknown[]; trace: TraceMessage | null },
+  ): void {
     socket.data.busy = true;
     socket
       .timeout(ANSWER_WITHIN_MS)

@@ -33,7 +33,12 @@ export class TraceBuffer {
   push({ target, position, output, startUs, sampleTimeUs }: FrameBlock): void {
     const q = this.facts.resolution;
     const keep = (i: number): void => {
-      this.points.push([(startUs + i * sampleTimeUs) / 1e6, target[i]! * q, position[i]! * q, output[i]! / 100]);
+      this.points.push([
+        (startUs + i * sampleTimeUs) / 1e6,
+        target[i]! * q,
+        position[i]! * q,
+        output[i]! / 100,
+      ]);
     };
     for (let from = 0; from < target.length; from += this.stretch) {
       const to = Math.min(target.length, from + this.stretch);

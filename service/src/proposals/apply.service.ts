@@ -1,4 +1,10 @@
-import { BadRequestException, ConflictException, ForbiddenException, Injectable, Logger } from '@nestjs/common';
+import {
+  BadRequestException,
+  ConflictException,
+  ForbiddenException,
+  Injectable,
+  Logger,
+} from '@nestjs/common';
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
@@ -89,19 +95,29 @@ export class ApplyService {
   /** @throws ConflictException saying what is missing */
   private requireAtRest(axis: Axis): void {
     if (!axis.inMaintenance)
-      throw new ConflictException(`${axis.tag} is in production. Put it in maintenance first; nothing was sent`);
+      throw new ConflictException(
+        `${axis.tag} is in production. Put it in maintenance first; nothing was sent`,
+      );
     if (!this.gateway.serves(axis.id))
       throw new ConflictException(`No gateway serves ${axis.tag} now. Nothing was sent`);
     if (!this.intake.pipeline(axis.id)?.standing)
       throw new ConflictException(`${axis.tag} is not at rest yet. Nothing was sent`);
   }
 
-  private async send(seen: Proposal, user: SignedInUser, rollingBack: boolean, why: string, gains: Gains): Promise<void> {
+  private async send(
+    seen: Proposal,
+    user: SignedInUser,
+    rollingBack: boolean,
+    why: string,
+    gains: Gains,
+  ): Promise<void> {
     const structure = rollingBack ? seen.current.structure : seen.proposed!.structure;
     const revision = await this.transactions.run(async (manager) => {
       const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
       if (proposal.state !== seen.state || proposal.version !== seen.version)
-        throw new ConflictException(`Proposal ${seen.id} has changed meanwhile: it is ${proposal.state}. Nothing was sent`);
+        throw new ConflictException(
+          `Proposal ${seen.id} has changed meanwhile: it is ${proposal.state}. Nothing was sent`,
+        );
       const next = await this.nextRevision(manager, seen.axisId);
       Object.assign(proposal, {
         state: STEP.apply.to,
@@ -146,7 +162,8 @@ export class ApplyService {
       where: { axisId, state: 'applying', revision },
       relations: { axis: true },
     });
-    if (!proposal) return this.log.log(`Axis ${axisId} read back revision ${revision}, which nobody waits for`);
+    if (!proposal)
+      return this.log.log(`Axis ${axisId} read back revision ${revision}, which nobody waits for`);
     const sent = proposal.rollingBack ? proposal.current.gains : proposal.proposed!.gains;
     const wrong = GAIN_NAMES.filter((name) => Math.fround(sent[name]) !== Math.fround(gains[name]));
     if (wrong.length > 0)
@@ -235,7 +252,14 @@ export class ApplyService {
       });
       proposal.state = 'rolled back';
       await manager.save(proposal);
-      await this.note(manager, proposal, 'service', 'rolled back', 'The machine read the former gains back', null);
+      await this.note(
+        manager,
+        proposal,
+        'service',
+        'rolled back',
+        'The machine read the former gains back',
+        null,
+      );
     });
     this.tuned(seen);
   }
@@ -277,7 +301,14 @@ export class ApplyService {
     note: string | null,
     user: SignedInUser | null,
   ): Promise<void> {
-    await manager.save(ProposalEvent, { proposalId: proposal.id, at: new Date(), by, action, note, version: proposal.version });
+    await manager.save(ProposalEvent, {
+      proposalId: proposal.id,
+      at: new Date(),
+      by,
+      action,
+      note,
+      version: proposal.version,
+    });
     await this.audit.record(manager, {
       user,
       action: `proposal.${action.replaceAll(' ', '-')}`,
@@ -294,7 +325,11 @@ export class ApplyService {
 
   private tuned(seen: Proposal): void {
     tell(this.emitter, 'axis.changed', { axisId: seen.axisId, siteId: seen.siteId });
-    tell(this.emitter, 'tuning.applied', { axisId: seen.axisId, siteId: seen.siteId, revision: seen.revision! });
+    tell(this.emitter, 'tuning.applied', {
+      axisId: seen.axisId,
+      siteId: seen.siteId,
+      revision: seen.revision!,
+    });
     this.changed(seen);
   }
 

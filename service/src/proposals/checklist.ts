@@ -1,7 +1,13 @@
 /** What the person at the machine confirms, item by item, before gains may leave. Our own words; defers to the site. */
 export const CHECKLIST = [
-  { key: 'people-clear', text: 'People are clear of the axis and everything it can reach; unexpected motion is possible.' },
-  { key: 'site-procedures', text: 'The site’s lockout/tagout and machine-safety procedures and local codes are followed.' },
+  {
+    key: 'people-clear',
+    text: 'People are clear of the axis and everything it can reach; unexpected motion is possible.',
+  },
+  {
+    key: 'site-procedures',
+    text: 'The site’s lockout/tagout and machine-safety procedures and local codes are followed.',
+  },
   { key: 'authorised', text: 'I am authorised and competent to change gains on this machine.' },
   { key: 'emergency-stop', text: 'The emergency stop is in reach and has been tried.' },
   { key: 'axis-at-rest', text: 'The axis is at rest and out of production.' },

@@ -4,7 +4,14 @@ import { InjectDataSource } from '@nestjs/typeorm';
 import { In, type DataSource } from 'typeorm';
 import { AuditService } from '../audit/audit.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
-import { checkGains, checkPattern, placeGains, type Gains, type PolePattern, type Structure } from '../control/pole-placement.js';
+import {
+  checkGains,
+  checkPattern,
+  placeGains,
+  type Gains,
+  type PolePattern,
+  type Structure,
+} from '../control/pole-placement.js';
 import { Transactions } from '../database/transactions.js';
 import { tell, type Events } from '../events.js';
 import { AxesService } from '../fleet/axes.service.js';
@@ -15,7 +22,16 @@ import type { PlantEstimate } from '../identification/plant-estimate.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
 import type { AxisPipeline } from '../telemetry/axis-pipeline.js';
 import { IntakeService } from '../telemetry/intake.service.js';
-import { bindingOf, decisionSentence, expectedOf, lambdaOf, plantOf, recommend, type CurrentTuning, type Evidence } from './evidence.js';
+import {
+  bindingOf,
+  decisionSentence,
+  expectedOf,
+  lambdaOf,
+  plantOf,
+  recommend,
+  type CurrentTuning,
+  type Evidence,
+} from './evidence.js';
 import { LIVE_STATES, Proposal, ProposalEvent, type Proposed } from './proposal.entity.js';
 
 /** What a person wants altered; what is absent stays. */
@@ -77,12 +93,19 @@ export class DraftingService {
    *
    * @throws ConflictException when the axis has a live one, or nothing is known of its plant
    */
-  async draft(axisId: number, source: 'drift' | 'person', user: SignedInUser | null, wish: Alteration): Promise<Proposal> {
+  async draft(
+    axisId: number,
+    source: 'drift' | 'person',
+    user: SignedInUser | null,
+    wish: Alteration,
+  ): Promise<Proposal> {
     const axis = await this.dataSource.getRepository(Axis).findOneByOrFail({ id: axisId });
     const pipeline = this.intake.pipeline(axisId);
     const estimate = pipeline?.estimate;
     if (!pipeline || !estimate || estimate.verdict === 'unidentifiable')
-      throw new ConflictException('Nothing usable is known of this axis’s plant yet; let it make some production moves');
+      throw new ConflictException(
+        'Nothing usable is known of this axis’s plant yet; let it make some production moves',
+      );
     if (!axis.baseline) throw new ConflictException('The axis has no baseline yet; confirm one first');
     const current = await this.currentOf(axis);
     const evidence = await this.evidenceOf(axis, pipeline, estimate);
@@ -135,7 +158,13 @@ export class DraftingService {
     axis: Axis,
     estimate: PlantEstimate,
     current: CurrentTuning,
-    wanted: { structure: Structure; pattern: PolePattern; feedForward: boolean; gains?: Gains; exactly?: boolean },
+    wanted: {
+      structure: Structure;
+      pattern: PolePattern;
+      feedForward: boolean;
+      gains?: Gains;
+      exactly?: boolean;
+    },
   ): Pick<Proposal, 'proposed' | 'noGainsReason' | 'expected' | 'binding'> {
     const { structure, pattern, feedForward, gains, exactly } = wanted;
     checkPattern(pattern);
@@ -146,7 +175,12 @@ export class DraftingService {
       proposed = { structure, pattern: null, feedForward, gains };
     } else if (exactly) {
       // A person chose these poles; the limits are shown, not enforced.
-      proposed = { structure, pattern, feedForward, gains: placeGains(plantOf(estimate), structure, pattern, feedForward) };
+      proposed = {
+        structure,
+        pattern,
+        feedForward,
+        gains: placeGains(plantOf(estimate), structure, pattern, feedForward),
+      };
     } else if (recommendation.gains && recommendation.pattern)
       proposed = { structure, pattern: recommendation.pattern, feedForward, gains: recommendation.gains };
     const binding = bindingOf(recommendation);
@@ -154,7 +188,10 @@ export class DraftingService {
       proposed,
       noGainsReason: proposed ? null : [recommendation.reason, ...recommendation.waysOut].join(' '),
       expected: expectedOf(axis, estimate, current, proposed),
-      binding: proposed?.pattern && exactly ? { ...binding, lambda: lambdaOf(pattern), kept: lambdaOf(pattern) === lambdaOf(axis.pattern) } : binding,
+      binding:
+        proposed?.pattern && exactly
+          ? { ...binding, lambda: lambdaOf(pattern), kept: lambdaOf(pattern) === lambdaOf(axis.pattern) }
+          : binding,
     };
   }
 
@@ -226,13 +263,22 @@ export class DraftingService {
       });
       return true;
     });
-    if (done) tell(this.emitter, 'proposal.changed', { proposalId: proposal.id, axisId: axis.id, siteId: axis.siteId });
+    if (done)
+      tell(this.emitter, 'proposal.changed', {
+        proposalId: proposal.id,
+        axisId: axis.id,
+        siteId: axis.siteId,
+      });
   }
 
   private async endedLately({ facts, estimate }: AxisPipeline, at: Date): Promise<boolean> {
     const last = await this.dataSource
       .getRepository(Proposal)
-      .findOne({ where: { axisId: facts.id, source: 'drift' }, order: { id: 'DESC' }, relations: { events: true } });
+      .findOne({
+        where: { axisId: facts.id, source: 'drift' },
+        order: { id: 'DESC' },
+        relations: { events: true },
+      });
     if (!last) return false;
     const ended = Math.max(...last.events.map((event) => event.at.getTime()));
     return at.getTime() - ended < QUIET_AFTER_END && !hasMoved(last.evidence.estimate, estimate!, SAME_DRIFT);
@@ -241,7 +287,9 @@ export class DraftingService {
 
 function isDecided({ decisions, estimate, facts }: AxisPipeline): boolean {
   const drifted = decisions?.gain.state === 'drifted' || decisions?.pole.state === 'drifted';
-  return drifted && estimate !== null && facts.baseline !== null && !facts.inMaintenance && facts.revision > 0;
+  return (
+    drifted && estimate !== null && facts.baseline !== null && !facts.inMaintenance && facts.revision > 0
+  );
 }
 
 const isStale = (proposal: Proposal, estimate: PlantEstimate): boolean =>
@@ -251,4 +299,5 @@ const isStale = (proposal: Proposal, estimate: PlantEstimate): boolean =>
   hasMoved(proposal.evidence.estimate, estimate, REFRESH_BEYOND);
 
 const hasMoved = (before: PlantEstimate, now: PlantEstimate, share: number): boolean =>
-  Math.abs(now.gain.value / before.gain.value - 1) > share || Math.abs(now.pole.value / before.pole.value - 1) > share;
+  Math.abs(now.gain.value / before.gain.value - 1) > share ||
+  Math.abs(now.pole.value / before.pole.value - 1) > share;

@@ -1,5 +1,10 @@
 import type { LimitName } from '../control/limits.js';
-import { expectedMove, recommendGains, type ExpectedMove, type Recommendation } from '../control/recommendation.js';
+import {
+  expectedMove,
+  recommendGains,
+  type ExpectedMove,
+  type Recommendation,
+} from '../control/recommendation.js';
 import { sampledMaxSensitivity } from '../control/sampled-margins.js';
 import { simulateMove, type Controller, type Move } from '../control/move.js';
 import { patternFrequency, type Gains, type PolePattern, type Structure } from '../control/pole-placement.js';
@@ -90,7 +95,11 @@ export const controllerOf = (axis: Pick<Axis, 'sampleTime' | 'resolution'>): Con
   resolution: axis.resolution,
 });
 
-export const moveOf = ({ move }: Pick<Axis, 'move'>): Move => ({ ...move, settle: 1, profile: 'raised-cosine' });
+export const moveOf = ({ move }: Pick<Axis, 'move'>): Move => ({
+  ...move,
+  settle: 1,
+  profile: 'raised-cosine',
+});
 
 /** The plant that gains are placed for: the estimate, with friction, bias and dead time. */
 export const plantOf = (estimate: PlantEstimate): Plant => ({
@@ -160,7 +169,10 @@ export function expectedOf(
     maxSensitivity,
   });
   const trace = ({ gains, structure }: { gains: Gains; structure: Structure }): ExpectedTrace =>
-    traceOf(simulateMove(plant, gains, structure, controller, move, { output: plant.bias ?? 0 }), controller.sampleTime);
+    traceOf(
+      simulateMove(plant, gains, structure, controller, move, { output: plant.bias ?? 0 }),
+      controller.sampleTime,
+    );
   return {
     before: { ...figures(before.nominal, sensitivity(current)), trace: trace(current) },
     after: after && proposed && { ...figures(after.nominal, sensitivity(proposed)), trace: trace(proposed) },
@@ -194,7 +206,9 @@ export function decisionSentence(
   const base = baseline[quantity];
   const pct = 100 * (value / base - 1);
   const [name, unit, tolerance] =
-    quantity === 'gain' ? ['Gain K', '(mm/s)/%', tolerances.gainPct] : ['Pole α', 'rad/s', tolerances.polePct];
+    quantity === 'gain'
+      ? ['Gain K', '(mm/s)/%', tolerances.gainPct]
+      : ['Pole α', 'rad/s', tolerances.polePct];
   const digits = decimals(high - low);
   return `${name} ${base.toFixed(digits)} → ${value.toFixed(digits)} ${unit} (95 %: ${low.toFixed(digits)} … ${high.toFixed(digits)}), ${Math.abs(pct).toFixed(0)} % ${pct < 0 ? 'below' : 'above'} baseline; tolerance ±${tolerance} %.`;
 }

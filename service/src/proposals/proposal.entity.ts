@@ -1,4 +1,14 @@
-import { Column, CreateDateColumn, Entity, Index, JoinColumn, ManyToOne, OneToMany, PrimaryGeneratedColumn, type Relation } from 'typeorm';
+import {
+  Column,
+  CreateDateColumn,
+  Entity,
+  Index,
+  JoinColumn,
+  ManyToOne,
+  OneToMany,
+  PrimaryGeneratedColumn,
+  type Relation,
+} from 'typeorm';
 import type { Gains, PolePattern, Structure } from '../control/pole-placement.js';
 import { Axis } from '../fleet/axis.entity.js';
 import type { Binding, CurrentTuning, Evidence, Expected } from './evidence.js';
@@ -22,7 +32,14 @@ export const PROPOSAL_STATES = [
 export type ProposalState = (typeof PROPOSAL_STATES)[number];
 
 /** The states in which a proposal still wants something from somebody. One such proposal per axis. */
-export const LIVE_STATES = ['drafted', 'in review', 'approved', 'scheduled', 'applying', 'on trial'] as const satisfies readonly ProposalState[];
+export const LIVE_STATES = [
+  'drafted',
+  'in review',
+  'approved',
+  'scheduled',
+  'applying',
+  'on trial',
+] as const satisfies readonly ProposalState[];
 
 /** The gains on offer and how they came about. */
 export interface Proposed {
@@ -34,7 +51,10 @@ export interface Proposed {
 }
 
 @Entity()
-@Index(['axisId'], { unique: true, where: `"state" IN ('drafted','in review','approved','scheduled','applying','on trial')` })
+@Index(['axisId'], {
+  unique: true,
+  where: `"state" IN ('drafted','in review','approved','scheduled','applying','on trial')`,
+})
 @Index(['state'])
 export class Proposal {
   @PrimaryGeneratedColumn()

@@ -1,4 +1,16 @@
-import { BadRequestException, Body, Controller, Get, Headers, HttpCode, Param, ParseIntPipe, Patch, Post, Query } from '@nestjs/common';
+import {
+  BadRequestException,
+  Body,
+  Controller,
+  Get,
+  Headers,
+  HttpCode,
+  Param,
+  ParseIntPipe,
+  Patch,
+  Post,
+  Query,
+} from '@nestjs/common';
 import { ApiBearerAuth, ApiCreatedResponse, ApiHeader, ApiOkResponse, ApiTags } from '@nestjs/swagger';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { In, LessThan, type DataSource } from 'typeorm';
@@ -26,7 +38,11 @@ import { LIVE_STATES, Proposal } from './proposal.entity.js';
 import { ReviewService } from './review.service.js';
 
 /** Refuses the step with 409 when the proposal has another version by now. */
-const IF_MATCH = { name: 'if-match', required: false, description: 'The version that you have seen, such as "2"' };
+const IF_MATCH = {
+  name: 'if-match',
+  required: false,
+  description: 'The version that you have seen, such as "2"',
+};
 
 @ApiTags('proposals')
 @ApiBearerAuth()
@@ -43,7 +59,10 @@ export class ProposalsController {
   /** Newest first. */
   @Get()
   @ApiOkResponse({ type: ProposalPageDto })
-  async list(@Query() query: ProposalQuery, @CurrentUser() user: SignedInUser): Promise<Page<ProposalSummaryDto>> {
+  async list(
+    @Query() query: ProposalQuery,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<Page<ProposalSummaryDto>> {
     const { limit, cursor, state, axisId } = query;
     const before = cursor === undefined ? undefined : Number(cursor);
     if (before !== undefined && !Number.isInteger(before))
@@ -66,7 +85,9 @@ export class ProposalsController {
   @ApiOkResponse({ type: ProposalDto })
   async get(@Param('id', ParseIntPipe) id: number, @CurrentUser() user: SignedInUser): Promise<ProposalDto> {
     const proposal = await this.review.get(id, user);
-    const people = [proposal.alteredById, proposal.submittedById, proposal.approvedById].filter((p) => p !== null);
+    const people = [proposal.alteredById, proposal.submittedById, proposal.approvedById].filter(
+      (p) => p !== null,
+    );
     const names = await this.dataSource
       .getRepository(User)
       .find({ select: { id: true, name: true }, where: { id: In(people) } });
@@ -79,7 +100,10 @@ export class ProposalsController {
 
   @Post()
   @ApiCreatedResponse({ type: ProposalDto })
-  async create(@Body() { axisId, ...wish }: CreateProposalDto, @CurrentUser() user: SignedInUser): Promise<ProposalDto> {
+  async create(
+    @Body() { axisId, ...wish }: CreateProposalDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<ProposalDto> {
     await this.axes.get(axisId, user, 'proposal.work');
     const { id } = await this.drafting.draft(axisId, 'person', user, wish as Alteration);
     return this.get(id, user);

@@ -1,4 +1,11 @@
-import { BadRequestException, ConflictException, ForbiddenException, HttpException, Injectable, NotFoundException } from '@nestjs/common';
+import {
+  BadRequestException,
+  ConflictException,
+  ForbiddenException,
+  HttpException,
+  Injectable,
+  NotFoundException,
+} from '@nestjs/common';
 import { EventEmitter2 } from '@nestjs/event-emitter';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
@@ -71,7 +78,12 @@ export class ReviewService {
   }
 
   /** Makes a new version; whatever was approved before is a draft again. */
-  async alter(id: number, change: Alteration, ifMatch: string | undefined, user: SignedInUser): Promise<void> {
+  async alter(
+    id: number,
+    change: Alteration,
+    ifMatch: string | undefined,
+    user: SignedInUser,
+  ): Promise<void> {
     if (ifMatch === undefined)
       throw new HttpException('Say which version you alter: If-Match: "version"', PRECONDITION_REQUIRED);
     const seen = await this.get(id, user);
@@ -128,7 +140,13 @@ export class ReviewService {
     await this.step(seen, 'withdraw', user, null);
   }
 
-  async schedule(id: number, from: Date, to: Date, ifMatch: string | undefined, user: SignedInUser): Promise<void> {
+  async schedule(
+    id: number,
+    from: Date,
+    to: Date,
+    ifMatch: string | undefined,
+    user: SignedInUser,
+  ): Promise<void> {
     const seen = await this.get(id, user);
     allow(seen, 'schedule', user, ifMatch);
     const wrong = (path: string, message: string): never => {
@@ -187,7 +205,9 @@ export class ReviewService {
     await this.transactions.run(async (manager) => {
       const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
       if (proposal.version !== seen.version || proposal.state !== seen.state)
-        throw new ConflictException(`Proposal ${seen.id} has changed meanwhile: it is ${proposal.state}, version ${proposal.version}`);
+        throw new ConflictException(
+          `Proposal ${seen.id} has changed meanwhile: it is ${proposal.state}, version ${proposal.version}`,
+        );
       const before = { state: proposal.state, version: proposal.version, proposed: proposal.proposed };
       proposal.state = STEP[step].to ?? proposal.state;
       await change?.(proposal, manager);
@@ -232,9 +252,12 @@ export class ReviewService {
 /** Why a person may not take a step now; null when they may. */
 export function refusalOf(proposal: Proposal, step: Step, user: SignedInUser): HttpException | null {
   const { from, right } = STEP[step];
-  if (!may(user, proposal.siteId, right)) return new ForbiddenException(`Your role on this site may not do this (${right})`);
+  if (!may(user, proposal.siteId, right))
+    return new ForbiddenException(`Your role on this site may not do this (${right})`);
   if (!from.includes(proposal.state))
-    return new ConflictException(`The proposal is ${proposal.state}; this takes one that is ${from.join(' or ')}`);
+    return new ConflictException(
+      `The proposal is ${proposal.state}; this takes one that is ${from.join(' or ')}`,
+    );
   if (step === 'submit' && !proposal.proposed)
     return new ConflictException('There are no gains to review: nothing within the limits was found');
   if (step === 'approve' && (proposal.alteredById === user.id || proposal.submittedById === user.id))

@@ -28,8 +28,16 @@ export class TrialService {
     const appliedAt = proposal.appliedAt.getTime() / 1000;
     const moves = this.dataSource.getRepository(MoveRecord);
     const [before, after] = await Promise.all([
-      moves.find({ where: { axisId, revision: proposal.current.revision, t: LessThan(appliedAt) }, order: { t: "DESC" }, take: MOVES_BEFORE }),
-      moves.find({ where: { axisId, revision: proposal.revision!, t: MoreThan(appliedAt) }, order: { t: "ASC" }, take: MOVES_AFTER }),
+      moves.find({
+        where: { axisId, revision: proposal.current.revision, t: LessThan(appliedAt) },
+        order: { t: 'DESC' },
+        take: MOVES_BEFORE,
+      }),
+      moves.find({
+        where: { axisId, revision: proposal.revision!, t: MoreThan(appliedAt) },
+        order: { t: 'ASC' },
+        take: MOVES_AFTER,
+      }),
     ]);
     const trial = compareMoves(before, after, proposal.appliedAt);
     const changed = await this.transactions.run(async (manager) => {
@@ -39,6 +47,7 @@ export class TrialService {
       await manager.save(found);
       return true;
     });
-    if (changed) tell(this.emitter, 'proposal.changed', { proposalId: proposal.id, axisId, siteId: proposal.siteId });
+    if (changed)
+      tell(this.emitter, 'proposal.changed', { proposalId: proposal.id, axisId, siteId: proposal.siteId });
   }
 }

@@ -39,7 +39,11 @@ const LEAST_CHANGE = 0.05;
  * two samples differ is judged by the Wilcoxon–Mann–Whitney rank test (normal approximation with ties corrected;
  * Wilcoxon 1945, Mann & Whitney 1947).
  */
-export function compareMoves(before: readonly RecordedMove[], after: readonly RecordedMove[], startedAt: Date): TrialResult {
+export function compareMoves(
+  before: readonly RecordedMove[],
+  after: readonly RecordedMove[],
+  startedAt: Date,
+): TrialResult {
   const pairs = sameKind(before, after);
   const base: TrialResult = {
     startedAt: startedAt.toISOString(),
@@ -69,7 +73,9 @@ export function compareMoves(before: readonly RecordedMove[], after: readonly Re
   const rms = compare((move) => move.rmsError, true);
   const saturated = compare((move) => move.saturatedPct, false);
   const changed = Math.abs(peak.after / peak.before - 1) >= LEAST_CHANGE;
-  const worse = (changed && peak.after > peak.before && peak.pWorse < LEVEL) || (saturated.pWorse < LEVEL && saturated.after > saturated.before + 1);
+  const worse =
+    (changed && peak.after > peak.before && peak.pWorse < LEVEL) ||
+    (saturated.pWorse < LEVEL && saturated.after > saturated.before + 1);
   const better = changed && peak.after < peak.before && peak.pBetter < LEVEL;
   const verdict = worse ? 'worse' : better ? 'better' : 'no different';
   const mm = (value: number): string => (value < 0.1 ? value.toFixed(3) : value.toFixed(2));
@@ -89,7 +95,10 @@ interface Matched {
   kind: RecordedMove[];
 }
 
-function sameKind(before: readonly RecordedMove[], after: readonly RecordedMove[]): { before: Matched[]; after: Matched[] } {
+function sameKind(
+  before: readonly RecordedMove[],
+  after: readonly RecordedMove[],
+): { before: Matched[]; after: Matched[] } {
   const alike = (a: RecordedMove, b: RecordedMove): boolean =>
     Math.sign(a.distance) === Math.sign(b.distance) &&
     close(Math.abs(a.distance), Math.abs(b.distance)) &&
@@ -126,7 +135,7 @@ export function rankTest(a: readonly number[], b: readonly number[]): { pGreater
   const n = all.length;
   let rankSum = 0;
   let ties = 0;
-  for (let i = 0; i < n; ) {
+  for (let i = 0; i < n;) {
     let j = i;
     while (j < n && all[j]!.value === all[i]!.value) j++;
     const rank = (i + 1 + j) / 2;
@@ -139,13 +148,17 @@ export function rankTest(a: readonly number[], b: readonly number[]): { pGreater
   if (!(variance > 0)) return { pGreater: 1, pLess: 1 };
   const off = u - (a.length * b.length) / 2;
   const tail = (z: number): number => 1 - normal(z);
-  return { pGreater: tail((off - 0.5) / Math.sqrt(variance)), pLess: tail((-off - 0.5) / Math.sqrt(variance)) };
+  return {
+    pGreater: tail((off - 0.5) / Math.sqrt(variance)),
+    pLess: tail((-off - 0.5) / Math.sqrt(variance)),
+  };
 }
 
 /** Standard normal distribution function, Abramowitz & Stegun 26.2.17 (error below 7.5e-8). */
 function normal(z: number): number {
   if (z < 0) return 1 - normal(-z);
   const t = 1 / (1 + 0.2316419 * z);
-  const polynomial = t * (0.31938153 + t * (-0.356563782 + t * (1.781477937 + t * (-1.821255978 + t * 1.330274429))));
+  const polynomial =
+    t * (0.31938153 + t * (-0.356563782 + t * (1.781477937 + t * (-1.821255978 + t * 1.330274429))));
   return 1 - (Math.exp((-z * z) / 2) / Math.sqrt(2 * Math.PI)) * polynomial;
 }

@@ -1,4 +1,9 @@
-import { createDriftChart, updateDriftChart, type DriftChart, type DriftDecision } from '../drift/drift-chart.js';
+import {
+  createDriftChart,
+  updateDriftChart,
+  type DriftChart,
+  type DriftDecision,
+} from '../drift/drift-chart.js';
 import type { Baseline, Tolerances } from '../fleet/axis.entity.js';
 import { OnlineIdentifier } from '../identification/online-identifier.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';

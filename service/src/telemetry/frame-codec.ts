@@ -145,7 +145,10 @@ export function decodeFrame(message: Uint8Array): Frame {
   const bytes = message.byteOffset % 4 === 0 ? message : Uint8Array.from(message);
   const view = new DataView(bytes.buffer, bytes.byteOffset, bytes.byteLength);
   if (view.getUint32(0, true) !== FRAME_MAGIC)
-    throw new FrameError('wrong-magic', `magic 0x${view.getUint32(0, true).toString(16)}, expected 0x31545750`);
+    throw new FrameError(
+      'wrong-magic',
+      `magic 0x${view.getUint32(0, true).toString(16)}, expected 0x31545750`,
+    );
   if (view.getUint16(4, true) !== FRAME_VERSION)
     throw new FrameError('wrong-version', `version ${view.getUint16(4, true)}, this service reads version 1`);
   const sequence = Number(view.getBigUint64(8, true));
@@ -163,10 +166,16 @@ export function decodeFrame(message: Uint8Array): Frame {
       throw new FrameError('truncated', `block ${b} announces ${n} samples, the message ends before them`);
     const sampleTimeUs = view.getUint32(at + 8, true);
     if (sampleTimeUs === 0 || sampleTimeUs > MAX_SAMPLE_TIME_US)
-      throw new FrameError('bad-sample-time', `block ${b}: sample time ${sampleTimeUs} µs is not in 1 … 10 000 000`);
+      throw new FrameError(
+        'bad-sample-time',
+        `block ${b}: sample time ${sampleTimeUs} µs is not in 1 … 10 000 000`,
+      );
     const startUs = Number(view.getBigInt64(at + 16, true));
     if (!Number.isSafeInteger(startUs) || startUs < 0)
-      throw new FrameError('bad-time', `block ${b}: first sample time ${startUs} µs is not a time since 1970`);
+      throw new FrameError(
+        'bad-time',
+        `block ${b}: first sample time ${startUs} µs is not a time since 1970`,
+      );
     const flags = view.getUint16(at + 2, true);
     const axisIndex = view.getUint16(at, true);
     at += BLOCK_HEADER_BYTES;
@@ -174,7 +183,10 @@ export function decodeFrame(message: Uint8Array): Frame {
     const output = new Int16Array(bytes.buffer, offset + 8 * n, n);
     for (let i = 0; i < n; i++)
       if (output[i]! > 10_000 || output[i]! < -10_000)
-        throw new FrameError('bad-output', `block ${b}, sample ${i}: output ${output[i]! / 100} % is outside ±100 %`);
+        throw new FrameError(
+          'bad-output',
+          `block ${b}, sample ${i}: output ${output[i]! / 100} % is outside ±100 %`,
+        );
     blocks[b] = {
       axisIndex,
       motionEnabled: (flags & FLAG_MOTION_ENABLED) !== 0,

@@ -33,7 +33,10 @@ const framesTotal = new Counter({
   labelNames: ['outcome'],
 });
 const samplesTotal = new Counter({ name: 'polewright_samples_total', help: 'Samples taken in' });
-const gapsTotal = new Counter({ name: 'polewright_sequence_gaps_total', help: 'Gaps in a gateway’s sequence' });
+const gapsTotal = new Counter({
+  name: 'polewright_sequence_gaps_total',
+  help: 'Gaps in a gateway’s sequence',
+});
 
 /** Takes frames in, runs the axes' pipelines, and makes what they found durable at a steady beat. */
 @Injectable()
@@ -117,7 +120,11 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       const pipelines = frame.blocks.map((block, b) => {
         const axisId = served[block.axisIndex];
         const pipeline = axisId === undefined ? undefined : this.pipelines.get(axisId);
-        if (!pipeline) return refuse('unknown-axis', `block ${b} names axis index ${block.axisIndex}, which hello did not give`);
+        if (!pipeline)
+          return refuse(
+            'unknown-axis',
+            `block ${b} names axis index ${block.axisIndex}, which hello did not give`,
+          );
         if (block.sampleTimeUs !== Math.round(pipeline.facts.sampleTime * 1e6))
           return refuse(
             'wrong-sample-time',
@@ -148,7 +155,8 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       samplesTotal.inc(samples);
       return { received: sequence };
     } catch (error) {
-      const reason = error instanceof FrameError || error instanceof Refusal ? error.reason : 'internal-error';
+      const reason =
+        error instanceof FrameError || error instanceof Refusal ? error.reason : 'internal-error';
       if (reason === 'internal-error') this.log.error('A frame could not be taken', (error as Error).stack);
       framesTotal.inc({ outcome: reason });
       return { rejected: `${reason}: ${(error as Error).message}`, sequence };
@@ -163,7 +171,9 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       this.failedCheckpoints = 0;
     } catch (error) {
       this.failedCheckpoints++;
-      this.log.error(`Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`);
+      this.log.error(
+        `Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`,
+      );
       return;
     }
     for (const { axisId, seconds, moves, estimates } of written) {

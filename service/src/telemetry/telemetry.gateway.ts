@@ -45,7 +45,10 @@ const refusedConnections = new Counter({
   name: 'polewright_gateway_refused_total',
   help: 'Telemetry connections refused for their token',
 });
-const connectedGateways = new Gauge({ name: 'polewright_gateways_connected', help: 'Gateways connected now' });
+const connectedGateways = new Gauge({
+  name: 'polewright_gateways_connected',
+  help: 'Gateways connected now',
+});
 
 const MAX_AXES = 65_535;
 
@@ -85,7 +88,8 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
 
   private async admit(socket: GatewaySocket): Promise<void> {
     const { token } = socket.handshake.auth as { token?: unknown };
-    if (typeof token !== 'string' || token.length === 0) throw new Error('a gateway token is needed: auth: { token }');
+    if (typeof token !== 'string' || token.length === 0)
+      throw new Error('a gateway token is needed: auth: { token }');
     const gateway = await this.dataSource
       .getRepository(Gateway)
       .findOneBy({ tokenHash: createHash('sha256').update(token).digest('hex') });
@@ -146,7 +150,11 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
     this.intake.startEpoch(progress, epoch);
     progress.lastSeenAt = Date.now();
     socket.data.served = served;
-    return { axes: answers, durableSequence: progress.durable, unknown: wanted.filter((tag) => !known.has(tag)) };
+    return {
+      axes: answers,
+      durableSequence: progress.durable,
+      unknown: wanted.filter((tag) => !known.has(tag)),
+    };
   }
 
   @SubscribeMessage('frames')
@@ -155,8 +163,15 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
   }
 
   @SubscribeMessage('gains-applied')
-  gainsApplied(@ConnectedSocket() socket: GatewaySocket, @MessageBody() body: unknown): { received: true } | { rejected: string } {
-    const { axisId, revision, gains } = (body ?? {}) as { axisId?: unknown; revision?: unknown; gains?: Partial<Gains> };
+  gainsApplied(
+    @ConnectedSocket() socket: GatewaySocket,
+    @MessageBody() body: unknown,
+  ): { received: true } | { rejected: string } {
+    const { axisId, revision, gains } = (body ?? {}) as {
+      axisId?: unknown;
+      revision?: unknown;
+      gains?: Partial<Gains>;
+    };
     if (typeof axisId !== 'number' || !socket.data.served.includes(axisId))
       return { rejected: 'unknown-axis: axisId is none of those that hello answered' };
     if (typeof revision !== 'number') return { rejected: 'bad-gains: revision must be a number' };

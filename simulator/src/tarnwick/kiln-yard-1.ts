@@ -1,4 +1,4 @@
-import type { TarnwickAxis } from '../tarnwick.js';
+import type { TarnwickAxis } from './tarnwick-axis.js';
 
 /** The axes of gateway kiln-yard-1: the kiln and the transfer gantries. */
 export const KILN_YARD_1: readonly TarnwickAxis[] = [

@@ -1,4 +1,4 @@
-import type { TarnwickAxis } from '../tarnwick.js';
+import type { TarnwickAxis } from './tarnwick-axis.js';
 
 /** The axes of gateway tile-hall-1: the presses and the first cutter. */
 export const TILE_HALL_1: readonly TarnwickAxis[] = [

@@ -1,4 +1,4 @@
-import type { TarnwickAxis } from '../tarnwick.js';
+import type { TarnwickAxis } from './tarnwick-axis.js';
 
 /** The axes of gateway tile-hall-2: the second cutter, the glaze line and the stacker. */
 export const TILE_HALL_2: readonly TarnwickAxis[] = [

@@ -37,7 +37,9 @@ export const client = createClient<paths>({ baseUrl: window.location.origin, fet
 client.use(authorization);
 
 /** The answer of a request, or a `Problem`. */
-export async function answer<T>(request: Promise<{ data?: T; error?: unknown; response: Response }>): Promise<T> {
+export async function answer<T>(
+  request: Promise<{ data?: T; error?: unknown; response: Response }>,
+): Promise<T> {
   const { data, error, response } = await request;
   if (!response.ok) throw new Problem(response.status, typeof error === 'object' && error ? error : {});
   return data as T;

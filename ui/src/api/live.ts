@@ -11,7 +11,12 @@ export interface LiveTile {
   id: number;
   state: AxisDto['state'];
   stateReason: string;
-  indicators: { peakFollowingError: number | null; rmsFollowingError: number | null; saturatedPct: number | null; at: string } | null;
+  indicators: {
+    peakFollowingError: number | null;
+    rmsFollowingError: number | null;
+    saturatedPct: number | null;
+    at: string;
+  } | null;
   estimate: Pick<Schemas['AxisEstimateDto'], 'gain' | 'pole' | 'lnCovariance'> | null;
   seconds: StripPoint[];
 }

@@ -24,5 +24,6 @@ export type Action = keyof typeof POLICY;
 export const may = (user: SignedInUser | null, action: Action, siteId?: number): boolean =>
   !!user?.roles.some(
     (entry) =>
-      (siteId === undefined || entry.siteId === siteId) && (POLICY[action] as readonly Role[]).includes(entry.role),
+      (siteId === undefined || entry.siteId === siteId) &&
+      (POLICY[action] as readonly Role[]).includes(entry.role),
   );

@@ -27,7 +27,8 @@ export function onSession(listener: () => void): () => void {
   return () => listeners.delete(listener);
 }
 
-export const signedIn = ({ accessToken: token, user }: SignInAnswer): void => set({ status: 'signed-in', user }, token);
+export const signedIn = ({ accessToken: token, user }: SignInAnswer): void =>
+  set({ status: 'signed-in', user }, token);
 export const signedOut = (): void => set({ status: 'signed-out', user: null }, null);
 
 let refreshing: Promise<boolean> | null = null;

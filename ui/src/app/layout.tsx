@@ -132,7 +132,11 @@ function Account() {
         </Menu.Item>
         <Menu.Label>Scheme</Menu.Label>
         {(['light', 'dark', 'auto'] as const).map((scheme) => (
-          <Menu.Item key={scheme} onClick={() => setColorScheme(scheme)} aria-current={colorScheme === scheme}>
+          <Menu.Item
+            key={scheme}
+            onClick={() => setColorScheme(scheme)}
+            aria-current={colorScheme === scheme}
+          >
             {{ light: 'Light paper', dark: 'Dark', auto: 'As the system' }[scheme]}
             {colorScheme === scheme && ' ·'}
           </Menu.Item>

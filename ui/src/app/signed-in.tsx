@@ -5,7 +5,8 @@ import { useSession } from '../api/use-session';
 export function SignedIn() {
   const { status } = useSession();
   const location = useLocation();
-  if (status === 'opening') return <div aria-busy="true" style={{ height: '100dvh', background: 'var(--ground)' }} />;
+  if (status === 'opening')
+    return <div aria-busy="true" style={{ height: '100dvh', background: 'var(--ground)' }} />;
   if (status === 'signed-out')
     return <Navigate to="/sign-in" replace state={{ from: location.pathname + location.search }} />;
   return <Outlet />;

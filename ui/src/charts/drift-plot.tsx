@@ -38,10 +38,20 @@ export function DriftPlot({
   const py = point ? y(point.poleRatio) : 0;
   const beyond = point !== null && (px < 3 || py < 3 || px > size - 3 || py > size - 3);
   const path = [...trail, ...(point ? [point] : [])]
-    .map(({ gainRatio, poleRatio }, i) => `${i ? 'L' : 'M'}${x(gainRatio).toFixed(1)} ${y(poleRatio).toFixed(1)}`)
+    .map(
+      ({ gainRatio, poleRatio }, i) =>
+        `${i ? 'L' : 'M'}${x(gainRatio).toFixed(1)} ${y(poleRatio).toFixed(1)}`,
+    )
     .join('');
   return (
-    <svg width={size} height={size} viewBox={`0 0 ${size} ${size}`} style={{ flex: 'none' }} role="img" aria-label={label(point)}>
+    <svg
+      width={size}
+      height={size}
+      viewBox={`0 0 ${size} ${size}`}
+      style={{ flex: 'none' }}
+      role="img"
+      aria-label={label(point)}
+    >
       <clipPath id={`frame-${size}`}>
         <rect width={size} height={size} />
       </clipPath>
@@ -111,6 +121,7 @@ function Ellipse({
 
 function label(point: DriftPoint | null): string {
   if (!point) return 'Drift plot: nothing known yet';
-  const pct = (ratio: number): string => `${ratio < 1 ? 'minus' : 'plus'} ${Math.abs((ratio - 1) * 100).toFixed(0)} %`;
+  const pct = (ratio: number): string =>
+    `${ratio < 1 ? 'minus' : 'plus'} ${Math.abs((ratio - 1) * 100).toFixed(0)} %`;
   return `Drift plot: gain ${pct(point.gainRatio)}, pole ${pct(point.poleRatio)} against baseline`;
 }

@@ -52,7 +52,10 @@ export function HistoryChart({
   const times = points.map((point) => Date.parse(point.at));
   const from = times[0]!;
   const to = times.at(-1)!;
-  const bounds = baseline !== null && tolerancePct ? [baseline * (1 - tolerancePct / 100), baseline * (1 + tolerancePct / 100)] : [];
+  const bounds =
+    baseline !== null && tolerancePct
+      ? [baseline * (1 - tolerancePct / 100), baseline * (1 + tolerancePct / 100)]
+      : [];
   // Wide intervals of single windows must not flatten everything else: the scale follows the values.
   const values = points.map(({ value }) => value);
   const low = Math.min(...values, ...bounds, baseline ?? Infinity);
@@ -86,9 +89,12 @@ export function HistoryChart({
   const move = (index: number): void => setAt(Math.min(points.length - 1, Math.max(0, index)));
   const onPointer = (event: PointerEvent<SVGSVGElement>): void => {
     const box = event.currentTarget.getBoundingClientRect();
-    const t = from + (((event.clientX - box.left) / box.width) * WIDTH - LEFT) * ((to - from) / (WIDTH - LEFT - RIGHT));
+    const t =
+      from +
+      (((event.clientX - box.left) / box.width) * WIDTH - LEFT) * ((to - from) / (WIDTH - LEFT - RIGHT));
     let nearest = 0;
-    for (let i = 1; i < times.length; i++) if (Math.abs(times[i]! - t) < Math.abs(times[nearest]! - t)) nearest = i;
+    for (let i = 1; i < times.length; i++)
+      if (Math.abs(times[i]! - t) < Math.abs(times[nearest]! - t)) nearest = i;
     move(nearest);
   };
   const onKey = (event: KeyboardEvent): void => {
@@ -133,7 +139,12 @@ export function HistoryChart({
           </g>
         ))}
         <path d={band} fill="var(--ink)" fillOpacity=".14" />
-        <path d={line(({ limitHigh }) => limitHigh)} fill="none" stroke="var(--drift)" strokeDasharray="6 3" />
+        <path
+          d={line(({ limitHigh }) => limitHigh)}
+          fill="none"
+          stroke="var(--drift)"
+          strokeDasharray="6 3"
+        />
         <path d={line(({ limitLow }) => limitLow)} fill="none" stroke="var(--drift)" strokeDasharray="6 3" />
         <path d={line(({ ewma }) => ewma)} fill="none" stroke="var(--drift)" strokeWidth="1.2" />
         <path d={line(({ value }) => value)} fill="none" stroke="var(--ink)" strokeWidth="1.8" />
@@ -152,11 +163,27 @@ export function HistoryChart({
           </g>
         )}
         {[from, (from + to) / 2, to].map((t, i) => (
-          <text key={t} x={x(t)} y={height - 7} fontSize="12" fill="var(--soft)" textAnchor={(['start', 'middle', 'end'] as const)[i]}>
+          <text
+            key={t}
+            x={x(t)}
+            y={height - 7}
+            fontSize="12"
+            fill="var(--soft)"
+            textAnchor={(['start', 'middle', 'end'] as const)[i]}
+          >
             {dayjs(t).tz(timeZone).format(format)}
           </text>
         ))}
-        {at !== null && <circle cx={x(times[at]!)} cy={y(points[at]!.value)} r="4" fill="none" stroke="var(--press)" strokeWidth="2" />}
+        {at !== null && (
+          <circle
+            cx={x(times[at]!)}
+            cy={y(points[at]!.value)}
+            r="4"
+            fill="none"
+            stroke="var(--press)"
+            strokeWidth="2"
+          />
+        )}
       </svg>
       <figcaption className="small soft" aria-live="polite" style={{ minHeight: 19 }}>
         {read

@@ -7,7 +7,8 @@ import type { LiveTrace } from '../api/live';
 const SPAN = 20;
 const MOST_POINTS = 6_000;
 
-const css = (name: string): string => getComputedStyle(document.documentElement).getPropertyValue(name).trim();
+const css = (name: string): string =>
+  getComputedStyle(document.documentElement).getPropertyValue(name).trim();
 const FONT = "12px 'Work Sans Variable', sans-serif";
 
 type Rows = [time: number[], target: number[], position: number[], error: number[], output: number[]];
@@ -26,7 +27,10 @@ export class TraceStore {
       e.push(target[i]! - position[i]!);
       u.push(output[i]!);
     }
-    const drop = Math.max(t.length - MOST_POINTS, t.findIndex((at) => at > t.at(-1)! - SPAN));
+    const drop = Math.max(
+      t.length - MOST_POINTS,
+      t.findIndex((at) => at > t.at(-1)! - SPAN),
+    );
     if (drop > 0) for (const row of this.rows) row.splice(0, drop);
     for (const listener of this.listeners) listener();
   }
@@ -40,8 +44,22 @@ export class TraceStore {
 export function LiveTraceChart({ store, timeZone }: { store: TraceStore; timeZone: string }) {
   return (
     <div style={{ display: 'grid', gap: 4 }}>
-      <Plot store={store} timeZone={timeZone} label="position, mm" rows={[1, 2]} names={['target', 'position']} height={170} />
-      <Plot store={store} timeZone={timeZone} label="following error, mm" rows={[3]} names={['error']} height={120} />
+      <Plot
+        store={store}
+        timeZone={timeZone}
+        label="position, mm"
+        rows={[1, 2]}
+        names={['target', 'position']}
+        height={170}
+      />
+      <Plot
+        store={store}
+        timeZone={timeZone}
+        label="following error, mm"
+        rows={[3]}
+        names={['error']}
+        height={120}
+      />
       <Plot store={store} timeZone={timeZone} label="output, %" rows={[4]} names={['output']} height={120} />
     </div>
   );
@@ -70,7 +88,12 @@ function Plot({
     const element = holder.current!;
     const shown = rowKey.split(',').map(Number);
     const shownNames = nameKey.split(',');
-    const axis = { stroke: css('--soft'), font: FONT, grid: { stroke: css('--rule'), width: 0.6 }, ticks: { stroke: css('--rule') } };
+    const axis = {
+      stroke: css('--soft'),
+      font: FONT,
+      grid: { stroke: css('--rule'), width: 0.6 },
+      ticks: { stroke: css('--rule') },
+    };
     const clock = (at: number): string => new Date(at * 1000).toLocaleTimeString('en-GB', { timeZone });
     const plot = new uPlot(
       {
@@ -82,7 +105,7 @@ function Plot({
         tzDate: (at) => uPlot.tzDate(new Date(at * 1000), timeZone),
         axes: [
           { ...axis, values: (_, ticks) => ticks.map(clock) },
-          { ...axis, size: 62 },
+          { ...axis, size: 62, space: 26 },
         ],
         scales: { x: { range: (_, __, max) => [max - SPAN, max] } },
         series: [

@@ -15,14 +15,29 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
   const scale = (WIDTH - 60) / reach;
   const x = (re: number): number => WIDTH - 36 + re * scale;
   const y = (im: number): number => HEIGHT / 2 - im * scale;
-  const step = [1, 2, 5, 10].map((m) => m * 10 ** Math.floor(Math.log10(reach / 4))).find((s) => reach / s <= 5)!;
+  const step = [1, 2, 5, 10]
+    .map((m) => m * 10 ** Math.floor(Math.log10(reach / 4)))
+    .find((s) => reach / s <= 5)!;
   const marks = Array.from({ length: Math.floor(reach / step) }, (_, i) => -(i + 1) * step);
   return (
     <figure style={{ margin: 0 }}>
-      <svg width="100%" viewBox={`0 0 ${WIDTH} ${HEIGHT}`} role="img" aria-label={sets.map(wordsOf).join('; ')} style={{ maxWidth: 420 }}>
+      <svg
+        width="100%"
+        viewBox={`0 0 ${WIDTH} ${HEIGHT}`}
+        role="img"
+        aria-label={sets.map(wordsOf).join('; ')}
+        style={{ maxWidth: 420 }}
+      >
         <path d={`M8 ${HEIGHT / 2}H${WIDTH - 8}M${x(0)} 8V${HEIGHT - 8}`} stroke="var(--rule)" />
         {marks.map((mark) => (
-          <text key={mark} x={x(mark)} y={HEIGHT / 2 + 16} fontSize="12" textAnchor="middle" fill="var(--soft)">
+          <text
+            key={mark}
+            x={x(mark)}
+            y={HEIGHT / 2 + 16}
+            fontSize="12"
+            textAnchor="middle"
+            fill="var(--soft)"
+          >
             {String(Number(mark.toPrecision(3))).replace('-', '−')}
           </text>
         ))}
@@ -35,7 +50,13 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
                 strokeWidth={faint ? 1.6 : 2.2}
               />
               {times > 1 && (
-                <text x={x(re)} y={y(im) - 10} fontSize="12" textAnchor="middle" fill={faint ? 'var(--soft)' : 'var(--ink)'}>
+                <text
+                  x={x(re)}
+                  y={y(im) - 10}
+                  fontSize="12"
+                  textAnchor="middle"
+                  fill={faint ? 'var(--soft)' : 'var(--ink)'}
+                >
                   {times} {label}
                 </text>
               )}
@@ -44,7 +65,8 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
         )}
       </svg>
       <figcaption className="small soft">
-        {sets.map(({ label, faint }) => `${label} ${faint ? 'grey' : 'black'}`).join(', ')}; rad/s, equal scales
+        {sets.map(({ label, faint }) => `${label} ${faint ? 'grey' : 'black'}`).join(', ')}; rad/s, equal
+        scales
       </figcaption>
     </figure>
   );

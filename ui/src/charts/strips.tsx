@@ -27,7 +27,13 @@ export function ErrorStrip({ points, colour, tolerance, height = 22 }: StripProp
     d += `M${x.toFixed(1)} ${(middle - half).toFixed(1)}h${step.toFixed(2)}V${(middle + half).toFixed(1)}h${(-step).toFixed(2)}Z`;
   }
   return (
-    <svg width="100%" height={height} viewBox={`0 0 ${WIDTH} ${height}`} preserveAspectRatio="none" aria-hidden>
+    <svg
+      width="100%"
+      height={height}
+      viewBox={`0 0 ${WIDTH} ${height}`}
+      preserveAspectRatio="none"
+      aria-hidden
+    >
       <path d={d} fill={colour} fillOpacity=".75" />
       <path
         d={`M0 ${middle - reach}H${WIDTH}M0 ${middle + reach}H${WIDTH}`}
@@ -57,7 +63,13 @@ export function OutputStrip({ points, colour, height = 20 }: StripProps) {
     if (atLimit > 0) saturated += bar(Math.max(0.12, atLimit / 100));
   }
   return (
-    <svg width="100%" height={height} viewBox={`0 0 ${WIDTH} ${height}`} preserveAspectRatio="none" aria-hidden>
+    <svg
+      width="100%"
+      height={height}
+      viewBox={`0 0 ${WIDTH} ${height}`}
+      preserveAspectRatio="none"
+      aria-hidden
+    >
       <path d={peaks} fill="var(--soft)" fillOpacity=".32" />
       <path d={saturated} fill={colour} />
       <path d={`M0 ${height - 0.5}H${WIDTH}`} stroke="var(--rule)" vectorEffect="non-scaling-stroke" />

@@ -16,7 +16,15 @@ export function Card({
 }) {
   return (
     <section className="card" {...(id && { id })}>
-      <div style={{ display: 'flex', justifyContent: 'space-between', gap: 12, alignItems: 'baseline', flexWrap: 'wrap' }}>
+      <div
+        style={{
+          display: 'flex',
+          justifyContent: 'space-between',
+          gap: 12,
+          alignItems: 'baseline',
+          flexWrap: 'wrap',
+        }}
+      >
         <h2>{title}</h2>
         {aside && <div className="small soft">{aside}</div>}
       </div>

@@ -14,8 +14,8 @@ export function Caution({ children }: { children?: ReactNode }) {
       }}
     >
       <strong>New gains can move this axis unexpectedly.</strong> Keep people clear. Follow the site’s
-      lockout/tagout and machine-safety procedures and local codes; only authorised and competent people, reduced
-      speed first, the emergency stop in reach. Polewright is not a safety function. {children}
+      lockout/tagout and machine-safety procedures and local codes; only authorised and competent people,
+      reduced speed first, the emergency stop in reach. Polewright is not a safety function. {children}
     </div>
   );
 }

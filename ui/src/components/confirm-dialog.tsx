@@ -26,7 +26,13 @@ export function ConfirmDialog({
   onClose: () => void;
 }) {
   return (
-    <Modal opened={opened} onClose={onClose} title={title} closeButtonProps={{ 'aria-label': 'Close' }} centered>
+    <Modal
+      opened={opened}
+      onClose={onClose}
+      title={title}
+      closeButtonProps={{ 'aria-label': 'Close' }}
+      centered
+    >
       <form
         onSubmit={(event) => {
           event.preventDefault();
@@ -43,7 +49,12 @@ export function ConfirmDialog({
           <Button variant="default" onClick={onClose}>
             Cancel
           </Button>
-          <Button type="submit" loading={loading} disabled={disabled} {...(danger && { color: 'var(--out)' })}>
+          <Button
+            type="submit"
+            loading={loading}
+            disabled={disabled}
+            {...(danger && { color: 'var(--out)' })}
+          >
             {confirmLabel}
           </Button>
         </Group>

@@ -35,7 +35,9 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
     });
   const top = 20 + rows.length * 17;
   const height = top + 74;
-  const marks = [1, 2, 5].flatMap((m) => [0.1, 1, 10, 100].map((s) => m * s)).filter((v) => v > from && v < to);
+  const marks = [1, 2, 5]
+    .flatMap((m) => [0.1, 1, 10, 100].map((s) => m * s))
+    .filter((v) => v > from && v < to);
   return (
     <figure style={{ margin: 0 }}>
       <svg width="100%" viewBox={`0 0 ${WIDTH} ${height}`} role="img" aria-label={rulerText(binding)}>
@@ -53,7 +55,11 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
           const anchor = x(at) < 90 ? 'start' : x(at) > WIDTH - 90 ? 'end' : 'middle';
           return (
             <g key={name} fill={binds ? 'var(--ink)' : 'var(--soft)'} stroke="none">
-              <path d={`M${x(at)} ${y + 4}V${top + 4}`} stroke={binds ? 'var(--ink)' : 'var(--soft)'} strokeWidth="1.4" />
+              <path
+                d={`M${x(at)} ${y + 4}V${top + 4}`}
+                stroke={binds ? 'var(--ink)' : 'var(--soft)'}
+                strokeWidth="1.4"
+              />
               <text x={x(at)} y={y} fontSize="12" textAnchor={anchor} fontWeight={binds ? 600 : 400}>
                 {LIMIT_WORDS[name]}
                 {binds && ' binds'}
@@ -64,7 +70,14 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
         {lambda !== null && (
           <>
             <path d={`M${x(lambda)} ${top - 12}V${top + 12}`} stroke="var(--ink)" strokeWidth="3" />
-            <text x={x(lambda)} y={top + 30} fontSize="12.5" fontWeight="600" textAnchor="middle" fill="var(--ink)">
+            <text
+              x={x(lambda)}
+              y={top + 30}
+              fontSize="12.5"
+              fontWeight="600"
+              textAnchor="middle"
+              fill="var(--ink)"
+            >
               {kept ? 'kept at ' : ''}
               {lambda.toFixed(1)}
             </text>

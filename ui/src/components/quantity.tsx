@@ -11,11 +11,23 @@ export function significant(value: number, digits = 3): string {
 }
 
 /** A value with its half interval and unit: 2.60 ± 0.07 rad/s. */
-export function Quantity({ value, low, high, unit }: { value: number; low?: number; high?: number; unit: string }) {
+export function Quantity({
+  value,
+  low,
+  high,
+  unit,
+}: {
+  value: number;
+  low?: number;
+  high?: number;
+  unit: string;
+}) {
   const half = low !== undefined && high !== undefined ? (high - low) / 2 : null;
   return (
     <span className="nowrap">
-      {half === null ? significant(value) : `${value.toFixed(decimalsFor(half))} ± ${half.toFixed(decimalsFor(half))}`}{' '}
+      {half === null
+        ? significant(value)
+        : `${value.toFixed(decimalsFor(half))} ± ${half.toFixed(decimalsFor(half))}`}{' '}
       <span className="soft small">{unit}</span>
     </span>
   );

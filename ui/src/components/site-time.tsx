@@ -18,13 +18,26 @@ function everyTenSeconds(listener: () => void): () => void {
 }
 
 /** A time on the site's own clock; the exact one on hover. `relative` says how long ago and keeps counting. */
-export function SiteTime({ at, timeZone, relative = false }: { at: string | Date; timeZone: string; relative?: boolean }) {
+export function SiteTime({
+  at,
+  timeZone,
+  relative = false,
+}: {
+  at: string | Date;
+  timeZone: string;
+  relative?: boolean;
+}) {
   const present = useSyncExternalStore(everyTenSeconds, () => now);
   const local = dayjs(at).tz(timeZone);
   const today = local.isSame(dayjs(present).tz(timeZone), 'day');
   return (
-    <time dateTime={dayjs(at).toISOString()} title={`${local.format('ddd D MMM YYYY, HH:mm:ss')} (${timeZone})`}>
-      {relative ? local.from(Math.max(present, local.valueOf())) : local.format(today ? 'HH:mm' : 'D MMM, HH:mm')}
+    <time
+      dateTime={dayjs(at).toISOString()}
+      title={`${local.format('ddd D MMM YYYY, HH:mm:ss')} (${timeZone})`}
+    >
+      {relative
+        ? local.from(Math.max(present, local.valueOf()))
+        : local.format(today ? 'HH:mm' : 'D MMM, HH:mm')}
     </time>
   );
 }

@@ -25,7 +25,14 @@ export function StateEdge({ state }: { state: AxisState }) {
       viewBox="0 0 100 16"
       preserveAspectRatio="none"
       aria-hidden
-      style={{ position: 'absolute', left: -1, top: -8, width: 'calc(100% + 2px)', height: 16, overflow: 'visible' }}
+      style={{
+        position: 'absolute',
+        left: -1,
+        top: -8,
+        width: 'calc(100% + 2px)',
+        height: 16,
+        overflow: 'visible',
+      }}
     >
       {state === 'in-tune' && line(0, 8, 100, 8, 1.6)}
       {state === 'drifting' && (

@@ -12,8 +12,20 @@ const PATHS: Record<AxisState, { d: string; width: number; dash?: string }> = {
 export function StateGlyph({ state, size = 18 }: { state: AxisState; size?: number }) {
   const { d, width, dash } = PATHS[state];
   return (
-    <svg width={size} height={(size * 14) / 18} viewBox="0 0 18 14" aria-hidden style={{ verticalAlign: '-2px', flex: 'none' }}>
-      <path d={d} stroke={STATE_COLOUR[state]} strokeWidth={width} fill="none" {...(dash && { strokeDasharray: dash })} />
+    <svg
+      width={size}
+      height={(size * 14) / 18}
+      viewBox="0 0 18 14"
+      aria-hidden
+      style={{ verticalAlign: '-2px', flex: 'none' }}
+    >
+      <path
+        d={d}
+        stroke={STATE_COLOUR[state]}
+        strokeWidth={width}
+        fill="none"
+        {...(dash && { strokeDasharray: dash })}
+      />
     </svg>
   );
 }

@@ -1,6 +1,17 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
-import { IsDate, IsIn, IsInt, IsNotEmpty, IsNumber, IsOptional, IsString, Max, MaxLength, Min } from 'class-validator';
+import {
+  IsDate,
+  IsIn,
+  IsInt,
+  IsNotEmpty,
+  IsNumber,
+  IsOptional,
+  IsString,
+  Max,
+  MaxLength,
+  Min,
+} from 'class-validator';
 import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
 import { ALERT_STATES, PRIORITIES, type Alert, type AlertState, type Priority } from '../alert.entity.js';
 import { RULE, RULES, RULE_TITLES, type RuleName } from '../rules.js';
@@ -140,7 +151,11 @@ export class AlertDto {
 export class AlertPageDto extends PageOf(AlertDto, 'AlertPageDto') {}
 
 export class AlertQuery extends PageQuery {
-  @ApiPropertyOptional({ enum: ['open', ...ALERT_STATES], default: 'open', description: '"open" is everything that is not over' })
+  @ApiPropertyOptional({
+    enum: ['open', ...ALERT_STATES],
+    default: 'open',
+    description: '"open" is everything that is not over',
+  })
   @IsOptional()
   @IsIn(['open', ...ALERT_STATES])
   state: AlertState | 'open' = 'open';

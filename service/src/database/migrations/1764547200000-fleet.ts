@@ -239,7 +239,24 @@ const UP = [
   `CREATE INDEX "IDX_47f11aa2f75991f3295df3a231" ON "proposal_event" ("proposalId")`,
 ];
 
-const TABLES = ['site', 'machine', 'gateway', 'axis', 'tuning_revision', 'indicator_second', 'indicator_minute', 'indicator_hour', 'move_record', 'plant_estimate_row', 'axis_checkpoint', 'alert_rule', 'alert', 'alert_event', 'proposal', 'proposal_event'];
+const TABLES = [
+  'site',
+  'machine',
+  'gateway',
+  'axis',
+  'tuning_revision',
+  'indicator_second',
+  'indicator_minute',
+  'indicator_hour',
+  'move_record',
+  'plant_estimate_row',
+  'axis_checkpoint',
+  'alert_rule',
+  'alert',
+  'alert_event',
+  'proposal',
+  'proposal_event',
+];
 
 /** Sites, machines, gateways, axes, tunings, what their samples showed, alerts and proposals. */
 export class Fleet1764547200000 implements MigrationInterface {

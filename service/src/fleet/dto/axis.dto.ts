@@ -167,7 +167,9 @@ export class CreateAxisDto {
   @Type(() => GainsDto)
   gains?: GainsDto;
 
-  @ApiPropertyOptional({ description: 'Plant at commissioning; without one an engineer confirms the first usable estimate' })
+  @ApiPropertyOptional({
+    description: 'Plant at commissioning; without one an engineer confirms the first usable estimate',
+  })
   @IsOptional()
   @IsObject()
   @ValidateNested()
@@ -444,7 +446,10 @@ export class AxisDto {
   @ApiProperty({ type: MaintenanceStateDto, nullable: true })
   maintenance: MaintenanceStateDto | null;
 
-  @ApiProperty({ type: [RatioPointDto], description: 'Former estimates over baseline, oldest first, at most 24' })
+  @ApiProperty({
+    type: [RatioPointDto],
+    description: 'Former estimates over baseline, oldest first, at most 24',
+  })
   trail: RatioPointDto[];
 
   @ApiProperty({ type: [AxisAlertDto] })
@@ -494,7 +499,8 @@ export class StripDto {
   id: number;
 
   @ApiProperty({
-    description: 'Per second: [s since 1970, peak following error mm, peak output %, % of moving time at the limit]',
+    description:
+      'Per second: [s since 1970, peak following error mm, peak output %, % of moving time at the limit]',
     type: 'array',
     items: { type: 'array', items: { type: 'number' } },
   })

@@ -1,10 +1,33 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
-import { IsBoolean, IsDate, IsIn, IsInt, IsNotEmpty, IsObject, IsOptional, IsString, MaxLength, ValidateNested } from 'class-validator';
+import {
+  IsBoolean,
+  IsDate,
+  IsIn,
+  IsInt,
+  IsNotEmpty,
+  IsObject,
+  IsOptional,
+  IsString,
+  MaxLength,
+  ValidateNested,
+} from 'class-validator';
 import { LIMITS, type LimitName } from '../../control/limits.js';
-import { patternFrequency, STRUCTURES, type PolePattern, type Structure } from '../../control/pole-placement.js';
+import {
+  patternFrequency,
+  STRUCTURES,
+  type PolePattern,
+  type Structure,
+} from '../../control/pole-placement.js';
 import { PatternDto } from '../../design/dto/pattern.dto.js';
-import { AxisEstimateDto, AxisMoveDto, GainsDto, PlantDto, RatioPointDto, TolerancesDto } from '../../fleet/dto/axis.dto.js';
+import {
+  AxisEstimateDto,
+  AxisMoveDto,
+  GainsDto,
+  PlantDto,
+  RatioPointDto,
+  TolerancesDto,
+} from '../../fleet/dto/axis.dto.js';
 import type { CauseName } from '../../identification/probable-cause.js';
 import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
 import { CHECKLIST } from '../checklist.js';
@@ -14,7 +37,15 @@ import type { Possibilities } from '../review.service.js';
 import { STEPS, type Step } from '../steps.js';
 
 const LIMIT_NAMES = LIMITS.map(({ name }) => name);
-const CAUSES = ['load', 'viscous drag', 'actuating force', 'dry friction', 'offset', 'one direction', 'unclear'];
+const CAUSES = [
+  'load',
+  'viscous drag',
+  'actuating force',
+  'dry friction',
+  'offset',
+  'one direction',
+  'unclear',
+];
 
 class DecisionDto {
   @ApiProperty({ enum: ['gain', 'pole'] })
@@ -163,7 +194,11 @@ class ExpectedDto {
   @ApiProperty({ type: ExpectedMoveDto, nullable: true })
   after: ExpectedMoveDto | null;
 
-  @ApiProperty({ type: ExpectedFiguresDto, nullable: true, description: 'Worst corner of the 95 % region, with the new gains' })
+  @ApiProperty({
+    type: ExpectedFiguresDto,
+    nullable: true,
+    description: 'Worst corner of the 95 % region, with the new gains',
+  })
   worst: ExpectedFiguresDto | null;
 }
 
@@ -382,7 +417,11 @@ export class ProposalDto extends ProposalSummaryDto {
   @NullableText()
   note: string | null;
 
-  @ApiProperty({ type: NamedPersonDto, nullable: true, description: 'null while it is as the service made it' })
+  @ApiProperty({
+    type: NamedPersonDto,
+    nullable: true,
+    description: 'null while it is as the service made it',
+  })
   alteredBy: NamedPersonDto | null;
 
   @ApiProperty({ type: NamedPersonDto, nullable: true })
@@ -415,7 +454,11 @@ export class ProposalDto extends ProposalSummaryDto {
   @ApiProperty({ enum: STEPS, isArray: true, description: 'What this person may do now' })
   actions: Step[];
 
-  @ApiProperty({ type: 'object', additionalProperties: { type: 'string' }, description: 'Why not the other steps' })
+  @ApiProperty({
+    type: 'object',
+    additionalProperties: { type: 'string' },
+    description: 'Why not the other steps',
+  })
   refusals: Partial<Record<Step, string>>;
 }
 
@@ -450,8 +493,13 @@ export function summaryOf(proposal: Proposal): ProposalSummaryDto {
 }
 
 /** @param names people's names by id */
-export function proposalOf(proposal: Proposal, names: Map<number, string>, possibilities: Possibilities): ProposalDto {
-  const person = (id: number | null): NamedPersonDto | null => (id === null ? null : { id, name: names.get(id) ?? 'somebody' });
+export function proposalOf(
+  proposal: Proposal,
+  names: Map<number, string>,
+  possibilities: Possibilities,
+): ProposalDto {
+  const person = (id: number | null): NamedPersonDto | null =>
+    id === null ? null : { id, name: names.get(id) ?? 'somebody' };
   const { evidence } = proposal;
   return {
     ...summaryOf(proposal),
@@ -461,7 +509,10 @@ export function proposalOf(proposal: Proposal, names: Map<number, string>, possi
       baseline: { gain: evidence.baseline.gain, pole: evidence.baseline.pole },
       estimate: { ...evidence.estimate, at: new Date(evidence.at) },
     },
-    current: { ...proposal.current, lambda: proposal.current.pattern && patternFrequency(proposal.current.pattern) } as CurrentTuningDto,
+    current: {
+      ...proposal.current,
+      lambda: proposal.current.pattern && patternFrequency(proposal.current.pattern),
+    } as CurrentTuningDto,
     expected: proposal.expected,
     binding: proposal.binding,
     note: proposal.note,
@@ -480,7 +531,10 @@ export function proposalOf(proposal: Proposal, names: Map<number, string>, possi
 }
 
 export class ProposalQuery extends PageQuery {
-  @ApiPropertyOptional({ enum: ['open', ...PROPOSAL_STATES], description: '"open" is everything that still wants something from somebody' })
+  @ApiPropertyOptional({
+    enum: ['open', ...PROPOSAL_STATES],
+    description: '"open" is everything that still wants something from somebody',
+  })
   @IsOptional()
   @IsIn(['open', ...PROPOSAL_STATES])
   state?: ProposalState | 'open';
@@ -551,7 +605,11 @@ export class ScheduleDto {
 }
 
 export class ApplyDto {
-  @ApiProperty({ type: 'object', additionalProperties: { type: 'boolean' }, description: 'Every item of the checklist, true' })
+  @ApiProperty({
+    type: 'object',
+    additionalProperties: { type: 'boolean' },
+    description: 'Every item of the checklist, true',
+  })
   @IsObject()
   checklist: Record<string, unknown>;
 

@@ -38,7 +38,12 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
   const shelvable = acknowledgeable || alert.state === 'acknowledged';
   const allowed = may(user, 'alert.acknowledge', alert.siteId);
   return (
-    <article className={classes.card} style={{ background: STATE_TINT[edge] }} data-alert={alert.id} data-state={alert.state}>
+    <article
+      className={classes.card}
+      style={{ background: STATE_TINT[edge] }}
+      data-alert={alert.id}
+      data-state={alert.state}
+    >
       <StateEdge state={edge} />
       <div className={classes.meta}>
         <b style={{ color: STATE_COLOUR[edge], fontWeight: 600 }}>
@@ -54,7 +59,8 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
         {alert.shelvedUntil && (
           <>
             {' '}
-            until <SiteTime at={alert.shelvedUntil} timeZone={alert.timeZone} /> by {alert.shelvedBy}: {alert.shelveReason}
+            until <SiteTime at={alert.shelvedUntil} timeZone={alert.timeZone} /> by {alert.shelvedBy}:{' '}
+            {alert.shelveReason}
           </>
         )}{' '}
         · <SiteTime at={alert.raisedAt} timeZone={alert.timeZone} relative />
@@ -76,7 +82,8 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
       {alert.state !== 'normal' && <p className="soft">Do: {alert.action}</p>}
       {told && (
         <p className="soft small">
-          {told.action === 'told' ? `Told: ${told.note}` : told.note}, <SiteTime at={told.at} timeZone={alert.timeZone} />
+          {told.action === 'told' ? `Told: ${told.note}` : told.note},{' '}
+          <SiteTime at={told.at} timeZone={alert.timeZone} />
         </p>
       )}
       {(take.error ?? unshelving.error) && (
@@ -96,7 +103,12 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
           </Button>
         )}
         {allowed && alert.state === 'shelved' && (
-          <Button size="lg" variant="outline" loading={unshelving.isPending} onClick={() => unshelving.mutate()}>
+          <Button
+            size="lg"
+            variant="outline"
+            loading={unshelving.isPending}
+            onClick={() => unshelving.mutate()}
+          >
             Take off the shelf
           </Button>
         )}

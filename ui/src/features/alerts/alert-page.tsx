@@ -14,7 +14,8 @@ import { addNote, alertQuery, type Alert } from './alerts-api';
 export function Component() {
   const id = Number(useParams().id);
   const { data: alert, error, isPending, refetch } = useQuery(alertQuery(id));
-  if (error && !alert) return <ErrorState error={error} what={`Alert ${id}`} onRetry={() => void refetch()} />;
+  if (error && !alert)
+    return <ErrorState error={error} what={`Alert ${id}`} onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[24, 300, 200]} />;
   return (
     <div style={{ maxWidth: 720, display: 'grid', gap: 24 }}>
@@ -57,13 +58,26 @@ function Note({ alert }: { alert: Alert }) {
         add.mutate();
       }}
     >
-      <Textarea label="Note" autosize minRows={2} maxLength={2000} value={text} onChange={(event) => setText(event.currentTarget.value)} />
+      <Textarea
+        label="Note"
+        autosize
+        minRows={2}
+        maxLength={2000}
+        value={text}
+        onChange={(event) => setText(event.currentTarget.value)}
+      />
       {add.error && (
         <p role="alert" style={{ color: 'var(--out)', margin: 0 }}>
           {add.error.message}
         </p>
       )}
-      <Button type="submit" variant="outline" disabled={!text.trim()} loading={add.isPending} style={{ justifySelf: 'start' }}>
+      <Button
+        type="submit"
+        variant="outline"
+        disabled={!text.trim()}
+        loading={add.isPending}
+        style={{ justifySelf: 'start' }}
+      >
         Add the note
       </Button>
     </form>

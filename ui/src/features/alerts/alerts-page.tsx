@@ -37,13 +37,15 @@ function Open() {
   const { connected } = useLiveStatus();
   if (error && !data) return <ErrorState error={error} what="The alerts" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[24, 220, 220]} />;
-  const waiting = data.items.filter(({ state }) => state === 'unacknowledged' || state === 'returned-unacknowledged').length;
+  const waiting = data.items.filter(
+    ({ state }) => state === 'unacknowledged' || state === 'returned-unacknowledged',
+  ).length;
   const taken = data.items.filter(({ state }) => state === 'acknowledged').length;
   return (
     <>
       <p className="soft" role="status" style={{ margin: '4px 0 24px' }}>
-        {waiting === 0 ? 'Nothing waits for you' : `${waiting} wait${waiting === 1 ? 's' : ''} for somebody`} · {taken}{' '}
-        acknowledged{connected && ' · live'}
+        {waiting === 0 ? 'Nothing waits for you' : `${waiting} wait${waiting === 1 ? 's' : ''} for somebody`}{' '}
+        · {taken} acknowledged{connected && ' · live'}
       </p>
       {data.items.length === 0 ? (
         <EmptyState title="Nothing needs you">
@@ -63,10 +65,12 @@ function Open() {
 function Past() {
   const { data, error, isPending, refetch, hasNextPage, fetchNextPage, isFetchingNextPage } =
     useInfiniteQuery(pastAlertsQuery);
-  if (error && !data) return <ErrorState error={error} what="The past alerts" onRetry={() => void refetch()} />;
+  if (error && !data)
+    return <ErrorState error={error} what="The past alerts" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[220, 220]} />;
   const alerts = data.pages.flatMap(({ items }) => items);
-  if (alerts.length === 0) return <EmptyState title="No alert is over yet">Alerts that have ended are kept here.</EmptyState>;
+  if (alerts.length === 0)
+    return <EmptyState title="No alert is over yet">Alerts that have ended are kept here.</EmptyState>;
   return (
     <div style={{ marginTop: 28 }}>
       <div className={classes.list}>

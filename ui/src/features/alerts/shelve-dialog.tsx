@@ -30,9 +30,20 @@ export function ShelveDialog({ alert, onClose }: { alert: Alert; onClose: () => 
       onConfirm={() => put.mutate()}
       onClose={onClose}
     >
-      <p style={{ marginTop: 0 }}>Nobody is told about it until then; afterwards it comes back by itself if it still holds.</p>
+      <p style={{ marginTop: 0 }}>
+        Nobody is told about it until then; afterwards it comes back by itself if it still holds.
+      </p>
       <SegmentedControl fullWidth aria-label="For how long" value={hours} onChange={setHours} data={HOURS} />
-      <Textarea label="Reason" required mt="md" autosize minRows={2} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <Textarea
+        label="Reason"
+        required
+        mt="md"
+        autosize
+        minRows={2}
+        maxLength={2000}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }

@@ -7,7 +7,16 @@ export function FrontDoor({ title, children }: { title: string; children: ReactN
     <main style={{ minHeight: '100dvh', display: 'grid', placeItems: 'center', padding: 16 }}>
       <title>{`${title} · Polewright`}</title>
       <div style={{ width: '100%', maxWidth: 400 }}>
-        <div style={{ display: 'flex', alignItems: 'center', gap: 10, fontWeight: 640, fontSize: 20, marginBottom: 26 }}>
+        <div
+          style={{
+            display: 'flex',
+            alignItems: 'center',
+            gap: 10,
+            fontWeight: 640,
+            fontSize: 20,
+            marginBottom: 26,
+          }}
+        >
           <img src="/mark.svg" alt="" width={28} height={28} />
           Polewright
         </div>

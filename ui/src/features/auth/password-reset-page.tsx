@@ -16,10 +16,17 @@ export function Component() {
   return (
     <FrontDoor title="Reset your password">
       {ask.isSuccess ? (
-        <p role="status">If {form.values.email} belongs to somebody here, a mail with a link is on its way.</p>
+        <p role="status">
+          If {form.values.email} belongs to somebody here, a mail with a link is on its way.
+        </p>
       ) : (
         <form onSubmit={form.onSubmit((values) => ask.mutate(values))}>
-          <TextInput label="Mail address" type="email" autoComplete="username" {...form.getInputProps('email')} />
+          <TextInput
+            label="Mail address"
+            type="email"
+            autoComplete="username"
+            {...form.getInputProps('email')}
+          />
           {ask.error && (
             <p role="alert" style={{ color: 'var(--out)' }}>
               {ask.error.message}

@@ -19,10 +19,14 @@ export function Component() {
     },
   });
   const change = useMutation({
-    mutationFn: (body: { current: string; next: string }) => answer(client.PUT('/api/v1/auth/password', { body })),
+    mutationFn: (body: { current: string; next: string }) =>
+      answer(client.PUT('/api/v1/auth/password', { body })),
     onSuccess: () => {
       form.reset();
-      notifications.show({ message: 'Your password is changed.', closeButtonProps: { 'aria-label': 'Close' } });
+      notifications.show({
+        message: 'Your password is changed.',
+        closeButtonProps: { 'aria-label': 'Close' },
+      });
     },
   });
   if (!user) return null;
@@ -39,8 +43,17 @@ export function Component() {
       </Card>
       <Card title="Change your password">
         <form onSubmit={form.onSubmit((values) => change.mutate(values))}>
-          <PasswordInput label="Present password" autoComplete="current-password" {...form.getInputProps('current')} />
-          <PasswordInput label="New password" mt="sm" autoComplete="new-password" {...form.getInputProps('next')} />
+          <PasswordInput
+            label="Present password"
+            autoComplete="current-password"
+            {...form.getInputProps('current')}
+          />
+          <PasswordInput
+            label="New password"
+            mt="sm"
+            autoComplete="new-password"
+            {...form.getInputProps('next')}
+          />
           {change.error && (
             <p role="alert" style={{ color: 'var(--out)' }}>
               {change.error.message}

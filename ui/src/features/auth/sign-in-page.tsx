@@ -25,7 +25,8 @@ export function Component() {
     staleTime: Infinity,
   });
   const signIn = useMutation({
-    mutationFn: (body: { email: string; password: string }) => answer(client.POST('/api/v1/auth/sign-in', { body })),
+    mutationFn: (body: { email: string; password: string }) =>
+      answer(client.POST('/api/v1/auth/sign-in', { body })),
     onSuccess: signedIn,
   });
   if (status === 'signed-in')
@@ -33,7 +34,13 @@ export function Component() {
   return (
     <FrontDoor title="Sign in">
       <form onSubmit={form.onSubmit((values) => signIn.mutate(values))}>
-        <TextInput label="Mail address" type="email" autoComplete="username" autoFocus {...form.getInputProps('email')} />
+        <TextInput
+          label="Mail address"
+          type="email"
+          autoComplete="username"
+          autoFocus
+          {...form.getInputProps('email')}
+        />
         <PasswordInput
           label="Password"
           mt="md"
@@ -54,7 +61,10 @@ export function Component() {
         <Link to="/password-reset">Forgotten the password?</Link>
       </p>
       {service.data?.demo && (
-        <div className="small soft" style={{ marginTop: 18, borderTop: '1px solid var(--rule)', paddingTop: 12 }}>
+        <div
+          className="small soft"
+          style={{ marginTop: 18, borderTop: '1px solid var(--rule)', paddingTop: 12 }}
+        >
           This is the demo. Password <b>polewright-demo</b> for
           <div style={{ display: 'flex', flexWrap: 'wrap', gap: 6, marginTop: 8 }}>
             {DEMO_SIGN_INS.map((name) => (
@@ -62,7 +72,9 @@ export function Component() {
                 key={name}
                 size="compact-sm"
                 variant="default"
-                onClick={() => form.setValues({ email: `${name}@tarnwick.example`, password: 'polewright-demo' })}
+                onClick={() =>
+                  form.setValues({ email: `${name}@tarnwick.example`, password: 'polewright-demo' })
+                }
               >
                 {name}
               </Button>

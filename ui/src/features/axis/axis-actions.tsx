@@ -73,7 +73,17 @@ export function AxisActions({ axis, state }: { axis: Axis; state: Axis['state'] 
   );
 }
 
-function Maintenance({ axis, on, onClose, onDone }: { axis: Axis; on: boolean; onClose: () => void; onDone: () => Promise<void> }) {
+function Maintenance({
+  axis,
+  on,
+  onClose,
+  onDone,
+}: {
+  axis: Axis;
+  on: boolean;
+  onClose: () => void;
+  onDone: () => Promise<void>;
+}) {
   const [reason, setReason] = useState('');
   const [hours, setHours] = useState<string | null>('2');
   const change = useMutation({
@@ -104,7 +114,15 @@ function Maintenance({ axis, on, onClose, onDone }: { axis: Axis; on: boolean; o
           ? 'The gateway brings the axis to rest at the end of its move. Alerts are suppressed and nothing is learned from its moves meanwhile. This is not a lockout: follow the site’s own procedures.'
           : 'The axis starts its production program again. Keep people clear: it moves.'}
       </p>
-      <Textarea label="Reason" required autosize minRows={2} maxLength={500} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <Textarea
+        label="Reason"
+        required
+        autosize
+        minRows={2}
+        maxLength={500}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
       {on && (
         <Select
           label="For"

@@ -58,7 +58,8 @@ export const loopQuery = (axis: Axis, plant: { gain: number; pole: number } | nu
 export const maintain = (id: number, body: Schemas['MaintenanceDto']) =>
   answer(client.POST('/api/v1/axes/{id}/maintenance', { params: { path: { id } }, body }));
 
-export const startProposal = (axisId: number) => answer(client.POST('/api/v1/proposals', { body: { axisId } }));
+export const startProposal = (axisId: number) =>
+  answer(client.POST('/api/v1/proposals', { body: { axisId } }));
 
 export const confirmBaseline = (id: number) =>
   answer(client.POST('/api/v1/axes/{id}/baseline', { params: { path: { id } }, body: { confirm: true } }));

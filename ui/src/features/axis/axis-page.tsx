@@ -51,7 +51,11 @@ function AxisView({ axis }: { axis: Axis }) {
       <div className="soft small">
         <Link to="/">Fleet</Link> / {axis.siteName} / {axis.machineName}
       </div>
-      <section className={`card ${classes.head}`} style={{ background: STATE_TINT[state] }} data-state={state}>
+      <section
+        className={`card ${classes.head}`}
+        style={{ background: STATE_TINT[state] }}
+        data-state={state}
+      >
         <StateEdge state={state} />
         <div>
           <h1>{axis.tag}</h1>
@@ -102,7 +106,11 @@ function PlantCard({ axis, tile }: { axis: Axis; tile: LiveTile | null }) {
   return (
     <Card
       title="Plant"
-      sub={estimate ? `from ${estimate.movingSeconds.toFixed(0)} s of production moves, ${estimate.verdict}` : 'no estimate yet'}
+      sub={
+        estimate
+          ? `from ${estimate.movingSeconds.toFixed(0)} s of production moves, ${estimate.verdict}`
+          : 'no estimate yet'
+      }
     >
       <div style={{ display: 'flex', gap: 20, flexWrap: 'wrap' }}>
         <DriftPlot
@@ -112,7 +120,10 @@ function PlantCard({ axis, tile }: { axis: Axis; tile: LiveTile | null }) {
           trail={axis.trail}
           point={
             estimate && baseline
-              ? { gainRatio: estimate.gain.value / baseline.gain, poleRatio: estimate.pole.value / baseline.pole }
+              ? {
+                  gainRatio: estimate.gain.value / baseline.gain,
+                  poleRatio: estimate.pole.value / baseline.pole,
+                }
               : null
           }
           {...(estimate && { covariance: estimate.lnCovariance })}
@@ -179,7 +190,8 @@ function PlantCard({ axis, tile }: { axis: Axis; tile: LiveTile | null }) {
         )}
       </div>
       <p className="small soft" style={{ margin: '10px 0 0' }}>
-        Box: tolerance ±{tolerances.gainPct} % on K (across), ±{tolerances.polePct} % on α (up). Ellipse: 95 %.
+        Box: tolerance ±{tolerances.gainPct} % on K (across), ±{tolerances.polePct} % on α (up). Ellipse: 95
+        %.
       </p>
       {estimate?.remarks.map((remark) => (
         <p key={remark} className="small" style={{ margin: '4px 0 0' }}>

@@ -17,7 +17,10 @@ const ROWS: { label: string; of: (answer: Answer) => string }[] = [
   { label: 'gain margin up, dB', of: ({ margins }) => number(margins.gainMarginHighDb, 1) },
   { label: 'gain margin down, dB', of: ({ margins }) => number(margins.gainMarginLowDb, 1) },
   { label: 'largest sensitivity Ms', of: ({ margins }) => number(margins.maxSensitivity, 2) },
-  { label: 'delay margin, ms', of: ({ margins }) => number(margins.delayMargin == null ? null : margins.delayMargin * 1000, 2) },
+  {
+    label: 'delay margin, ms',
+    of: ({ margins }) => number(margins.delayMargin == null ? null : margins.delayMargin * 1000, 2),
+  },
   { label: 'sampled loop', of: ({ sampled }) => (sampled.stable ? 'stable' : 'not stable') },
   { label: 'output ripple, % RMS', of: ({ sampled }) => number(sampled.outputRippleRms, 3) },
 ];
@@ -35,7 +38,10 @@ export function LoopCard({ axis }: { axis: Axis }) {
   if (designed.error)
     return <ErrorState error={designed.error} what="The loop" onRetry={() => void designed.refetch()} />;
   return (
-    <Card title="The loop" sub={`gains of revision ${axis.revision} on the baseline plant, and on the plant as identified`}>
+    <Card
+      title="The loop"
+      sub={`gains of revision ${axis.revision} on the baseline plant, and on the plant as identified`}
+    >
       {designed.data && (
         <>
           <PoleMap

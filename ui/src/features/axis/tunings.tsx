@@ -33,7 +33,11 @@ export function Tunings({ axis }: { axis: Axis }) {
                 <td style={{ textAlign: 'left' }}>
                   <SiteTime at={tuning.appliedAt} timeZone={axis.timeZone} /> by {tuning.appliedBy}{' '}
                   <span className="soft small">
-                    {tuning.proposalId ? <Link to={`/proposals/${tuning.proposalId}`}>{tuning.source}</Link> : tuning.source}
+                    {tuning.proposalId ? (
+                      <Link to={`/proposals/${tuning.proposalId}`}>{tuning.source}</Link>
+                    ) : (
+                      tuning.source
+                    )}
                   </span>
                 </td>
                 <td>{tuning.lambda?.toFixed(1) ?? '–'}</td>

@@ -13,7 +13,8 @@ const LATEST = 12;
 export function WhatHappened({ axis }: { axis: Axis }) {
   const alertsOf = (state: 'open' | 'normal') => ({
     queryKey: ['alerts', { axisId: axis.id, state }],
-    queryFn: () => answer(client.GET('/api/v1/alerts', { params: { query: { axisId: axis.id, state, limit: LATEST } } })),
+    queryFn: () =>
+      answer(client.GET('/api/v1/alerts', { params: { query: { axisId: axis.id, state, limit: LATEST } } })),
   });
   const open = useQuery(alertsOf('open'));
   const over = useQuery(alertsOf('normal'));

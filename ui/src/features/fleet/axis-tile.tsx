@@ -20,7 +20,12 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
   const lead = reason.slice(0, reason.search(/[.!?](\s|$)/) + 1) || reason;
   const alert = axis.openAlerts.find(({ state: of }) => of === 'unacknowledged') ?? axis.openAlerts[0];
   return (
-    <article className={classes.tile} style={{ background: STATE_TINT[state] }} data-state={state} data-tag={axis.tag}>
+    <article
+      className={classes.tile}
+      style={{ background: STATE_TINT[state] }}
+      data-state={state}
+      data-tag={axis.tag}
+    >
       <StateEdge state={state} />
       <div className={classes.head}>
         <div style={{ minWidth: 0 }}>
@@ -64,7 +69,9 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
           <ErrorStrip points={strip} colour={colour} tolerance={axis.tolerances.followingError} />
           <div className={classes.label}>
             <span>at limit</span>
-            <b>{silent || indicators?.saturatedPct == null ? '–' : `${indicators.saturatedPct.toFixed(1)} %`}</b>
+            <b>
+              {silent || indicators?.saturatedPct == null ? '–' : `${indicators.saturatedPct.toFixed(1)} %`}
+            </b>
           </div>
           <OutputStrip points={strip} colour={colour} />
         </div>

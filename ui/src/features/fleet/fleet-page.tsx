@@ -118,11 +118,13 @@ export function Component() {
         <Waiting heights={[240, 240]} />
       ) : items.length === 0 ? (
         search.size > 0 ? (
-          <EmptyState title="No axis fits this filter">Take a filter away to see more of the fleet.</EmptyState>
+          <EmptyState title="No axis fits this filter">
+            Take a filter away to see more of the fleet.
+          </EmptyState>
         ) : (
           <EmptyState title="No axes yet">
-            An administrator registers the site and its gateways, an engineer the machines and axes. They appear here with
-            their first samples.
+            An administrator registers the site and its gateways, an engineer the machines and axes. They
+            appear here with their first samples.
           </EmptyState>
         )
       ) : view === 'table' ? (
@@ -155,7 +157,10 @@ function filterOf(search: URLSearchParams): FleetFilter {
 }
 
 /** Counts stay those of the whole selection while one state is picked out. */
-function useCounts({ state: _, ...filter }: FleetFilter, items: Axis[]): Partial<Record<Axis['state'], number>> {
+function useCounts(
+  { state: _, ...filter }: FleetFilter,
+  items: Axis[],
+): Partial<Record<Axis['state'], number>> {
   const { data } = useQuery(axesQuery(filter));
   const counts: Partial<Record<Axis['state'], number>> = {};
   for (const { state } of data?.items ?? items) counts[state] = (counts[state] ?? 0) + 1;

@@ -27,7 +27,8 @@ export class LiveTiles {
   }
 
   take(tiles: readonly LiveTile[]): void {
-    for (const tile of tiles) this.put(tile.id, { tile, strip: joined(this.get(tile.id).strip, tile.seconds) });
+    for (const tile of tiles)
+      this.put(tile.id, { tile, strip: joined(this.get(tile.id).strip, tile.seconds) });
   }
 
   private put(id: number, values: TileValues): void {

@@ -33,7 +33,8 @@ function Outbox() {
     refetchInterval: 5_000,
   });
   const resend = useMutation({
-    mutationFn: (id: number) => answer(client.POST('/api/v1/mail/outbox/{id}/resend', { params: { path: { id } } })),
+    mutationFn: (id: number) =>
+      answer(client.POST('/api/v1/mail/outbox/{id}/resend', { params: { path: { id } } })),
     onSuccess: () => queryClient.invalidateQueries({ queryKey: ['mail'] }),
   });
   if (error && !data) return <ErrorState error={error} what="The outbox" onRetry={() => void refetch()} />;
@@ -90,7 +91,8 @@ function DemoInbox() {
   });
   if (error instanceof Problem && error.status === 404)
     return <EmptyState title="No demo inbox here">Mails go to people’s own mailboxes.</EmptyState>;
-  if (error && !data) return <ErrorState error={error} what="The demo inbox" onRetry={() => void refetch()} />;
+  if (error && !data)
+    return <ErrorState error={error} what="The demo inbox" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[200]} />;
   const message = data.items.find(({ id }) => id === open);
   return (
@@ -114,7 +116,13 @@ function DemoInbox() {
                 </td>
                 <td>{to}</td>
                 <td>
-                  <Button variant="transparent" size="compact-sm" p={0} onClick={() => setOpen(open === id ? null : id)} aria-expanded={open === id}>
+                  <Button
+                    variant="transparent"
+                    size="compact-sm"
+                    p={0}
+                    onClick={() => setOpen(open === id ? null : id)}
+                    aria-expanded={open === id}
+                  >
                     {subject}
                   </Button>
                 </td>
@@ -127,8 +135,16 @@ function DemoInbox() {
         <iframe
           title={message.subject}
           sandbox="allow-popups"
-          srcDoc={message.html || `<pre>${message.text.replaceAll('&', '&amp;').replaceAll('<', '&lt;')}</pre>`}
-          style={{ width: '100%', height: 420, border: '1px solid var(--rule)', background: '#fff', marginTop: 14 }}
+          srcDoc={
+            message.html || `<pre>${message.text.replaceAll('&', '&amp;').replaceAll('<', '&lt;')}</pre>`
+          }
+          style={{
+            width: '100%',
+            height: 420,
+            border: '1px solid var(--rule)',
+            background: '#fff',
+            marginTop: 14,
+          }}
         />
       )}
     </Card>

@@ -16,7 +16,10 @@ const NO_ROLE = 'no role';
 const ZONE = Intl.DateTimeFormat().resolvedOptions().timeZone;
 
 const people = { queryKey: ['people'], queryFn: () => answer(client.GET('/api/v1/people')) };
-const invitations = { queryKey: ['people', 'invitations'], queryFn: () => answer(client.GET('/api/v1/people/invitations')) };
+const invitations = {
+  queryKey: ['people', 'invitations'],
+  queryFn: () => answer(client.GET('/api/v1/people/invitations')),
+};
 const refresh = (): Promise<void> => queryClient.invalidateQueries({ queryKey: ['people'] });
 
 export function Component() {
@@ -26,7 +29,9 @@ export function Component() {
   const { data: sites } = useQuery(sitesQuery);
   const own = sites?.items.filter(({ id }) => may(user, 'people.manage', id)) ?? [];
   if (!may(user, 'people.manage'))
-    return <EmptyState title="Only administrators manage people">Ask an administrator of your site.</EmptyState>;
+    return (
+      <EmptyState title="Only administrators manage people">Ask an administrator of your site.</EmptyState>
+    );
   if (error && !data) return <ErrorState error={error} what="The people" onRetry={() => void refetch()} />;
   return (
     <>
@@ -35,7 +40,14 @@ export function Component() {
       {isPending ? (
         <Waiting heights={[320]} />
       ) : (
-        <div style={{ display: 'grid', gridTemplateColumns: 'repeat(auto-fit, minmax(min(340px, 100%), 1fr))', gap: 18, alignItems: 'start' }}>
+        <div
+          style={{
+            display: 'grid',
+            gridTemplateColumns: 'repeat(auto-fit, minmax(min(340px, 100%), 1fr))',
+            gap: 18,
+            alignItems: 'start',
+          }}
+        >
           <div style={{ gridColumn: 'span 2', minWidth: 0 }}>
             <Card title={`${data.items.length} people`} sub="one role per person and site">
               <div className="scroll-x">
@@ -85,8 +97,12 @@ function Person({ person, sites }: { person: Schemas['PersonDto']; sites: Site[]
     onSuccess: refresh,
   });
   const setRole = (siteId: number, role: string | null): void => {
-    const others = person.roles.filter((entry) => entry.siteId !== siteId).map((entry) => ({ siteId: entry.siteId, role: entry.role }));
-    change.mutate({ roles: role === null || role === NO_ROLE ? others : [...others, { siteId, role: role as Role }] });
+    const others = person.roles
+      .filter((entry) => entry.siteId !== siteId)
+      .map((entry) => ({ siteId: entry.siteId, role: entry.role }));
+    change.mutate({
+      roles: role === null || role === NO_ROLE ? others : [...others, { siteId, role: role as Role }],
+    });
   };
   return (
     <tr style={{ opacity: person.disabled ? 0.6 : 1 }}>
@@ -105,9 +121,16 @@ function Person({ person, sites }: { person: Schemas['PersonDto']; sites: Site[]
           />
         </td>
       ))}
-      <td className="small soft">{person.lastSignInAt ? <SiteTime at={person.lastSignInAt} timeZone={ZONE} /> : 'never'}</td>
+      <td className="small soft">
+        {person.lastSignInAt ? <SiteTime at={person.lastSignInAt} timeZone={ZONE} /> : 'never'}
+      </td>
       <td>
-        <Button size="compact-sm" variant="default" loading={change.isPending} onClick={() => change.mutate({ disabled: !person.disabled })}>
+        <Button
+          size="compact-sm"
+          variant="default"
+          loading={change.isPending}
+          onClick={() => change.mutate({ disabled: !person.disabled })}
+        >
           {person.disabled ? 'Let in again' : 'Shut out'}
         </Button>
         {change.error && (
@@ -135,13 +158,18 @@ function Invite({ sites }: { sites: Site[] }) {
           body: {
             name: name.trim(),
             email: email.trim(),
-            roles: sites.filter(({ id }) => site === 'all' || site === String(id)).map(({ id }) => ({ siteId: id, role })),
+            roles: sites
+              .filter(({ id }) => site === 'all' || site === String(id))
+              .map(({ id }) => ({ siteId: id, role })),
           },
         }),
       ),
     onSuccess: ({ email }) => {
       form.reset();
-      notifications.show({ message: `A link is on its way to ${email}.`, closeButtonProps: { 'aria-label': 'Close' } });
+      notifications.show({
+        message: `A link is on its way to ${email}.`,
+        closeButtonProps: { 'aria-label': 'Close' },
+      });
       return refresh();
     },
   });
@@ -154,7 +182,10 @@ function Invite({ sites }: { sites: Site[] }) {
         <Select
           label="On"
           allowDeselect={false}
-          data={[{ value: 'all', label: 'every site of mine' }, ...sites.map(({ id, name }) => ({ value: String(id), label: name }))]}
+          data={[
+            { value: 'all', label: 'every site of mine' },
+            ...sites.map(({ id, name }) => ({ value: String(id), label: name })),
+          ]}
           {...form.getInputProps('site')}
         />
         {invite.error && (
@@ -170,7 +201,11 @@ function Invite({ sites }: { sites: Site[] }) {
   );
 }
 
-function OpenInvitation({ invitation: { id, name, email, expiresAt } }: { invitation: Schemas['InvitationDto'] }) {
+function OpenInvitation({
+  invitation: { id, name, email, expiresAt },
+}: {
+  invitation: Schemas['InvitationDto'];
+}) {
   const revoke = useMutation({
     mutationFn: () => answer(client.DELETE('/api/v1/people/invitations/{id}', { params: { path: { id } } })),
     onSuccess: refresh,

@@ -51,7 +51,11 @@ export function ProposalActions({ proposal }: { proposal: Proposal }) {
         </span>
       )}
       {ordered.map((action) => (
-        <Button key={action} variant={LEADS_ON.includes(action) ? 'filled' : 'outline'} onClick={() => show(action)}>
+        <Button
+          key={action}
+          variant={LEADS_ON.includes(action) ? 'filled' : 'outline'}
+          onClick={() => show(action)}
+        >
           {action === 'approve' ? `Approve version ${proposal.version}` : LABELS[action]}
         </Button>
       ))}
@@ -112,11 +116,20 @@ function ReasonedStep({ step, proposal, onTake, ...rest }: DialogProps & { step:
         <>
           <Caution>The former gains of revision {proposal.current.revision} are sent to the machine.</Caution>
           <p>
-            The axis must be in maintenance and at rest: see <Link to={`/axes/${proposal.axisId}`}>{proposal.axisTag}</Link>.
+            The axis must be in maintenance and at rest: see{' '}
+            <Link to={`/axes/${proposal.axisId}`}>{proposal.axisTag}</Link>.
           </p>
         </>
       )}
-      <Textarea label="Reason" required autosize minRows={2} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <Textarea
+        label="Reason"
+        required
+        autosize
+        minRows={2}
+        maxLength={2000}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }
@@ -141,8 +154,19 @@ function ScheduleStep({ proposal, onTake, ...rest }: DialogProps) {
       <p style={{ marginTop: 0 }}>
         The maintenance window, on {siteName}’s clock ({timeZone}). Outside it nothing can be sent.
       </p>
-      <TextInput type="datetime-local" label="From" value={from} onChange={(event) => setFrom(event.currentTarget.value)} />
-      <TextInput type="datetime-local" label="To" mt="sm" value={to} onChange={(event) => setTo(event.currentTarget.value)} />
+      <TextInput
+        type="datetime-local"
+        label="From"
+        value={from}
+        onChange={(event) => setFrom(event.currentTarget.value)}
+      />
+      <TextInput
+        type="datetime-local"
+        label="To"
+        mt="sm"
+        value={to}
+        onChange={(event) => setTo(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }
@@ -163,8 +187,8 @@ function ApplyStep({ proposal, onTake, ...rest }: DialogProps) {
     >
       <Caution />
       <p>
-        Put <Link to={`/axes/${proposal.axisId}`}>{proposal.axisTag}</Link> in maintenance and wait until it rests. The
-        gains count as applied only when the machine reads the same ones back.
+        Put <Link to={`/axes/${proposal.axisId}`}>{proposal.axisTag}</Link> in maintenance and wait until it
+        rests. The gains count as applied only when the machine reads the same ones back.
       </p>
       <div style={{ display: 'grid', gap: 10 }}>
         {proposal.checklist.map(({ key, text }) => (

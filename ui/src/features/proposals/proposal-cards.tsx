@@ -30,13 +30,14 @@ export function Why({ proposal: { evidence } }: { proposal: Proposal }) {
             </p>
           ))}
           <p>
-            Gain <Quantity {...estimate.gain} unit="(mm/s)/%" />, pole <Quantity {...estimate.pole} unit="rad/s" />,
-            dry friction <Quantity {...estimate.coulomb} unit="%" />, bias <Quantity {...estimate.bias} unit="%" />.
+            Gain <Quantity {...estimate.gain} unit="(mm/s)/%" />, pole{' '}
+            <Quantity {...estimate.pole} unit="rad/s" />, dry friction{' '}
+            <Quantity {...estimate.coulomb} unit="%" />, bias <Quantity {...estimate.bias} unit="%" />.
           </p>
           {indicators?.peakFollowingError != null && (
             <p>
-              Peak following error {significant(indicators.peakFollowingError)} mm in the minute before; tolerance{' '}
-              {tolerances.followingError} mm.
+              Peak following error {significant(indicators.peakFollowingError)} mm in the minute before;
+              tolerance {tolerances.followingError} mm.
             </p>
           )}
           {estimate.remarks.map((remark) => (
@@ -70,12 +71,13 @@ export function ProbableCause({ cause }: { cause: NonNullable<Proposal['probable
       <p style={{ margin: 0 }}>{cause.sentence}</p>
       {cause.advice === 'inspect first' ? (
         <p style={{ margin: '8px 0 0', color: 'var(--drift)', fontWeight: 600 }}>
-          Inspect first. A retune around worn mechanics or weak supply hides a fault; it is a stop-gap at best.
+          Inspect first. A retune around worn mechanics or weak supply hides a fault; it is a stop-gap at
+          best.
         </p>
       ) : (
         <p className="soft" style={{ margin: '8px 0 0' }}>
-          Retuning is the right answer if the load is meant to stay. If nobody changed it, look for what drags or is
-          loose first.
+          Retuning is the right answer if the load is meant to stay. If nobody changed it, look for what drags
+          or is loose first.
         </p>
       )}
     </Card>
@@ -92,7 +94,10 @@ const GAIN_ROWS = [
 
 export function WhatChanges({ proposal: { current, proposed } }: { proposal: Proposal }) {
   if (!proposed) return null;
-  const kept = current.lambda !== null && proposed.lambda !== null && Math.abs(proposed.lambda / current.lambda - 1) < 1e-9;
+  const kept =
+    current.lambda !== null &&
+    proposed.lambda !== null &&
+    Math.abs(proposed.lambda / current.lambda - 1) < 1e-9;
   return (
     <Card
       title="What changes"
@@ -121,7 +126,11 @@ export function WhatChanges({ proposal: { current, proposed } }: { proposal: Pro
               <td>
                 <b style={{ fontWeight: 600 }}>{significant(proposed.gains[name], 4)}</b>
               </td>
-              <td>{current.gains[name] === 0 ? '–' : `× ${(proposed.gains[name] / current.gains[name]).toFixed(2)}`}</td>
+              <td>
+                {current.gains[name] === 0
+                  ? '–'
+                  : `× ${(proposed.gains[name] / current.gains[name]).toFixed(2)}`}
+              </td>
             </tr>
           ))}
         </tbody>
@@ -161,9 +170,19 @@ export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: P
         title="following error"
         unit="mm"
         series={series('error')}
-        limit={{ value: evidence.tolerances.followingError, label: `${evidence.tolerances.followingError} mm` }}
+        limit={{
+          value: evidence.tolerances.followingError,
+          label: `${evidence.tolerances.followingError} mm`,
+        }}
       />
-      <MoveChart title="output" unit="%" series={series('output')} limit={{ value: 100, label: '100 %' }} height={150} digits={1} />
+      <MoveChart
+        title="output"
+        unit="%"
+        series={series('output')}
+        limit={{ value: 100, label: '100 %' }}
+        height={150}
+        digits={1}
+      />
       <div className="scroll-x">
         <table className="plain-table">
           <thead>
@@ -176,7 +195,8 @@ export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: P
           </thead>
           <tbody>
             {FIGURES.map(([name, label, digits]) => {
-              const cell = (value: number | null | undefined): string => (value == null ? '–' : value.toFixed(digits));
+              const cell = (value: number | null | undefined): string =>
+                value == null ? '–' : value.toFixed(digits);
               return (
                 <tr key={name}>
                   <td>{label}</td>

@@ -13,9 +13,21 @@ import { proposalQuery } from './proposals-api';
 export function Component() {
   const id = Number(useParams().id);
   const { data: proposal, error, isPending, refetch } = useQuery(proposalQuery(id));
-  if (error && !proposal) return <ErrorState error={error} what={`Proposal ${id}`} onRetry={() => void refetch()} />;
+  if (error && !proposal)
+    return <ErrorState error={error} what={`Proposal ${id}`} onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[70, 60, 420]} />;
-  const { axisId, axisTag, axisName, machineName, siteName, timeZone, source, createdAt, version, alteredBy } = proposal;
+  const {
+    axisId,
+    axisTag,
+    axisName,
+    machineName,
+    siteName,
+    timeZone,
+    source,
+    createdAt,
+    version,
+    alteredBy,
+  } = proposal;
   return (
     <>
       <title>{`Retune ${axisTag} · Polewright`}</title>

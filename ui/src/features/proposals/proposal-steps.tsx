@@ -31,10 +31,15 @@ export function ProposalSteps({ proposal }: { proposal: Proposal }) {
     <>
       <ol className={classes.steps}>
         {STAGES.map(({ label, done }, i) => {
-          const event = i <= now || now < 0 ? events.filter(({ action }) => done.includes(action)).at(-1) : undefined;
+          const event =
+            i <= now || now < 0 ? events.filter(({ action }) => done.includes(action)).at(-1) : undefined;
           const kind = i === now ? 'now' : i < now || (now < 0 && event) ? 'done' : '';
           return (
-            <li key={label} className={kind ? classes[kind] : ''} {...(kind === 'now' && { 'aria-current': 'step' })}>
+            <li
+              key={label}
+              className={kind ? classes[kind] : ''}
+              {...(kind === 'now' && { 'aria-current': 'step' })}
+            >
               {label}
               {event && (
                 <small>

@@ -62,12 +62,12 @@ export async function takeStep({ id, version }: Proposal, input: StepInput): Pro
 }
 
 /** Makes a new version with other poles or another structure; the service places the gains. */
-export async function alter(
-  { id, version }: Proposal,
-  body: Schemas['AlterProposalDto'],
-): Promise<Proposal> {
+export async function alter({ id, version }: Proposal, body: Schemas['AlterProposalDto']): Promise<Proposal> {
   const proposal = await answer(
-    client.PATCH('/api/v1/proposals/{id}', { params: { path: { id }, header: { 'if-match': String(version) } }, body }),
+    client.PATCH('/api/v1/proposals/{id}', {
+      params: { path: { id }, header: { 'if-match': String(version) } },
+      body,
+    }),
   );
   queryClient.setQueryData(['proposal', id], proposal);
   return proposal;

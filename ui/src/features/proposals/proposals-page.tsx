@@ -18,7 +18,9 @@ const WAITS_FOR: Partial<Record<ProposalSummary['state'], string>> = {
 
 export function Component() {
   const [show, setShow] = useState<'open' | 'all'>('open');
-  const { data, error, isPending, refetch } = useQuery(proposalsQuery(show === 'open' ? { state: 'open' } : {}));
+  const { data, error, isPending, refetch } = useQuery(
+    proposalsQuery(show === 'open' ? { state: 'open' } : {}),
+  );
   return (
     <>
       <title>Proposals · Polewright</title>
@@ -42,8 +44,8 @@ export function Component() {
         <Waiting heights={[90, 90, 90]} />
       ) : data.items.length === 0 ? (
         <EmptyState title={show === 'open' ? 'No open proposals' : 'No proposals yet'}>
-          A proposal appears by itself when drift beyond tolerance is decided; an engineer can also start one on an axis’s
-          page.
+          A proposal appears by itself when drift beyond tolerance is decided; an engineer can also start one
+          on an axis’s page.
         </EmptyState>
       ) : (
         <div style={{ display: 'grid', gap: 14, maxWidth: 1100 }}>
@@ -57,7 +59,18 @@ export function Component() {
 }
 
 function Summary({ proposal }: { proposal: ProposalSummary }) {
-  const { id, axisTag, machineName, siteName, state, probableCause, noGainsReason, createdAt, timeZone, trial } = proposal;
+  const {
+    id,
+    axisTag,
+    machineName,
+    siteName,
+    state,
+    probableCause,
+    noGainsReason,
+    createdAt,
+    timeZone,
+    trial,
+  } = proposal;
   return (
     <article className="card" style={{ padding: '14px 18px' }}>
       <div style={{ display: 'flex', gap: 12, alignItems: 'baseline', flexWrap: 'wrap' }}>

@@ -13,7 +13,10 @@ export const rotaQuery = (siteId: number) =>
 export const notesQuery = (siteId: number) =>
   queryOptions({
     queryKey: ['rota', siteId, 'notes'],
-    queryFn: () => answer(client.GET('/api/v1/rota/{siteId}/notes', { params: { path: { siteId }, query: { limit: 20 } } })),
+    queryFn: () =>
+      answer(
+        client.GET('/api/v1/rota/{siteId}/notes', { params: { path: { siteId }, query: { limit: 20 } } }),
+      ),
   });
 
 export const peopleQuery = queryOptions({
@@ -35,7 +38,11 @@ export const addOverride = (siteId: number, body: Schemas['AddOverrideDto']) =>
   changed(answer(client.POST('/api/v1/rota/{siteId}/overrides', { params: { path: { siteId } }, body })));
 
 export const removeOverride = (siteId: number, id: number) =>
-  changed(answer(client.DELETE('/api/v1/rota/{siteId}/overrides/{id}', { params: { path: { siteId, id } } })));
+  changed(
+    answer(client.DELETE('/api/v1/rota/{siteId}/overrides/{id}', { params: { path: { siteId, id } } })),
+  );
 
 export const writeNote = (siteId: number, text: string) =>
-  changed(answer(client.POST('/api/v1/rota/{siteId}/notes', { params: { path: { siteId } }, body: { text } })));
+  changed(
+    answer(client.POST('/api/v1/rota/{siteId}/notes', { params: { path: { siteId } }, body: { text } })),
+  );

@@ -9,7 +9,16 @@ import { useSession } from '../../api/use-session';
 import { Card } from '../../components/card';
 import { ErrorState, Waiting } from '../../components/notices';
 import { SiteTime } from '../../components/site-time';
-import { addOverride, notesQuery, peopleQuery, removeOverride, rotaQuery, setRotation, writeNote, type Rota } from './rota-api';
+import {
+  addOverride,
+  notesQuery,
+  peopleQuery,
+  removeOverride,
+  rotaQuery,
+  setRotation,
+  writeNote,
+  type Rota,
+} from './rota-api';
 
 const LOCAL = 'YYYY-MM-DDTHH:mm';
 
@@ -36,7 +45,8 @@ export function Component() {
 function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
   const { user } = useSession();
   const { data: rota, error, refetch } = useQuery(rotaQuery(siteId));
-  if (error && !rota) return <ErrorState error={error} what={`The rota of ${siteName}`} onRetry={() => void refetch()} />;
+  if (error && !rota)
+    return <ErrorState error={error} what={`The rota of ${siteName}`} onRetry={() => void refetch()} />;
   if (!rota) return <Waiting heights={[220]} />;
   return (
     <section style={{ display: 'grid', gap: 16 }}>
@@ -45,7 +55,8 @@ function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
         <div>
           {rota.onCall ? (
             <>
-              On call now: <b>{rota.onCall.name}</b> until <SiteTime at={rota.onCall.until} timeZone={rota.timeZone} />
+              On call now: <b>{rota.onCall.name}</b> until{' '}
+              <SiteTime at={rota.onCall.until} timeZone={rota.timeZone} />
             </>
           ) : (
             <b style={{ color: 'var(--out)' }}>Nobody is on call now: alerts reach no one.</b>
@@ -53,7 +64,14 @@ function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
           <span className="soft small">{rota.timeZone}</span>
         </div>
       </div>
-      <div style={{ display: 'grid', gridTemplateColumns: 'repeat(auto-fit, minmax(min(320px, 100%), 1fr))', gap: 18, alignItems: 'start' }}>
+      <div
+        style={{
+          display: 'grid',
+          gridTemplateColumns: 'repeat(auto-fit, minmax(min(320px, 100%), 1fr))',
+          gap: 18,
+          alignItems: 'start',
+        }}
+      >
         <Shifts rota={rota} />
         <div style={{ display: 'grid', gap: 18 }}>
           {may(user, 'rota.change', siteId) && <Rotation rota={rota} />}
@@ -70,7 +88,10 @@ function Shifts({ rota }: { rota: Rota }) {
   const { user } = useSession();
   const day = (at: string): string => dayjs(at).tz(rota.timeZone).format('ddd D MMM HH:mm');
   return (
-    <Card title="Next 14 days" sub={rota.layer ? `hand-over at ${rota.layer.handOverTime}` : 'no rotation yet'}>
+    <Card
+      title="Next 14 days"
+      sub={rota.layer ? `hand-over at ${rota.layer.handOverTime}` : 'no rotation yet'}
+    >
       {rota.gaps.map(({ from, to }) => (
         <p key={from} style={{ color: 'var(--out)', fontWeight: 600, margin: '0 0 8px' }}>
           Nobody on call {day(from)} to {day(to)}
@@ -97,12 +118,21 @@ function Shifts({ rota }: { rota: Rota }) {
         </tbody>
       </table>
       {rota.overrides.map(({ id, name, from, to, reason, userId }) => (
-        <div key={id} className="small" style={{ marginTop: 10, display: 'flex', gap: 10, alignItems: 'center' }}>
+        <div
+          key={id}
+          className="small"
+          style={{ marginTop: 10, display: 'flex', gap: 10, alignItems: 'center' }}
+        >
           <span>
             Override: {name}, {day(from)} to {day(to)}. {reason}
           </span>
           {(may(user, 'rota.change', rota.siteId) || user?.id === userId) && (
-            <Button size="compact-sm" variant="default" loading={remove.isPending} onClick={() => remove.mutate(id)}>
+            <Button
+              size="compact-sm"
+              variant="default"
+              loading={remove.isPending}
+              onClick={() => remove.mutate(id)}
+            >
               Remove
             </Button>
           )}
@@ -130,7 +160,13 @@ function Rotation({ rota }: { rota: Rota }) {
   });
   const choices =
     people?.items
-      .filter(({ roles, disabled }) => !disabled && roles.some(({ siteId, role }) => siteId === rota.siteId && role !== 'viewer' && role !== 'administrator'))
+      .filter(
+        ({ roles, disabled }) =>
+          !disabled &&
+          roles.some(
+            ({ siteId, role }) => siteId === rota.siteId && role !== 'viewer' && role !== 'administrator',
+          ),
+      )
       .map(({ id, name }) => ({ value: String(id), label: name })) ?? [];
   return (
     <Card title="Rotation" sub="in the order of their turns">
@@ -152,8 +188,16 @@ function Override({ rota }: { rota: Rota }) {
   const { user } = useSession();
   const now = dayjs().tz(rota.timeZone);
   const form = useForm({
-    initialValues: { userId: user ? String(user.id) : '', from: now.format(LOCAL), to: now.add(8, 'hour').format(LOCAL), reason: '' },
-    validate: { reason: (value) => (value.trim() ? null : 'Say why'), userId: (value) => (value ? null : 'Who?') },
+    initialValues: {
+      userId: user ? String(user.id) : '',
+      from: now.format(LOCAL),
+      to: now.add(8, 'hour').format(LOCAL),
+      reason: '',
+    },
+    validate: {
+      reason: (value) => (value.trim() ? null : 'Say why'),
+      userId: (value) => (value ? null : 'Who?'),
+    },
   });
   const add = useMutation({
     mutationFn: ({ userId, from, to, reason }: typeof form.values) =>
@@ -165,13 +209,19 @@ function Override({ rota }: { rota: Rota }) {
       }),
     onSuccess: () => form.setFieldValue('reason', ''),
   });
-  const choices = new Map<number, string>(rota.layer?.members.map(({ userId, name }) => [userId, name]) ?? []);
+  const choices = new Map<number, string>(
+    rota.layer?.members.map(({ userId, name }) => [userId, name]) ?? [],
+  );
   if (user && user.roles.some(({ siteId, role }) => siteId === rota.siteId && role !== 'administrator'))
     choices.set(user.id, user.name);
   return (
     <Card title="Override" sub="somebody else takes over for a while">
       <form onSubmit={form.onSubmit((values) => add.mutate(values))} style={{ display: 'grid', gap: 10 }}>
-        <Select label="Who" data={[...choices].map(([id, name]) => ({ value: String(id), label: name }))} {...form.getInputProps('userId')} />
+        <Select
+          label="Who"
+          data={[...choices].map(([id, name]) => ({ value: String(id), label: name }))}
+          {...form.getInputProps('userId')}
+        />
         <TextInput label="From" type="datetime-local" {...form.getInputProps('from')} />
         <TextInput label="To" type="datetime-local" {...form.getInputProps('to')} />
         <TextInput label="Reason" {...form.getInputProps('reason')} />
@@ -187,7 +237,10 @@ function Override({ rota }: { rota: Rota }) {
 function Notes({ siteId, timeZone, writes }: { siteId: number; timeZone: string; writes: boolean }) {
   const { data } = useQuery(notesQuery(siteId));
   const [text, setText] = useState('');
-  const write = useMutation({ mutationFn: () => writeNote(siteId, text.trim()), onSuccess: () => setText('') });
+  const write = useMutation({
+    mutationFn: () => writeNote(siteId, text.trim()),
+    onSuccess: () => setText(''),
+  });
   return (
     <Card title="Hand-over notes" sub="what the person on call leaves for the next one">
       {writes && (
@@ -198,9 +251,22 @@ function Notes({ siteId, timeZone, writes }: { siteId: number; timeZone: string;
             write.mutate();
           }}
         >
-          <Textarea label="New note" autosize minRows={2} maxLength={4000} value={text} onChange={(event) => setText(event.currentTarget.value)} />
+          <Textarea
+            label="New note"
+            autosize
+            minRows={2}
+            maxLength={4000}
+            value={text}
+            onChange={(event) => setText(event.currentTarget.value)}
+          />
           {write.error && <Refusal error={write.error} />}
-          <Button type="submit" variant="outline" disabled={!text.trim()} loading={write.isPending} style={{ justifySelf: 'start' }}>
+          <Button
+            type="submit"
+            variant="outline"
+            disabled={!text.trim()}
+            loading={write.isPending}
+            style={{ justifySelf: 'start' }}
+          >
             Leave it
           </Button>
         </form>

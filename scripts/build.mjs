@@ -1,0 +1,5 @@
+import { build, checkNode, install } from './workspace.mjs';
+
+checkNode();
+install();
+build({ force: true });
