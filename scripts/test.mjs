@@ -26,7 +26,7 @@ check('types of the service', run(bin('tsc'), ['-p', 'service/tsconfig.json']));
 check('types of the page', run(bin('tsc'), ['-p', 'ui/tsconfig.json']));
 check(
   'arrows between modules',
-  run(bin('depcruise'), ['--config', '.dependency-cruiser.cjs', 'service/src', 'simulator/src', 'ui/src']),
+  run(bin('depcruise'), ['--config', '.dependency-cruiser.mjs', 'service/src', 'simulator/src', 'ui/src']),
 );
 
 const { status, stdout } = spawnSync(

@@ -1,6 +1,7 @@
 import { Axis } from './axis.js';
 import type { Gains, Structure } from './controller.js';
-import { TARNWICK_AXES, type TarnwickAxis } from './tarnwick.js';
+import { TARNWICK_AXES } from './tarnwick.js';
+import type { TarnwickAxis } from './tarnwick/tarnwick-axis.js';
 
 /**
  * Gains for a triple real pole −λ on a plant Kα/(s(s + α)): Kp = 3λ²/(Kα), Ki = λ³/(Kα), Kd = (3λ − α)/(Kα);

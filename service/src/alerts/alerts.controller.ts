@@ -134,12 +134,10 @@ export class AlertsController {
   /** The live proposal of each axis. */
   private async proposalsOf(axisIds: number[]): Promise<Map<number, number>> {
     if (axisIds.length === 0) return new Map();
-    const rows = await this.dataSource
-      .getRepository(Proposal)
-      .find({
-        select: { id: true, axisId: true },
-        where: { axisId: In(axisIds), state: In([...LIVE_STATES]) },
-      });
+    const rows = await this.dataSource.getRepository(Proposal).find({
+      select: { id: true, axisId: true },
+      where: { axisId: In(axisIds), state: In([...LIVE_STATES]) },
+    });
     return new Map(rows.map(({ axisId, id }) => [axisId, id]));
   }
 }

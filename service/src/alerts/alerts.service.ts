@@ -303,12 +303,10 @@ export class AlertsService implements OnApplicationBootstrap {
 
   /** Rules whose alert stands on each axis, shelved and suppressed ones left out. */
   async standingRules(): Promise<Map<number, string[]>> {
-    const standing = await this.dataSource
-      .getRepository(Alert)
-      .find({
-        select: { axisId: true, rule: true },
-        where: { state: In(['unacknowledged', 'acknowledged']) },
-      });
+    const standing = await this.dataSource.getRepository(Alert).find({
+      select: { axisId: true, rule: true },
+      where: { state: In(['unacknowledged', 'acknowledged']) },
+    });
     const byAxis = new Map<number, string[]>();
     for (const { axisId, rule } of standing) byAxis.set(axisId, [...(byAxis.get(axisId) ?? []), rule]);
     return byAxis;

@@ -93,12 +93,10 @@ export class AxesService {
     const ids = axes.map(({ id }) => id);
     const [alerts, proposals, tunings, trails] = await Promise.all([
       this.dataSource.getRepository(Alert).findBy({ axisId: In(ids), state: Not('normal') }),
-      this.dataSource
-        .getRepository(Proposal)
-        .find({
-          select: { id: true, axisId: true, state: true },
-          where: { axisId: In(ids), state: In([...LIVE_STATES]) },
-        }),
+      this.dataSource.getRepository(Proposal).find({
+        select: { id: true, axisId: true, state: true },
+        where: { axisId: In(ids), state: In([...LIVE_STATES]) },
+      }),
       this.dataSource.getRepository(TuningRevision).findBy({ axisId: In(ids) }),
       this.trails(axes),
     ]);

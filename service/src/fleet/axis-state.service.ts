@@ -33,12 +33,10 @@ export class AxisStateService {
     try {
       const axes = await this.dataSource.getRepository(Axis).find({ relations: { site: true } });
       const standing = groupBy(
-        await this.dataSource
-          .getRepository(Alert)
-          .find({
-            select: { axisId: true, rule: true },
-            where: { state: In(['unacknowledged', 'acknowledged']) },
-          }),
+        await this.dataSource.getRepository(Alert).find({
+          select: { axisId: true, rule: true },
+          where: { state: In(['unacknowledged', 'acknowledged']) },
+        }),
         ({ axisId }) => axisId,
       );
       for (const axis of axes) {

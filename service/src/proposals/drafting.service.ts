@@ -272,13 +272,11 @@ export class DraftingService {
   }
 
   private async endedLately({ facts, estimate }: AxisPipeline, at: Date): Promise<boolean> {
-    const last = await this.dataSource
-      .getRepository(Proposal)
-      .findOne({
-        where: { axisId: facts.id, source: 'drift' },
-        order: { id: 'DESC' },
-        relations: { events: true },
-      });
+    const last = await this.dataSource.getRepository(Proposal).findOne({
+      where: { axisId: facts.id, source: 'drift' },
+      order: { id: 'DESC' },
+      relations: { events: true },
+    });
     if (!last) return false;
     const ended = Math.max(...last.events.map((event) => event.at.getTime()));
     return at.getTime() - ended < QUIET_AFTER_END && !hasMoved(last.evidence.estimate, estimate!, SAME_DRIFT);

@@ -1,5 +1,5 @@
 /** The arrows of the house: control imports nothing of ours, features flow one way, the simulator stays independent. */
-module.exports = {
+export default {
   forbidden: [
     {
       name: 'control-imports-nothing-of-ours',
