@@ -72,17 +72,16 @@ export class DraftingService {
     this.drafting = true;
     try {
       const decided = this.intake.all().filter(isDecided);
-      if (decided.length === 0) return;
-      const live = await this.dataSource.getRepository(Proposal).findBy({
-        axisId: In(decided.map(({ facts }) => facts.id)),
-        state: In([...LIVE_STATES]),
-      });
+      const live = await this.dataSource.getRepository(Proposal).findBy({ state: In([...LIVE_STATES]) });
       for (const pipeline of decided) {
         const proposal = live.find(({ axisId }) => axisId === pipeline.facts.id);
         if (!proposal) {
           if (!(await this.endedLately(pipeline, at))) await this.draft(pipeline.facts.id, 'drift', null, {});
         } else if (isStale(proposal, pipeline.estimate!)) await this.refresh(proposal, pipeline.estimate!);
       }
+      for (const proposal of live)
+        if (isUntouched(proposal) && isLifted(this.intake.pipeline(proposal.axisId)))
+          await this.lift(proposal);
     } finally {
       this.drafting = false;
     }
@@ -271,6 +270,39 @@ export class DraftingService {
       });
   }
 
+  /** Drift that went away by itself takes its untouched draft along. */
+  private async lift(seen: Proposal): Promise<void> {
+    const done = await this.transactions.run(async (manager) => {
+      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
+      if (proposal.version !== seen.version || !isUntouched(proposal)) return false;
+      proposal.state = 'withdrawn';
+      await manager.save(proposal);
+      const note = 'The plant is back within tolerance.';
+      await manager.save(ProposalEvent, {
+        proposalId: seen.id,
+        at: new Date(),
+        by: 'service',
+        action: 'withdrawn',
+        note,
+        version: seen.version,
+      });
+      await this.audit.record(manager, {
+        user: null,
+        action: 'proposal.withdrawn',
+        subject: { type: 'proposal', id: seen.id },
+        siteId: seen.siteId,
+        note,
+      });
+      return true;
+    });
+    if (done)
+      tell(this.emitter, 'proposal.changed', {
+        proposalId: seen.id,
+        axisId: seen.axisId,
+        siteId: seen.siteId,
+      });
+  }
+
   private async endedLately({ facts, estimate }: AxisPipeline, at: Date): Promise<boolean> {
     const last = await this.dataSource.getRepository(Proposal).findOne({
       where: { axisId: facts.id, source: 'drift' },
@@ -290,11 +322,20 @@ function isDecided({ decisions, estimate, facts }: AxisPipeline): boolean {
   );
 }
 
+/** Made by the service and not yet looked at by anybody. */
+const isUntouched = ({ state, source, alteredById }: Proposal): boolean =>
+  state === 'drafted' && source === 'drift' && alteredById === null;
+
 const isStale = (proposal: Proposal, estimate: PlantEstimate): boolean =>
-  proposal.state === 'drafted' &&
-  proposal.source === 'drift' &&
-  proposal.alteredById === null &&
-  hasMoved(proposal.evidence.estimate, estimate, REFRESH_BEYOND);
+  isUntouched(proposal) && hasMoved(proposal.evidence.estimate, estimate, REFRESH_BEYOND);
+
+/** Whether the chart has taken its decision back; while nothing is known, nothing is taken back. */
+const isLifted = (pipeline: AxisPipeline | undefined): boolean =>
+  pipeline !== undefined &&
+  pipeline.decisions !== null &&
+  !pipeline.facts.inMaintenance &&
+  pipeline.decisions.gain.state !== 'drifted' &&
+  pipeline.decisions.pole.state !== 'drifted';
 
 const hasMoved = (before: PlantEstimate, now: PlantEstimate, share: number): boolean =>
   Math.abs(now.gain.value / before.gain.value - 1) > share ||
