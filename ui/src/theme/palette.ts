@@ -6,7 +6,7 @@ export const palette = {
     ink: '#1C2733',
     soft: '#55606B',
     rule: '#D9D4C7',
-    press: '#1F7A6D',
+    press: '#1B7468',
     'on-press': '#FFFFFF',
     drift: '#935A06',
     out: '#A8323F',

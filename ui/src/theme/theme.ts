@@ -9,7 +9,7 @@ const verdigris: MantineColorsTuple = [
   '#7ab3a8',
   '#549d90',
   '#3c9081',
-  '#1f7a6d',
+  '#1b7468',
   '#196a5e',
   '#115b50',
   '#034b41',
