@@ -26,7 +26,7 @@ const contrast = (one: string, other: string): number => {
  * Linear RGB as seen without one kind of cone: Viénot, Brettel & Mollon 1999 ("Digital video colourmaps for checking
  * the legibility of displays by dichromats"); the matrices are written from memory.
  */
-const DICHROMATS = {
+const DICHROMATS: Record<string, number[][]> = {
   protanope: [
     [0.11238, 0.88762, 0],
     [0.11238, 0.88762, 0],
@@ -37,7 +37,7 @@ const DICHROMATS = {
     [0.29275, 0.70725, 0],
     [-0.02234, 0.02234, 1],
   ],
-} as const;
+};
 
 /** CIE 1976 L*a*b*, D65, from linear sRGB (IEC 61966-2-1). */
 function lab([r, g, b]: number[]): [number, number, number] {

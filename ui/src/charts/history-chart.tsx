@@ -1,6 +1,6 @@
 import dayjs from 'dayjs';
-import { useState, type KeyboardEvent, type PointerEvent } from 'react';
 import { significant } from '../components/quantity';
+import { roundMarks, TableView, useChartWidth, useReading } from './chart-frame';
 
 export interface HistoryPoint {
   at: string;
@@ -15,7 +15,6 @@ export interface HistoryPoint {
   drifted?: boolean;
 }
 
-const WIDTH = 640;
 const LEFT = 54;
 const RIGHT = 8;
 const TOP = 22;
@@ -42,16 +41,26 @@ export function HistoryChart({
   timeZone: string;
   height?: number;
 }) {
-  const [at, setAt] = useState<number | null>(null);
+  const { ref, width } = useChartWidth();
+  const times = points.map((point) => Date.parse(point.at));
+  const from = times[0] ?? 0;
+  const to = times.at(-1) ?? 0;
+  const { at, reading } = useReading({
+    count: points.length,
+    nearest: (px) => {
+      const wanted = from + ((px - LEFT) * (to - from)) / (width - LEFT - RIGHT);
+      let nearest = 0;
+      for (let i = 1; i < times.length; i++)
+        if (Math.abs(times[i]! - wanted) < Math.abs(times[nearest]! - wanted)) nearest = i;
+      return nearest;
+    },
+  });
   if (points.length < 2)
     return (
-      <p className="soft" style={{ minHeight: height }}>
+      <p className="soft" style={{ minHeight: height }} ref={ref}>
         {title}: not enough windows of production moves yet.
       </p>
     );
-  const times = points.map((point) => Date.parse(point.at));
-  const from = times[0]!;
-  const to = times.at(-1)!;
   const bounds =
     baseline !== null && tolerancePct
       ? [baseline * (1 - tolerancePct / 100), baseline * (1 + tolerancePct / 100)]
@@ -61,7 +70,7 @@ export function HistoryChart({
   const low = Math.min(...values, ...bounds, baseline ?? Infinity);
   const high = Math.max(...values, ...bounds, baseline ?? -Infinity);
   const room = (high - low) * 0.12 || Math.abs(high) * 0.05 || 1;
-  const x = (t: number): number => LEFT + ((WIDTH - LEFT - RIGHT) * (t - from)) / Math.max(1, to - from);
+  const x = (t: number): number => LEFT + ((width - LEFT - RIGHT) * (t - from)) / Math.max(1, to - from);
   const y = (v: number): number => {
     const clamped = Math.min(high + room, Math.max(low - room, v));
     return TOP + ((height - TOP - BOTTOM) * (high + room - clamped)) / (high - low + 2 * room);
@@ -85,46 +94,25 @@ export function HistoryChart({
     .map((point, i) => `L${x(times[i]!).toFixed(1)} ${y(point.low).toFixed(1)}`)
     .reverse()
     .join('')}Z`;
-  const decided = points.findIndex(({ drifted }) => drifted);
-  const move = (index: number): void => setAt(Math.min(points.length - 1, Math.max(0, index)));
-  const onPointer = (event: PointerEvent<SVGSVGElement>): void => {
-    const box = event.currentTarget.getBoundingClientRect();
-    const t =
-      from +
-      (((event.clientX - box.left) / box.width) * WIDTH - LEFT) * ((to - from) / (WIDTH - LEFT - RIGHT));
-    let nearest = 0;
-    for (let i = 1; i < times.length; i++)
-      if (Math.abs(times[i]! - t) < Math.abs(times[nearest]! - t)) nearest = i;
-    move(nearest);
-  };
-  const onKey = (event: KeyboardEvent): void => {
-    const step = { ArrowLeft: -1, ArrowRight: 1, Home: -points.length, End: points.length }[event.key];
-    if (step === undefined) return;
-    event.preventDefault();
-    move((at ?? points.length - 1) + step);
-  };
+  const decided = points.flatMap(({ drifted }, i) => (drifted && !points[i - 1]?.drifted ? [i] : []));
   const format = to - from > 2 * 86_400_000 ? 'D MMM' : 'HH:mm';
   const read = at === null ? null : points[at]!;
   return (
-    <figure style={{ margin: 0 }}>
+    <figure style={{ margin: 0 }} ref={ref}>
       <svg
-        width="100%"
-        viewBox={`0 0 ${WIDTH} ${height}`}
+        width={width}
+        height={height}
         role="img"
-        tabIndex={0}
         aria-label={`${title} over time, arrow keys to read`}
-        onPointerMove={onPointer}
-        onPointerLeave={() => setAt(null)}
-        onKeyDown={onKey}
-        onBlur={() => setAt(null)}
-        style={{ display: 'block', touchAction: 'pan-y' }}
+        {...reading}
+        style={{ display: 'block', maxWidth: '100%', touchAction: 'pan-y' }}
       >
         <text x="0" y="13" fontSize="12.5" fill="var(--soft)">
           {title}, {unit}
         </text>
         {baseline !== null && (
           <>
-            <path d={`M${LEFT} ${y(baseline)}H${WIDTH - RIGHT}`} stroke="var(--soft)" />
+            <path d={`M${LEFT} ${y(baseline)}H${width - RIGHT}`} stroke="var(--soft)" />
             <text x={LEFT - 6} y={y(baseline) + 4} fontSize="12" textAnchor="end" fill="var(--soft)">
               {significant(baseline)}
             </text>
@@ -132,12 +120,21 @@ export function HistoryChart({
         )}
         {bounds.map((bound) => (
           <g key={bound}>
-            <path d={`M${LEFT} ${y(bound)}H${WIDTH - RIGHT}`} stroke="var(--out)" strokeDasharray="2 4" />
+            <path d={`M${LEFT} ${y(bound)}H${width - RIGHT}`} stroke="var(--out)" strokeDasharray="2 4" />
             <text x={LEFT - 6} y={y(bound) + 4} fontSize="12" textAnchor="end" fill="var(--out)">
               {significant(bound)}
             </text>
           </g>
         ))}
+        {baseline === null &&
+          roundMarks(low, high, 3).map((mark) => (
+            <g key={mark}>
+              <path d={`M${LEFT} ${y(mark)}H${width - RIGHT}`} stroke="var(--rule)" />
+              <text x={LEFT - 6} y={y(mark) + 4} fontSize="12" textAnchor="end" fill="var(--soft)">
+                {String(mark).replace('-', '−')}
+              </text>
+            </g>
+          ))}
         <path d={band} fill="var(--ink)" fillOpacity=".14" />
         <path
           d={line(({ limitHigh }) => limitHigh)}
@@ -148,20 +145,26 @@ export function HistoryChart({
         <path d={line(({ limitLow }) => limitLow)} fill="none" stroke="var(--drift)" strokeDasharray="6 3" />
         <path d={line(({ ewma }) => ewma)} fill="none" stroke="var(--drift)" strokeWidth="1.2" />
         <path d={line(({ value }) => value)} fill="none" stroke="var(--ink)" strokeWidth="1.8" />
-        {decided >= 0 && (
-          <g>
-            <path d={`M${x(times[decided]!)} ${TOP}V${height - BOTTOM}`} stroke="var(--out)" />
-            <text
-              x={x(times[decided]!) + (x(times[decided]!) > WIDTH / 2 ? -5 : 5)}
-              y={TOP + 10}
-              fontSize="12"
-              fill="var(--out)"
-              textAnchor={x(times[decided]!) > WIDTH / 2 ? 'end' : 'start'}
-            >
-              drift decided
-            </text>
-          </g>
-        )}
+        {decided.map((index, i) => {
+          const place = x(times[index]!);
+          const left = place > width / 2;
+          return (
+            <g key={index}>
+              <path d={`M${place} ${TOP}V${height - BOTTOM}`} stroke="var(--out)" />
+              {i === decided.length - 1 && (
+                <text
+                  x={place + (left ? -5 : 5)}
+                  y={TOP + 10}
+                  fontSize="12"
+                  fill="var(--out)"
+                  textAnchor={left ? 'end' : 'start'}
+                >
+                  drift decided
+                </text>
+              )}
+            </g>
+          );
+        })}
         {[from, (from + to) / 2, to].map((t, i) => (
           <text
             key={t}
@@ -190,31 +193,19 @@ export function HistoryChart({
           ? `${dayjs(read.at).tz(timeZone).format('D MMM, HH:mm:ss')}: ${significant(read.value, 4)} ${unit}, 95 % ${significant(read.low, 4)} … ${significant(read.high, 4)}`
           : `solid value with its 95 % band${tolerancePct ? ', dotted tolerance' : ''}${points.some(({ ewma }) => ewma !== undefined) ? ', ochre EWMA and its limits' : ''}`}
       </figcaption>
-      <details className="small no-print">
-        <summary className="soft">The same as a table</summary>
-        <div style={{ maxHeight: 240, overflow: 'auto' }}>
-          <table className="plain-table">
-            <thead>
-              <tr>
-                <th>at</th>
-                <th>{unit}</th>
-                <th>low</th>
-                <th>high</th>
-              </tr>
-            </thead>
-            <tbody>
-              {[...points].reverse().map((point) => (
-                <tr key={point.at}>
-                  <td>{dayjs(point.at).tz(timeZone).format('D MMM, HH:mm:ss')}</td>
-                  <td>{significant(point.value, 4)}</td>
-                  <td>{significant(point.low, 4)}</td>
-                  <td>{significant(point.high, 4)}</td>
-                </tr>
-              ))}
-            </tbody>
-          </table>
-        </div>
-      </details>
+      <TableView
+        columns={['at', unit, 'low', 'high']}
+        rows={() =>
+          [...points]
+            .reverse()
+            .map((point) => [
+              dayjs(point.at).tz(timeZone).format('D MMM, HH:mm:ss'),
+              significant(point.value, 4),
+              significant(point.low, 4),
+              significant(point.high, 4),
+            ])
+        }
+      />
     </figure>
   );
 }

@@ -1,3 +1,5 @@
+import { roundMarks, TableView, useChartWidth } from './chart-frame';
+
 export interface PoleSet {
   label: string;
   poles: readonly { re: number; im: number }[];
@@ -5,40 +7,68 @@ export interface PoleSet {
   faint?: boolean;
 }
 
-const WIDTH = 320;
-const HEIGHT = 220;
+const HEIGHT = 240;
+const WIDEST = 460;
+const RIGHT = 44;
+/** Room left of the leftmost pole for its label, px. */
+const LEFT = 56;
 
-/** Closed-loop poles in the s-plane, rad/s, equal scales on both axes. Equal poles are drawn once with their number. */
+/**
+ * Closed-loop poles in the s-plane, rad/s, equal scales on both axes: the dashed rays are 45° (a damping ratio of
+ * 0.707). Equal poles are drawn once with their number.
+ */
 export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
+  const { ref, width: room } = useChartWidth();
+  const width = Math.min(WIDEST, room);
   const all = sets.flatMap(({ poles }) => poles);
-  const reach = 1.25 * Math.max(1e-6, ...all.map(({ re, im }) => Math.max(Math.abs(re), 1.4 * Math.abs(im))));
-  const scale = (WIDTH - 60) / reach;
-  const x = (re: number): number => WIDTH - 36 + re * scale;
+  const leftmost = Math.max(1e-6, ...all.map(({ re }) => -re));
+  const highest = Math.max(1e-9, ...all.map(({ im }) => Math.abs(im)));
+  const rightmost = Math.max(0, ...all.map(({ re }) => re));
+  const scale = Math.min((width - LEFT - RIGHT) / (leftmost + rightmost), (HEIGHT / 2 - 26) / highest);
+  const zero = width - RIGHT - rightmost * scale;
+  const x = (re: number): number => zero + re * scale;
   const y = (im: number): number => HEIGHT / 2 - im * scale;
-  const step = [1, 2, 5, 10]
-    .map((m) => m * 10 ** Math.floor(Math.log10(reach / 4)))
-    .find((s) => reach / s <= 5)!;
-  const marks = Array.from({ length: Math.floor(reach / step) }, (_, i) => -(i + 1) * step);
+  const reach = (zero - 8) / scale;
+  const tall = (HEIGHT / 2 - 14) / scale;
+  const ray = Math.min(reach, tall);
+  const realMarks = roundMarks(-reach, (width - 20 - zero) / scale, width / 90).filter((mark) => mark !== 0);
+  const imaginaryMarks = roundMarks(-tall, tall, 4).filter((mark) => mark !== 0);
   return (
-    <figure style={{ margin: 0 }}>
+    <figure style={{ margin: 0 }} ref={ref}>
       <svg
-        width="100%"
-        viewBox={`0 0 ${WIDTH} ${HEIGHT}`}
+        width={width}
+        height={HEIGHT}
         role="img"
         aria-label={sets.map(wordsOf).join('; ')}
-        style={{ maxWidth: 420 }}
+        style={{ display: 'block', maxWidth: '100%' }}
       >
-        <path d={`M8 ${HEIGHT / 2}H${WIDTH - 8}M${x(0)} 8V${HEIGHT - 8}`} stroke="var(--rule)" />
-        {marks.map((mark) => (
+        <path d={`M8 ${HEIGHT / 2}H${width - 8}M${zero} 8V${HEIGHT - 8}`} stroke="var(--rule)" />
+        <path
+          d={`M${zero} ${HEIGHT / 2}L${x(-ray)} ${y(ray)}M${zero} ${HEIGHT / 2}L${x(-ray)} ${y(-ray)}`}
+          stroke="var(--rule)"
+          strokeDasharray="3 4"
+        />
+        <text x={zero + 6} y="16" fontSize="12" fill="var(--soft)">
+          Im
+        </text>
+        <text x={width - 8} y={HEIGHT / 2 - 6} fontSize="12" textAnchor="end" fill="var(--soft)">
+          Re
+        </text>
+        {realMarks.map((mark) => (
           <text
             key={mark}
             x={x(mark)}
-            y={HEIGHT / 2 + 16}
+            y={HEIGHT / 2 + 18}
             fontSize="12"
             textAnchor="middle"
             fill="var(--soft)"
           >
-            {String(Number(mark.toPrecision(3))).replace('-', '−')}
+            {signed(mark)}
+          </text>
+        ))}
+        {imaginaryMarks.map((mark) => (
+          <text key={mark} x={zero + 6} y={y(mark) + 4} fontSize="12" fill="var(--soft)">
+            {signed(mark)}
           </text>
         ))}
         {sets.map(({ label, poles, faint }) =>
@@ -52,7 +82,7 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
               {times > 1 && (
                 <text
                   x={x(re)}
-                  y={y(im) - 10}
+                  y={y(im) + (faint ? -10 : -24)}
                   fontSize="12"
                   textAnchor="middle"
                   fill={faint ? 'var(--soft)' : 'var(--ink)'}
@@ -65,13 +95,28 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
         )}
       </svg>
       <figcaption className="small soft">
-        {sets.map(({ label, faint }) => `${label} ${faint ? 'grey' : 'black'}`).join(', ')}; rad/s, equal
+        {sets.map(({ label, faint }) => `${label} ${faint ? 'thin' : 'heavy'}`).join(', ')}; rad/s, equal
         scales
       </figcaption>
+      <TableView
+        columns={['poles', 'real, rad/s', 'imaginary, rad/s']}
+        rows={() =>
+          sets.flatMap(({ label, poles }) =>
+            poles.map(({ re, im }) => [
+              label,
+              signed(Number(re.toPrecision(4))),
+              signed(Number(im.toPrecision(4))),
+            ]),
+          )
+        }
+      />
     </figure>
   );
 }
 
+const signed = (value: number): string => String(value).replace('-', '−');
+
+/** Poles nearer to each other than a hundredth of the frame, as one. */
 function distinct(poles: PoleSet['poles'], reach: number): { re: number; im: number; times: number }[] {
   const found: { re: number; im: number; times: number }[] = [];
   for (const { re, im } of poles) {

@@ -1,3 +1,4 @@
+import { useElementSize } from '@mantine/hooks';
 import type { Schemas } from '../api/client';
 
 type Binding = Schemas['BindingDto'];
@@ -10,7 +11,8 @@ export const LIMIT_WORDS: Record<Binding['limits'][number]['name'], string> = {
   'following-error': 'following error',
 };
 
-const WIDTH = 640;
+/** Assumed until the page is laid out, px. */
+const USUAL_WIDTH = 640;
 const MARGIN = 24;
 /** Labels closer than this, px, move to another row. */
 const LEAST_GAP = 118;
@@ -18,11 +20,13 @@ const LEAST_GAP = 118;
 /** What binds: one logarithmic bar, the allowed interval filled, each limit a named tick, the chosen λ a mark. */
 export function LambdaRuler({ binding }: { binding: Binding }) {
   const { allowed, limits, lambda, commissionedLambda, upper, lower, kept } = binding;
+  const { ref, width: measured } = useElementSize();
+  const width = measured || USUAL_WIDTH;
   const bounds = limits.flatMap(({ lambda: at }) => (at === null ? [] : [at]));
   const all = [commissionedLambda, ...(lambda ? [lambda] : []), ...bounds];
   const from = Math.min(...all) / 1.5;
   const to = Math.max(...all) * 1.5;
-  const x = (v: number): number => MARGIN + ((WIDTH - 2 * MARGIN) * Math.log(v / from)) / Math.log(to / from);
+  const x = (v: number): number => MARGIN + ((width - 2 * MARGIN) * Math.log(v / from)) / Math.log(to / from);
   const rows: number[] = [];
   const ticks = limits
     .flatMap(({ name, lambda: at }) => (at === null ? [] : [{ name, at }]))
@@ -37,11 +41,19 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
   const height = top + 74;
   const marks = [1, 2, 5]
     .flatMap((m) => [0.1, 1, 10, 100].map((s) => m * s))
-    .filter((v) => v > from && v < to);
+    .filter((v) => v > from && v < to)
+    .sort((a, b) => a - b)
+    .reduce<number[]>((kept, v) => (kept.length && x(v) - x(kept.at(-1)!) < 28 ? kept : [...kept, v]), []);
   return (
-    <figure style={{ margin: 0 }}>
-      <svg width="100%" viewBox={`0 0 ${WIDTH} ${height}`} role="img" aria-label={rulerText(binding)}>
-        <path d={`M${MARGIN} ${top}H${WIDTH - MARGIN}`} stroke="var(--rule)" strokeWidth="9" />
+    <figure style={{ margin: 0 }} ref={ref}>
+      <svg
+        width={width}
+        height={height}
+        role="img"
+        aria-label={rulerText(binding)}
+        style={{ display: 'block', maxWidth: '100%' }}
+      >
+        <path d={`M${MARGIN} ${top}H${width - MARGIN}`} stroke="var(--rule)" strokeWidth="9" />
         {allowed && (
           <path
             d={`M${x(Math.max(from, allowed.low))} ${top}H${x(Math.min(to, allowed.high))}`}
@@ -52,7 +64,7 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
         )}
         {ticks.map(({ name, at, row, binds }) => {
           const y = top - 16 - row * 17;
-          const anchor = x(at) < 90 ? 'start' : x(at) > WIDTH - 90 ? 'end' : 'middle';
+          const anchor = x(at) < 90 ? 'start' : x(at) > width - 90 ? 'end' : 'middle';
           return (
             <g key={name} fill={binds ? 'var(--ink)' : 'var(--soft)'} stroke="none">
               <path
@@ -88,7 +100,7 @@ export function LambdaRuler({ binding }: { binding: Binding }) {
             {v}
           </text>
         ))}
-        <text x={WIDTH / 2} y={height - 4} fontSize="12" textAnchor="middle" fill="var(--soft)">
+        <text x={width / 2} y={height - 4} fontSize="12" textAnchor="middle" fill="var(--soft)">
           λ, rad/s
         </text>
       </svg>

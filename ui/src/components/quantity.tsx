@@ -27,7 +27,7 @@ export function Quantity({
     <span className="nowrap">
       {half === null
         ? significant(value)
-        : `${value.toFixed(decimalsFor(half))} ± ${half.toFixed(decimalsFor(half))}`}{' '}
+        : `${value.toFixed(decimalsFor(half)).replace('-', '−')} ± ${half.toFixed(decimalsFor(half))}`}{' '}
       <span className="soft small">{unit}</span>
     </span>
   );
