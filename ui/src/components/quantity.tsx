@@ -20,15 +20,16 @@ export function Quantity({
   value: number;
   low?: number;
   high?: number;
-  unit: string;
+  /** Left out where the heading names it. */
+  unit?: string;
 }) {
   const half = low !== undefined && high !== undefined ? (high - low) / 2 : null;
   return (
     <span className="nowrap">
       {half === null
         ? significant(value)
-        : `${value.toFixed(decimalsFor(half)).replace('-', '−')} ± ${half.toFixed(decimalsFor(half))}`}{' '}
-      <span className="soft small">{unit}</span>
+        : `${value.toFixed(decimalsFor(half)).replace('-', '−')} ± ${half.toFixed(decimalsFor(half))}`}
+      {unit && <span className="soft small"> {unit}</span>}
     </span>
   );
 }

@@ -15,11 +15,25 @@ const verdigris: MantineColorsTuple = [
   '#034b41',
 ];
 
+/** Mantine's greys of the dark scheme, as ours: 0 text, 2 dimmed, 4 border, 5 hover, 6 field, 7 ground. */
+const dark: MantineColorsTuple = [
+  palette.dark.ink,
+  '#C8CAC8',
+  palette.dark.soft,
+  '#7C8894',
+  palette.dark.rule,
+  '#263039',
+  palette.dark.surface,
+  palette.dark.ground,
+  '#10151B',
+  '#0B0F14',
+];
+
 export const theme = createTheme({
   fontFamily: "'Work Sans Variable', 'Work Sans', system-ui, sans-serif",
   fontSizes: { xs: '12px', sm: '13px', md: '15px', lg: '18px', xl: '26px' },
   headings: { fontFamily: "'Work Sans Variable', 'Work Sans', system-ui, sans-serif", fontWeight: '620' },
-  colors: { verdigris },
+  colors: { verdigris, dark },
   primaryColor: 'verdigris',
   primaryShade: { light: 6, dark: 4 },
   defaultRadius: 4,

@@ -5,10 +5,12 @@ import { Link, useParams } from 'react-router-dom';
 import { useLiveValues, type LiveTile } from '../../api/live';
 import { DriftPlot } from '../../charts/drift-plot';
 import { HistoryChart, type HistoryPoint } from '../../charts/history-chart';
-import { LiveTraceChart, TraceStore } from '../../charts/live-trace';
+import { LiveTraceChart } from '../../charts/live-trace';
+import { TraceStore } from '../../charts/trace-store';
 import { Card } from '../../components/card';
 import { ErrorState, Waiting } from '../../components/notices';
 import { Quantity, significant } from '../../components/quantity';
+import { ScrollX } from '../../components/scroll-x';
 import { SiteTime } from '../../components/site-time';
 import { StateEdge } from '../../components/state-edge';
 import { StateWord } from '../../components/state-glyph';
@@ -80,21 +82,27 @@ function AxisView({ axis }: { axis: Axis }) {
         <AxisActions axis={axis} state={state} />
       </section>
       <div className={classes.grid}>
-        <Card
-          title="Live"
-          sub={`last 20 s, thinned by extremes; sampled every ${axis.sampleTime * 1000} ms`}
-          aside={
-            indicators &&
-            `last minute: peak error ${indicators.peakFollowingError === null ? '–' : significant(indicators.peakFollowingError)} of ${axis.tolerances.followingError} mm, at the limit ${indicators.saturatedPct === null ? '–' : indicators.saturatedPct.toFixed(1)} % of moving time`
-          }
-        >
-          <LiveTraceChart store={store} timeZone={axis.timeZone} />
-        </Card>
-        <PlantCard axis={axis} tile={tile} />
-        <Histories axis={axis} />
-        <LoopCard axis={axis} />
-        <WhatHappened axis={axis} />
-        <Tunings axis={axis} />
+        <div className={classes.past}>
+          <Card
+            title="Live"
+            sub={`last 20 s, thinned by extremes; sampled every ${axis.sampleTime * 1000} ms`}
+            aside={
+              indicators &&
+              `last minute: peak error ${indicators.peakFollowingError === null ? '–' : significant(indicators.peakFollowingError)} of ${axis.tolerances.followingError} mm, at the limit ${indicators.saturatedPct === null ? '–' : indicators.saturatedPct.toFixed(1)} % of moving time`
+            }
+          >
+            <LiveTraceChart store={store} timeZone={axis.timeZone} />
+          </Card>
+          <div className={classes.histories}>
+            <Histories axis={axis} />
+          </div>
+          <WhatHappened axis={axis} />
+          <Tunings axis={axis} />
+        </div>
+        <div className={classes.present}>
+          <PlantCard axis={axis} tile={tile} />
+          <LoopCard axis={axis} />
+        </div>
       </div>
     </>
   );
@@ -129,64 +137,82 @@ function PlantCard({ axis, tile }: { axis: Axis; tile: LiveTile | null }) {
           {...(estimate && { covariance: estimate.lnCovariance })}
         />
         {estimate && (
-          <table className="plain-table" style={{ flex: '1 1 240px', width: 'auto' }}>
-            <thead>
-              <tr>
-                <th>Quantity</th>
-                <th>now</th>
-                <th>baseline</th>
-              </tr>
-            </thead>
-            <tbody>
-              <tr>
-                <td>gain K</td>
-                <td>
-                  <Quantity {...estimate.gain} unit="(mm/s)/%" />
-                </td>
-                <td>{baseline ? significant(baseline.gain) : '–'}</td>
-              </tr>
-              {estimate.gainForward && estimate.gainReverse && (
-                <tr>
-                  <td>K⁺ / K⁻</td>
-                  <td>
-                    {significant(estimate.gainForward.value)} / {significant(estimate.gainReverse.value)}
-                  </td>
-                  <td />
-                </tr>
-              )}
-              <tr>
-                <td>pole α</td>
-                <td>
-                  <Quantity {...estimate.pole} unit="rad/s" />
-                </td>
-                <td>{baseline ? significant(baseline.pole) : '–'}</td>
-              </tr>
-              <tr>
-                <td>dry friction f</td>
-                <td>
-                  <Quantity {...estimate.coulomb} unit="%" />
-                </td>
-                <td />
-              </tr>
-              <tr>
-                <td>bias b</td>
-                <td>
-                  <Quantity {...estimate.bias} unit="%" />
-                </td>
-                <td />
-              </tr>
-              <tr>
-                <td>dead time τ</td>
-                <td>{(estimate.deadTime * 1000).toFixed(1)} ms</td>
-                <td />
-              </tr>
-              <tr>
-                <td>fit of the velocity</td>
-                <td>{estimate.fitPct.toFixed(1)} %</td>
-                <td />
-              </tr>
-            </tbody>
-          </table>
+          <div style={{ flex: '1 1 300px', minWidth: 0 }}>
+            <ScrollX label="Plant, now and baseline">
+              <table className="plain-table">
+                <thead>
+                  <tr>
+                    <th>Quantity</th>
+                    <th>now</th>
+                    <th>baseline</th>
+                  </tr>
+                </thead>
+                <tbody>
+                  <tr>
+                    <td>
+                      gain K, <span className="soft small">(mm/s)/%</span>
+                    </td>
+                    <td>
+                      <Quantity {...estimate.gain} />
+                    </td>
+                    <td>{baseline ? significant(baseline.gain) : '–'}</td>
+                  </tr>
+                  {estimate.gainForward && estimate.gainReverse && (
+                    <tr>
+                      <td>
+                        K⁺ / K⁻, <span className="soft small">(mm/s)/%</span>
+                      </td>
+                      <td>
+                        {significant(estimate.gainForward.value)} / {significant(estimate.gainReverse.value)}
+                      </td>
+                      <td />
+                    </tr>
+                  )}
+                  <tr>
+                    <td>
+                      pole α, <span className="soft small">rad/s</span>
+                    </td>
+                    <td>
+                      <Quantity {...estimate.pole} />
+                    </td>
+                    <td>{baseline ? significant(baseline.pole) : '–'}</td>
+                  </tr>
+                  <tr>
+                    <td>
+                      dry friction f, <span className="soft small">%</span>
+                    </td>
+                    <td>
+                      <Quantity {...estimate.coulomb} />
+                    </td>
+                    <td />
+                  </tr>
+                  <tr>
+                    <td>
+                      bias b, <span className="soft small">%</span>
+                    </td>
+                    <td>
+                      <Quantity {...estimate.bias} />
+                    </td>
+                    <td />
+                  </tr>
+                  <tr>
+                    <td>
+                      dead time τ, <span className="soft small">ms</span>
+                    </td>
+                    <td>{(estimate.deadTime * 1000).toFixed(1)}</td>
+                    <td />
+                  </tr>
+                  <tr>
+                    <td>
+                      fit of the velocity, <span className="soft small">%</span>
+                    </td>
+                    <td>{estimate.fitPct.toFixed(1)}</td>
+                    <td />
+                  </tr>
+                </tbody>
+              </table>
+            </ScrollX>
+          </div>
         )}
       </div>
       <p className="small soft" style={{ margin: '10px 0 0' }}>

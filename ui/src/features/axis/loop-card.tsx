@@ -1,10 +1,12 @@
 import { useQuery } from '@tanstack/react-query';
+import { Bode, type BodeCurve } from '../../charts/bode';
 import { PoleMap } from '../../charts/pole-map';
 import { Card } from '../../components/card';
-import { ErrorState } from '../../components/notices';
+import { ErrorState, Waiting } from '../../components/notices';
 import type { Schemas } from '../../api/client';
 import type { Axis } from '../fleet/fleet-api';
 import { loopQuery } from './axis-api';
+import classes from './axis-page.module.css';
 
 type Answer = Schemas['DesignAnswerDto'];
 
@@ -25,6 +27,12 @@ const ROWS: { label: string; of: (answer: Answer) => string }[] = [
   { label: 'output ripple, % RMS', of: ({ sampled }) => number(sampled.outputRippleRms, 3) },
 ];
 
+const curveOf = (label: string, { frequencyResponse }: Answer): BodeCurve => ({
+  label,
+  frequencyHz: frequencyResponse.frequencyHz,
+  ...frequencyResponse.openLoop,
+});
+
 /** The loop of the present gains: on the plant they were computed for, and on the plant as identified. */
 export function LoopCard({ axis }: { axis: Axis }) {
   const designed = useQuery(loopQuery(axis, axis.baseline));
@@ -42,14 +50,22 @@ export function LoopCard({ axis }: { axis: Axis }) {
       title="The loop"
       sub={`gains of revision ${axis.revision} on the baseline plant, and on the plant as identified`}
     >
-      {designed.data && (
+      {designed.data ? (
         <>
-          <PoleMap
-            sets={[
-              ...(now.data ? [{ label: 'as it runs', poles: now.data.closedLoop.poles }] : []),
-              { label: 'as designed', poles: designed.data.closedLoop.poles, faint: true },
-            ]}
-          />
+          <div className={classes.loop}>
+            <PoleMap
+              sets={[
+                ...(now.data ? [{ label: 'as it runs', poles: now.data.closedLoop.poles }] : []),
+                { label: 'as designed', poles: designed.data.closedLoop.poles, faint: true },
+              ]}
+            />
+            <Bode
+              curves={[
+                ...(now.data ? [curveOf('as it runs', now.data)] : []),
+                { ...curveOf('as designed', designed.data), dashed: true },
+              ]}
+            />
+          </div>
           <table className="plain-table">
             <thead>
               <tr>
@@ -68,7 +84,15 @@ export function LoopCard({ axis }: { axis: Axis }) {
               ))}
             </tbody>
           </table>
+          <p className="small soft" style={{ margin: '8px 0 0' }}>
+            “none”: the loop never gets there, as with a closed loop that full feed-forward makes follow at
+            every frequency.
+          </p>
         </>
+      ) : axis.baseline && axis.gains ? (
+        <Waiting heights={[240, 300]} />
+      ) : (
+        <p className="soft">It needs a baseline and gains: commission the axis first.</p>
       )}
     </Card>
   );

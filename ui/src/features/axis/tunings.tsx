@@ -2,6 +2,7 @@ import { useQuery } from '@tanstack/react-query';
 import { Link } from 'react-router-dom';
 import { Card } from '../../components/card';
 import { significant } from '../../components/quantity';
+import { ScrollX } from '../../components/scroll-x';
 import { SiteTime } from '../../components/site-time';
 import type { Axis } from '../fleet/fleet-api';
 import { tuningsQuery } from './axis-api';
@@ -11,7 +12,7 @@ export function Tunings({ axis }: { axis: Axis }) {
   const { data } = useQuery(tuningsQuery(axis.id));
   return (
     <Card title="Tuning revisions" sub="newest first; Kp %/mm, Ki %/(mm·s), Kd %·s/mm">
-      <div className="scroll-x">
+      <ScrollX label="Tuning revisions">
         <table className="plain-table">
           <thead>
             <tr>
@@ -28,7 +29,7 @@ export function Tunings({ axis }: { axis: Axis }) {
               <tr key={tuning.revision}>
                 <td>
                   {tuning.revision}
-                  {tuning.current && <b style={{ fontWeight: 600 }}> now</b>}
+                  {tuning.current && <b style={{ fontWeight: 600 }}>&nbsp;now</b>}
                 </td>
                 <td style={{ textAlign: 'left' }}>
                   <SiteTime at={tuning.appliedAt} timeZone={axis.timeZone} /> by {tuning.appliedBy}{' '}
@@ -48,7 +49,7 @@ export function Tunings({ axis }: { axis: Axis }) {
             ))}
           </tbody>
         </table>
-      </div>
+      </ScrollX>
     </Card>
   );
 }

@@ -1,5 +1,6 @@
 import { Link } from 'react-router-dom';
 import { significant } from '../../components/quantity';
+import { ScrollX } from '../../components/scroll-x';
 import { StateWord } from '../../components/state-glyph';
 import type { Axis } from './fleet-api';
 import { useTile, type LiveTiles } from './live-tiles';
@@ -7,19 +8,19 @@ import { useTile, type LiveTiles } from './live-tiles';
 /** The fleet, dense: one line an axis. */
 export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
   return (
-    <div className="card scroll-x">
+    <ScrollX label="Axes, worst first" className="card">
       <table className="plain-table">
         <thead>
           <tr>
             <th>Axis</th>
             <th style={{ textAlign: 'left' }}>State</th>
-            <th>Error, mm</th>
-            <th>of</th>
+            <th>Peak error, mm</th>
+            <th>allowed</th>
             <th>At limit, %</th>
             <th>K, (mm/s)/%</th>
-            <th>of</th>
+            <th>K₀</th>
             <th>α, rad/s</th>
-            <th>of</th>
+            <th>α₀</th>
             <th style={{ textAlign: 'left' }}>Why</th>
           </tr>
         </thead>
@@ -29,7 +30,7 @@ export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
           ))}
         </tbody>
       </table>
-    </div>
+    </ScrollX>
   );
 }
 
