@@ -1,3 +1,4 @@
+import { useId } from 'react';
 import { STATE_COLOUR, type AxisState } from '../components/states';
 
 export interface DriftPoint {
@@ -10,7 +11,8 @@ const CHI_SQUARE_95 = 5.991;
 
 /**
  * K/K₀ across, α/α₀ up, both logarithmic from a half to double. Tolerance box, 95 % ellipse of the estimate, faint
- * trail. Beyond the frame the mark rests on the rim and points outward.
+ * trail. Beyond the frame the mark rests on the rim and points outward. A hollow mark is a guess: its 95 % interval is
+ * wider than from a half to double.
  */
 export function DriftPlot({
   state,
@@ -27,6 +29,7 @@ export function DriftPlot({
   tolerances: { gainPct: number; polePct: number };
   size?: number;
 }) {
+  const frame = useId();
   const x = (ratio: number): number => size / 2 + Math.log2(ratio) * size * 0.5;
   const y = (ratio: number): number => size / 2 - Math.log2(ratio) * size * 0.5;
   const inside = (value: number): number => Math.min(size - 3, Math.max(3, value));
@@ -37,6 +40,9 @@ export function DriftPlot({
   const px = point ? x(point.gainRatio) : 0;
   const py = point ? y(point.poleRatio) : 0;
   const beyond = point !== null && (px < 3 || py < 3 || px > size - 3 || py > size - 3);
+  const guess =
+    covariance !== undefined &&
+    Math.sqrt(CHI_SQUARE_95 * Math.max(covariance.gain, covariance.pole)) > Math.LN2;
   const path = [...trail, ...(point ? [point] : [])]
     .map(
       ({ gainRatio, poleRatio }, i) =>
@@ -50,9 +56,9 @@ export function DriftPlot({
       viewBox={`0 0 ${size} ${size}`}
       style={{ flex: 'none' }}
       role="img"
-      aria-label={label(point)}
+      aria-label={label(point, guess)}
     >
-      <clipPath id={`frame-${size}`}>
+      <clipPath id={frame}>
         <rect width={size} height={size} />
       </clipPath>
       <rect x=".5" y=".5" width={size - 1} height={size - 1} fill="var(--surface)" stroke="var(--rule)" />
@@ -65,22 +71,28 @@ export function DriftPlot({
         fill="none"
         stroke="var(--soft)"
       />
-      <g clipPath={`url(#frame-${size})`}>
+      <g clipPath={`url(#${frame})`}>
         {path && <path d={path} fill="none" stroke={colour} strokeOpacity=".35" strokeWidth="1.2" />}
-        {point && covariance && !beyond && (
+        {point && covariance && (
           <Ellipse x={px} y={py} covariance={covariance} scale={(size * 0.5) / Math.LN2} colour={colour} />
         )}
       </g>
-      {point &&
-        (beyond ? (
-          <path
-            d="M-5 -4L4 0L-5 4Z"
-            fill={colour}
-            transform={`translate(${inside(px)} ${inside(py)}) rotate(${(Math.atan2(py - size / 2, px - size / 2) * 180) / Math.PI})`}
-          />
-        ) : (
-          <circle cx={px} cy={py} r={Math.max(1.6, size / 45)} fill={colour} />
-        ))}
+      {point && (
+        <g
+          {...(guess
+            ? { fill: 'var(--surface)', stroke: colour, strokeWidth: 1.3 }
+            : { fill: colour, stroke: 'none' })}
+        >
+          {beyond ? (
+            <path
+              d="M-5 -4L4 0L-5 4Z"
+              transform={`translate(${inside(px)} ${inside(py)}) rotate(${(Math.atan2(py - size / 2, px - size / 2) * 180) / Math.PI})`}
+            />
+          ) : (
+            <circle cx={px} cy={py} r={Math.max(guess ? 2.4 : 1.6, size / 45)} />
+          )}
+        </g>
+      )}
     </svg>
   );
 }
@@ -119,9 +131,9 @@ function Ellipse({
   );
 }
 
-function label(point: DriftPoint | null): string {
+function label(point: DriftPoint | null, guess: boolean): string {
   if (!point) return 'Drift plot: nothing known yet';
   const pct = (ratio: number): string =>
     `${ratio < 1 ? 'minus' : 'plus'} ${Math.abs((ratio - 1) * 100).toFixed(0)} %`;
-  return `Drift plot: gain ${pct(point.gainRatio)}, pole ${pct(point.poleRatio)} against baseline`;
+  return `Drift plot: gain ${pct(point.gainRatio)}, pole ${pct(point.poleRatio)} against baseline${guess ? ', but hardly known' : ''}`;
 }

@@ -174,7 +174,7 @@ function plotOf(
     {
       width: element.clientWidth,
       height,
-      padding: [8, 8, 0, 0],
+      padding: [8, 26, 0, 0],
       legend: { show: false },
       cursor: { drag: { x: false, y: false }, y: false, sync: { key: 'live-trace' }, points: { size: 6 } },
       tzDate: (at) => uPlot.tzDate(new Date(at * 1000), timeZone),

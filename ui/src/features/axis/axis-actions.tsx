@@ -32,11 +32,6 @@ export function AxisActions({ axis, state }: { axis: Axis; state: Axis['state'] 
   const inMaintenance = state === 'in-maintenance';
   return (
     <div className="no-print" style={{ display: 'flex', gap: 10, flexWrap: 'wrap' }}>
-      {may(user, 'axis.baseline', axis.siteId) && axis.estimate && (
-        <Button variant="default" onClick={() => setAsking('baseline')}>
-          Take as baseline …
-        </Button>
-      )}
       {may(user, 'proposal.work', axis.siteId) && !axis.openProposal && axis.estimate && (
         <Button variant="outline" loading={draft.isPending} onClick={() => draft.mutate()}>
           Start a proposal
@@ -45,6 +40,11 @@ export function AxisActions({ axis, state }: { axis: Axis; state: Axis['state'] 
       {may(user, 'axis.maintenance', axis.siteId) && (
         <Button variant={inMaintenance ? 'filled' : 'outline'} onClick={() => setAsking('maintenance')}>
           {inMaintenance ? 'Back into production …' : 'Maintenance …'}
+        </Button>
+      )}
+      {may(user, 'axis.baseline', axis.siteId) && axis.estimate && (
+        <Button variant="default" onClick={() => setAsking('baseline')}>
+          Take as baseline …
         </Button>
       )}
       {draft.error && (
