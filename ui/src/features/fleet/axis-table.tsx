@@ -1,19 +1,22 @@
+import { memo, useRef } from 'react';
 import { Link } from 'react-router-dom';
 import { significant } from '../../components/quantity';
 import { ScrollX } from '../../components/scroll-x';
 import { StateWord } from '../../components/state-glyph';
+import classes from './axis-table.module.css';
 import type { Axis } from './fleet-api';
 import { useTile, type LiveTiles } from './live-tiles';
+import { useNear } from './use-near';
 
 /** The fleet, dense: one line an axis. */
 export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
   return (
     <ScrollX label="Axes, worst first" className="card">
-      <table className="plain-table">
+      <table className={`plain-table ${classes.table}`}>
         <thead>
           <tr>
-            <th>Axis</th>
-            <th style={{ textAlign: 'left' }}>State</th>
+            <th className={classes.axis}>Axis</th>
+            <th className={classes.state}>State</th>
             <th>Peak error, mm</th>
             <th>allowed</th>
             <th>At limit, %</th>
@@ -21,7 +24,7 @@ export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
             <th>K₀</th>
             <th>α, rad/s</th>
             <th>α₀</th>
-            <th style={{ textAlign: 'left' }}>Why</th>
+            <th className={classes.why}>Why</th>
           </tr>
         </thead>
         <tbody>
@@ -34,14 +37,15 @@ export function AxisTable({ axes, tiles }: { axes: Axis[]; tiles: LiveTiles }) {
   );
 }
 
-function Row({ axis, tiles }: { axis: Axis; tiles: LiveTiles }) {
-  const { tile } = useTile(tiles, axis.id);
+const Row = memo(function Row({ axis, tiles }: { axis: Axis; tiles: LiveTiles }) {
+  const row = useRef<HTMLTableRowElement>(null);
+  const { tile } = useTile(tiles, axis.id, useNear(row));
   const indicators = tile ? tile.indicators : axis.indicators;
   const estimate = tile?.estimate ?? axis.estimate;
   const number = (value: number | null | undefined): string => (value == null ? '–' : significant(value));
   return (
-    <tr>
-      <td className="nowrap">
+    <tr ref={row}>
+      <td>
         <Link to={`/axes/${axis.id}`} style={{ fontWeight: 600, color: 'var(--ink)' }}>
           {axis.tag}
         </Link>{' '}
@@ -57,9 +61,9 @@ function Row({ axis, tiles }: { axis: Axis; tiles: LiveTiles }) {
       <td className="soft">{number(axis.baseline?.gain)}</td>
       <td>{number(estimate?.pole.value)}</td>
       <td className="soft">{number(axis.baseline?.pole)}</td>
-      <td style={{ textAlign: 'left', minWidth: 260 }} className="small soft">
+      <td style={{ textAlign: 'left' }} className="small soft">
         {tile?.stateReason ?? axis.stateReason}
       </td>
     </tr>
   );
-}
+});

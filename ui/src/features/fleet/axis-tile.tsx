@@ -1,5 +1,6 @@
-import { memo } from 'react';
+import { memo, useRef } from 'react';
 import { Link } from 'react-router-dom';
+import type { StripPoint } from '../../api/live';
 import { DriftPlot } from '../../charts/drift-plot';
 import { ErrorStrip, OutputStrip } from '../../charts/strips';
 import { StateEdge } from '../../components/state-edge';
@@ -7,10 +8,15 @@ import { STATE_COLOUR, STATE_TINT, STATE_WORDS } from '../../components/states';
 import classes from './axis-tile.module.css';
 import type { Axis } from './fleet-api';
 import { useTile, type LiveTiles } from './live-tiles';
+import { useNear } from './use-near';
+
+const NOT_DRAWN: readonly StripPoint[] = [];
 
 /** Says at arm's length whether to come closer. Never blinks. */
 export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; tiles: LiveTiles }) {
-  const { tile, strip } = useTile(tiles, axis.id);
+  const ref = useRef<HTMLElement>(null);
+  const near = useNear(ref);
+  const { tile, strip } = useTile(tiles, axis.id, near);
   const state = tile?.state ?? axis.state;
   const reason = tile?.stateReason ?? axis.stateReason;
   const indicators = tile ? tile.indicators : axis.indicators;
@@ -21,6 +27,7 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
   const alert = axis.openAlerts.find(({ state: of }) => of === 'unacknowledged') ?? axis.openAlerts[0];
   return (
     <article
+      ref={ref}
       className={classes.tile}
       style={{ background: STATE_TINT[state] }}
       data-state={state}
@@ -41,20 +48,24 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
         </div>
       </div>
       <div className={classes.row}>
-        <DriftPlot
-          state={state}
-          tolerances={axis.tolerances}
-          trail={axis.trail}
-          point={
-            estimate && axis.baseline
-              ? {
-                  gainRatio: estimate.gain.value / axis.baseline.gain,
-                  poleRatio: estimate.pole.value / axis.baseline.pole,
-                }
-              : null
-          }
-          {...(estimate && { covariance: estimate.lnCovariance })}
-        />
+        {near ? (
+          <DriftPlot
+            state={state}
+            tolerances={axis.tolerances}
+            trail={axis.trail}
+            point={
+              estimate && axis.baseline
+                ? {
+                    gainRatio: estimate.gain.value / axis.baseline.gain,
+                    poleRatio: estimate.pole.value / axis.baseline.pole,
+                  }
+                : null
+            }
+            {...(estimate && { covariance: estimate.lnCovariance })}
+          />
+        ) : (
+          <div className={classes.plotPlace} />
+        )}
         <div className={classes.strips}>
           <div className={classes.label}>
             <span>error</span>
@@ -66,14 +77,18 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
                 : `${millimetres(indicators.peakFollowingError)} of ${axis.tolerances.followingError} mm`}
             </b>
           </div>
-          <ErrorStrip points={strip} colour={colour} tolerance={axis.tolerances.followingError} />
+          <ErrorStrip
+            points={near ? strip : NOT_DRAWN}
+            colour={colour}
+            tolerance={axis.tolerances.followingError}
+          />
           <div className={classes.label}>
             <span>at limit</span>
             <b>
               {silent || indicators?.saturatedPct == null ? '–' : `${indicators.saturatedPct.toFixed(1)} %`}
             </b>
           </div>
-          <OutputStrip points={strip} colour={colour} />
+          <OutputStrip points={near ? strip : NOT_DRAWN} colour={colour} />
         </div>
       </div>
       <div className={classes.why}>

@@ -49,7 +49,13 @@ function joined(older: readonly StripPoint[], newer: readonly StripPoint[]): rea
   return [...older.filter(([t]) => t < first), ...newer].slice(-KEEP);
 }
 
-export function useTile(tiles: LiveTiles, id: number): TileValues {
-  const listen = useCallback((listener: () => void) => tiles.listen(id, listener), [tiles, id]);
+const NEVER = (): void => {};
+
+/** The newest values of an axis; they move what is drawn only while `follow` holds. */
+export function useTile(tiles: LiveTiles, id: number, follow: boolean): TileValues {
+  const listen = useCallback(
+    (listener: () => void) => (follow ? tiles.listen(id, listener) : NEVER),
+    [tiles, id, follow],
+  );
   return useSyncExternalStore(listen, () => tiles.get(id));
 }
