@@ -49,6 +49,7 @@ describe('the rota of a site', () => {
     expect(all.body.items[0]).toEqual({
       siteId: yard,
       siteName: 'Kiln Yard',
+      timeZone: 'America/New_York',
       userId: body.onCall.userId,
       name: body.onCall.name,
       until: body.onCall.until,

@@ -4,24 +4,38 @@ import { queryClient } from '../../api/query-client';
 
 export type Alert = Schemas['AlertDto'];
 
-/** What is not over, most urgent first. */
-export const openAlertsQuery = queryOptions({
-  queryKey: ['alerts', 'open'],
-  queryFn: () => answer(client.GET('/api/v1/alerts', { params: { query: { state: 'open', limit: 500 } } })),
-});
+/** What is not over, most urgent first; of one site or, without, of all that the person may see. */
+export const openAlertsQuery = (siteId?: number) =>
+  queryOptions({
+    queryKey: ['alerts', 'open', siteId ?? 'all'],
+    queryFn: () =>
+      answer(
+        client.GET('/api/v1/alerts', {
+          params: { query: { state: 'open', limit: 500, ...(siteId && { siteId }) } },
+        }),
+      ),
+  });
 
 /** What is over, newest first, page by page. */
-export const pastAlertsQuery = infiniteQueryOptions({
-  queryKey: ['alerts', 'past'],
-  initialPageParam: undefined as string | undefined,
-  queryFn: ({ pageParam }) =>
-    answer(
-      client.GET('/api/v1/alerts', {
-        params: { query: { state: 'normal', limit: 50, ...(pageParam && { cursor: pageParam }) } },
-      }),
-    ),
-  getNextPageParam: ({ nextCursor }) => nextCursor ?? undefined,
-});
+export const pastAlertsQuery = (siteId?: number) =>
+  infiniteQueryOptions({
+    queryKey: ['alerts', 'past', siteId ?? 'all'],
+    initialPageParam: undefined as string | undefined,
+    queryFn: ({ pageParam }) =>
+      answer(
+        client.GET('/api/v1/alerts', {
+          params: {
+            query: {
+              state: 'normal',
+              limit: 50,
+              ...(siteId && { siteId }),
+              ...(pageParam && { cursor: pageParam }),
+            },
+          },
+        }),
+      ),
+    getNextPageParam: ({ nextCursor }) => nextCursor ?? undefined,
+  });
 
 export const alertQuery = (id: number) =>
   queryOptions({
@@ -29,11 +43,15 @@ export const alertQuery = (id: number) =>
     queryFn: () => answer(client.GET('/api/v1/alerts/{id}', { params: { path: { id } } })),
   });
 
+/** A refusal means that somebody else was faster: what is shown is asked for again in either case. */
 async function changed(request: Promise<Alert>): Promise<Alert> {
-  const alert = await request;
-  queryClient.setQueryData(['alerts', alert.id], alert);
-  await queryClient.invalidateQueries({ queryKey: ['alerts'] });
-  return alert;
+  try {
+    const alert = await request;
+    queryClient.setQueryData(alertQuery(alert.id).queryKey, alert);
+    return alert;
+  } finally {
+    await queryClient.invalidateQueries({ queryKey: ['alerts'] });
+  }
 }
 
 export const acknowledge = (id: number) =>
