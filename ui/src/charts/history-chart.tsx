@@ -1,5 +1,5 @@
-import dayjs from 'dayjs';
 import { significant } from '../components/quantity';
+import { onSite } from '../components/site-clock';
 import { roundMarks, TableView, useChartWidth, useReading } from './chart-frame';
 
 export interface HistoryPoint {
@@ -174,7 +174,7 @@ export function HistoryChart({
             fill="var(--soft)"
             textAnchor={(['start', 'middle', 'end'] as const)[i]}
           >
-            {dayjs(t).tz(timeZone).format(format)}
+            {onSite(t, timeZone).format(format)}
           </text>
         ))}
         {at !== null && (
@@ -190,7 +190,7 @@ export function HistoryChart({
       </svg>
       <figcaption className="small soft" aria-live="polite" style={{ minHeight: 19 }}>
         {read
-          ? `${dayjs(read.at).tz(timeZone).format('D MMM, HH:mm:ss')}: ${significant(read.value, 4)} ${unit}, 95 % ${significant(read.low, 4)} … ${significant(read.high, 4)}`
+          ? `${onSite(read.at, timeZone).format('D MMM, HH:mm:ss')}: ${significant(read.value, 4)} ${unit}, 95 % ${significant(read.low, 4)} … ${significant(read.high, 4)}`
           : `solid value with its 95 % band${tolerancePct ? ', dotted tolerance' : ''}${points.some(({ ewma }) => ewma !== undefined) ? ', ochre EWMA and its limits' : ''}`}
       </figcaption>
       <TableView
@@ -199,7 +199,7 @@ export function HistoryChart({
           [...points]
             .reverse()
             .map((point) => [
-              dayjs(point.at).tz(timeZone).format('D MMM, HH:mm:ss'),
+              onSite(point.at, timeZone).format('D MMM, HH:mm:ss'),
               significant(point.value, 4),
               significant(point.low, 4),
               significant(point.high, 4),

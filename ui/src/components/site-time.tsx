@@ -1,12 +1,5 @@
-import dayjs from 'dayjs';
-import relativeTime from 'dayjs/plugin/relativeTime';
-import timezone from 'dayjs/plugin/timezone';
-import utc from 'dayjs/plugin/utc';
 import { useSyncExternalStore } from 'react';
-
-dayjs.extend(utc);
-dayjs.extend(timezone);
-dayjs.extend(relativeTime);
+import { onSite } from './site-clock';
 
 let now = Date.now();
 function everyTenSeconds(listener: () => void): () => void {
@@ -28,11 +21,11 @@ export function SiteTime({
   relative?: boolean;
 }) {
   const present = useSyncExternalStore(everyTenSeconds, () => now);
-  const local = dayjs(at).tz(timeZone);
-  const today = local.isSame(dayjs(present).tz(timeZone), 'day');
+  const local = onSite(at, timeZone);
+  const today = local.isSame(onSite(present, timeZone), 'day');
   return (
     <time
-      dateTime={dayjs(at).toISOString()}
+      dateTime={new Date(at).toISOString()}
       title={`${local.format('ddd D MMM YYYY, HH:mm:ss')} (${timeZone})`}
     >
       {relative
