@@ -160,6 +160,15 @@ describe('faults at the machine', () => {
     expect(axis.faults).toEqual([]);
   });
 
+  it.each([-1, 5])('heal a derivative gain changed by %s to the bit', (amount) => {
+    const axis = commissioned(feed);
+    axis.addFault(fault('derivative-gain', amount));
+    axis.addFault(fault('derivative-gain', 0.3));
+    expect(axis.controller.gains.kd).toBeCloseTo((1 + amount) * 1.3 * sheetGains(feed).kd, 5);
+    axis.heal();
+    expect(axis.controller.gains).toEqual(inRegisters(sheetGains(feed)));
+  });
+
   it('derivative gain makes the output hum while standing and moving, until other gains are applied', () => {
     const lift = tarnwickAxis('ST-01 lift');
     const axis = commissioned(lift);

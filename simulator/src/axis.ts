@@ -61,6 +61,8 @@ export class Axis {
   private grain = 1;
   private restless = 0;
   private restlessTicks = 0;
+  /** Gains as they were ordered last, before anybody changed them at the machine. */
+  private ordered: Pick<GainsOrder, 'gains' | 'structure'> | null = null;
   private order: (GainsOrder & { until: number }) | null = null;
   private stillTicks = 0;
   private stillTarget = NaN;
@@ -116,9 +118,10 @@ export class Axis {
   /** Takes over its first gains and goes into production. */
   start({ revision, gains, structure }: GainsOrder): void {
     this.controller.start(gains, structure, this.program.home);
+    this.ordered = { gains: inRegisters(gains), structure };
     this.revision = revision;
     this.running = true;
-    this.overlayGains();
+    if (this.derivativeChanged) this.loadGains();
   }
 
   /** Into maintenance: the move under way is finished, then the axis stays. Out of it: production goes on. */
@@ -153,7 +156,8 @@ export class Axis {
     else if (!this.atRest) return null;
     else {
       this.faults = this.faults.filter(({ kind }) => kind !== 'derivative-gain');
-      this.controller.change(order.gains, order.structure);
+      this.ordered = order;
+      this.loadGains();
     }
     this.revision = order.revision;
     this.order = null;
@@ -171,27 +175,30 @@ export class Axis {
   addFault(fault: Fault): void {
     this.faults.push({ ...fault, since: this.time });
     this.refresh();
-    if (fault.kind === 'derivative-gain' && this.running) this.raiseDerivative(1 + fault.amount);
+    if (fault.kind === 'derivative-gain') this.loadGains();
   }
 
-  /** Everything as it was made. */
+  /** Everything as it was made, the gains as they were ordered. */
   heal(): void {
-    for (const { kind, amount } of this.faults)
-      if (kind === 'derivative-gain' && this.running && amount > -1) this.raiseDerivative(1 / (1 + amount));
+    const changed = this.derivativeChanged;
     this.faults = [];
     this.refresh();
+    if (changed) this.loadGains();
   }
 
-  /** Faults on gains that came before there were any. */
-  private overlayGains(): void {
-    for (const { kind, amount } of this.faults)
-      if (kind === 'derivative-gain') this.raiseDerivative(1 + amount);
+  private get derivativeChanged(): boolean {
+    return this.faults.some(({ kind }) => kind === 'derivative-gain');
   }
 
-  /** Kd at the machine; velocity feed-forward that makes up for it (PI-D: Kv = 1/K + Kd) goes with it. */
-  private raiseDerivative(factor: number): void {
-    const { gains, structure } = this.controller;
-    const kd = gains.kd * factor;
+  /**
+   * Puts the ordered gains into the controller, Kd as changed at the machine; velocity feed-forward that makes up
+   * for it (PI-D: Kv = 1/K + Kd) goes with it.
+   */
+  private loadGains(): void {
+    if (!this.ordered) return;
+    const { gains, structure } = this.ordered;
+    let kd = gains.kd;
+    for (const { kind, amount } of this.faults) if (kind === 'derivative-gain') kd *= 1 + amount;
     const kv = structure === 'PI-D' && gains.kv !== 0 ? gains.kv + kd - gains.kd : gains.kv;
     this.controller.change({ ...gains, kd, kv }, structure);
   }

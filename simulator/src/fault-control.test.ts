@@ -94,11 +94,23 @@ describe('fault control', () => {
     expect(axis.faults).toEqual([]);
   });
 
+  it('refuses a fault that with those already there would leave no mass', async () => {
+    const half = { axis: feed.tag, kind: 'load', amount: -0.5 };
+    expect((await post(half)).status).toBe(201);
+    const refused = await post(half);
+    expect(refused.status).toBe(409);
+    const { errors } = (await refused.json()) as { errors: { path: string }[] };
+    expect(errors[0]!.path).toBe('amount');
+    expect(axis.faults).toHaveLength(1);
+    expect(axis.physics.mass).toBeCloseTo(feed.physics.mass / 2, 9);
+  });
+
   it('refuses what it does not know, and a query where none belongs', async () => {
     expect((await fetch(`${base}/nowhere`)).status).toBe(404);
     expect((await fetch(`${base}/axes?state=1`)).status).toBe(400);
     expect((await fetch(`${base}/faults/XX-01`, { method: 'DELETE' })).status).toBe(404);
     expect((await fetch(`${base}/axes/%E0%A4%A`)).status).toBe(400);
+    expect((await fetch(`${base}//`)).status).toBe(400);
     expect((await post('x'.repeat(200_000))).status).toBe(413);
   });
 });

@@ -1,5 +1,5 @@
 import type { Axis } from './axis.js';
-import { checkedFault, type ActiveFault } from './faults.js';
+import { beyondTogether, checkedFault, type ActiveFault } from './faults.js';
 import type { Gateway } from './gateway.js';
 import { objectBody, Refused, type Answer, type Request } from './loopback-server.js';
 import { plantOf, type PlantFigures } from './physics.js';
@@ -94,6 +94,8 @@ export function faultControl(
           'the fault was not made',
           fault.map((message) => ({ path: message.split(' ')[0]!, message })),
         );
+      const beyond = beyondTogether(axis.faults, fault);
+      if (beyond) throw new Refused(409, 'the fault was not made', [{ path: 'amount', message: beyond }]);
       axis.addFault(fault);
       return { status: 201, json: truthOf(axis, gateway) };
     }

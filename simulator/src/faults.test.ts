@@ -1,5 +1,13 @@
 import { describe, expect, it } from 'vitest';
-import { checkedFault, FAULT, FAULT_KINDS, physicsWith, type ActiveFault, type FaultKind } from './faults.js';
+import {
+  beyondTogether,
+  checkedFault,
+  FAULT,
+  FAULT_KINDS,
+  physicsWith,
+  type ActiveFault,
+  type FaultKind,
+} from './faults.js';
 import { plantOf, type Physics } from './physics.js';
 
 const sound: Physics = {
@@ -95,4 +103,27 @@ describe('checkedFault', () => {
     expect(problems).toHaveLength(1);
     expect(problems[0]).toMatch(new RegExp(`^${named} `));
   });
+});
+
+describe('beyondTogether', () => {
+  it.each(['load', 'viscous-drag', 'dry-friction', 'null-shift'] as const)(
+    '%s: what is refused would leave the range, what is let through leaves a machine with mass and friction',
+    (kind) => {
+      const { min, max } = FAULT[kind];
+      expect(beyondTogether([], fault(kind, min))).toBeNull();
+      expect(beyondTogether([fault(kind, min)], fault(kind, min))).toMatch(/^amount /);
+      expect(beyondTogether([fault(kind, max)], fault(kind, 0.1))).toMatch(/^amount /);
+      expect(beyondTogether([fault(kind, min)], fault(kind, -min))).toBeNull();
+      expect(beyondTogether([fault('silence', 1)], fault(kind, min))).toBeNull();
+    },
+  );
+
+  it.each(['supply-pressure', 'one-direction'] as const)(
+    '%s never takes the force away altogether',
+    (kind) => {
+      const twice = [fault(kind, FAULT[kind].min), fault(kind, FAULT[kind].min)];
+      expect(beyondTogether(twice.slice(1), twice[0]!)).toBeNull();
+      expect(physicsWith(sound, twice, 200).forceForward).toBeGreaterThan(0);
+    },
+  );
 });

@@ -125,6 +125,18 @@ export function physicsWith(sound: Physics, faults: readonly ActiveFault[], time
   return physics;
 }
 
+/** Kinds whose amounts add up: two that are possible each can together leave less than no mass or friction. */
+const ADDING: readonly FaultKind[] = ['load', 'viscous-drag', 'dry-friction', 'null-shift'];
+
+/** Why a fault cannot come on top of those of its kind that are there; null when it can. */
+export function beyondTogether(present: readonly Fault[], { kind, amount }: Fault): string | null {
+  if (!ADDING.includes(kind)) return null;
+  const { min, max } = FAULT[kind];
+  const sum = present.reduce((total, fault) => (fault.kind === kind ? total + fault.amount : total), amount);
+  if (sum >= min && sum <= max) return null;
+  return `amount makes ${sum} with the ${kind} already there; together they must be from ${min} to ${max}`;
+}
+
 /** A fault as somebody asks for it, checked. */
 export function checkedFault(kind: unknown, amount: unknown, rampSeconds: unknown): Fault | string[] {
   const problems: string[] = [];

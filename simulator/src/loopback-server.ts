@@ -70,12 +70,13 @@ async function handle(
   incoming: IncomingMessage,
   answer: (request: Request) => Answer | Promise<Answer>,
 ): Promise<Answer> {
-  const url = new URL(incoming.url ?? '/', 'http://127.0.0.1');
+  let url: URL;
   let path: string;
   try {
+    url = new URL(incoming.url ?? '/', 'http://127.0.0.1');
     path = decodeURIComponent(url.pathname);
   } catch {
-    throw new Refused(400, 'the path is not valid percent-encoding');
+    throw new Refused(400, 'the path is not valid, or not valid percent-encoding');
   }
   return answer({
     method: incoming.method ?? 'GET',

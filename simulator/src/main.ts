@@ -27,7 +27,7 @@ if (schedule !== 'default' && schedule !== 'none') {
 /** The tokens that the service has given its gateways; empty while the file is not there or not complete. */
 function readTokens(): Record<string, string> {
   try {
-    return JSON.parse(readFileSync(tokensFile, 'utf8')) as Record<string, string>;
+    return { ...(JSON.parse(readFileSync(tokensFile, 'utf8')) as Record<string, string> | null) };
   } catch {
     return {};
   }
