@@ -33,7 +33,10 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
   const take = useMutation({ mutationFn: () => acknowledge(alert.id) });
   const unshelving = useMutation({ mutationFn: () => unshelve(alert.id) });
   const edge = edgeOf(alert);
-  const told = alert.events.filter(({ action }) => action === 'told' || action === 'nobody on call').at(-1);
+  const told = alert.events.filter(
+    ({ at, action }) => (action === 'told' || action === 'nobody on call') && at >= alert.raisedAt,
+  );
+  const refusal = take.error ?? unshelving.error;
   const acknowledgeable = alert.state === 'unacknowledged' || alert.state === 'returned-unacknowledged';
   const shelvable = acknowledgeable || alert.state === 'acknowledged';
   const allowed = may(user, 'alert.acknowledge', alert.siteId);
@@ -64,6 +67,11 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
           </>
         )}{' '}
         · <SiteTime at={alert.raisedAt} timeZone={alert.timeZone} relative />
+        {alert.returnedAt && (
+          <>
+            , returned to normal <SiteTime at={alert.returnedAt} timeZone={alert.timeZone} />
+          </>
+        )}
         {alert.nextStepAt && alert.state === 'unacknowledged' && (
           <>
             , next mail at <SiteTime at={alert.nextStepAt} timeZone={alert.timeZone} />
@@ -80,15 +88,18 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
       </div>
       <p style={{ fontWeight: 560 }}>{alert.message}</p>
       {alert.state !== 'normal' && <p className="soft">Do: {alert.action}</p>}
-      {told && (
-        <p className="soft small">
-          {told.action === 'told' ? `Told: ${told.note}` : told.note},{' '}
-          <SiteTime at={told.at} timeZone={alert.timeZone} />
-        </p>
+      {told.length > 0 && (
+        <ul className={classes.told} aria-label="Who was told">
+          {told.map(({ at, action, note }, i) => (
+            <li key={i}>
+              {action === 'told' ? `Told: ${note}` : note}, <SiteTime at={at} timeZone={alert.timeZone} />
+            </li>
+          ))}
+        </ul>
       )}
-      {(take.error ?? unshelving.error) && (
-        <p role="alert" style={{ color: 'var(--out)', fontWeight: 560 }}>
-          {(take.error ?? unshelving.error)!.message}
+      {refusal && (
+        <p role="alert" className={classes.refusal}>
+          {refusal.message}
         </p>
       )}
       <div className={classes.actions}>
@@ -117,7 +128,7 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
             Open proposal
           </Button>
         )}
-        {detailed && (
+        {(detailed || alert.proposalId === null) && (
           <Button size="lg" variant="default" component={Link} to={`/axes/${alert.axisId}`}>
             Open axis
           </Button>

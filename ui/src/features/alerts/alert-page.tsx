@@ -67,7 +67,7 @@ function Note({ alert }: { alert: Alert }) {
         onChange={(event) => setText(event.currentTarget.value)}
       />
       {add.error && (
-        <p role="alert" style={{ color: 'var(--out)', margin: 0 }}>
+        <p role="alert" className={classes.refusal} style={{ margin: 0 }}>
           {add.error.message}
         </p>
       )}

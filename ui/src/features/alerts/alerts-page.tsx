@@ -1,7 +1,8 @@
-import { Button, SegmentedControl } from '@mantine/core';
+import { Button, SegmentedControl, Select } from '@mantine/core';
 import { useInfiniteQuery, useQuery } from '@tanstack/react-query';
 import { useSearchParams } from 'react-router-dom';
 import { useLiveStatus } from '../../api/live';
+import { sitesQuery } from '../../api/sites';
 import { EmptyState, ErrorState, Waiting } from '../../components/notices';
 import { AlertCard } from './alert-card';
 import classes from './alerts.module.css';
@@ -9,31 +10,55 @@ import { openAlertsQuery, pastAlertsQuery } from './alerts-api';
 
 export function Component() {
   const [search, setSearch] = useSearchParams();
+  const { data: sites } = useQuery(sitesQuery);
   const past = search.get('show') === 'past';
+  const siteId = Number(search.get('site')) || undefined;
+  const set = (name: string, value: string | null): void =>
+    setSearch(
+      (former) => {
+        const next = new URLSearchParams(former);
+        if (value) next.set(name, value);
+        else next.delete(name);
+        return next;
+      },
+      { replace: true },
+    );
   return (
     <>
       <title>Alerts · Polewright</title>
-      <div style={{ display: 'flex', alignItems: 'baseline', gap: 14, flexWrap: 'wrap' }}>
+      <div className={classes.heading}>
         <h1>Alerts</h1>
         <span style={{ flex: 1 }} />
+        {sites && sites.items.length > 1 && (
+          <Select
+            size="xs"
+            w={150}
+            aria-label="Site"
+            placeholder="All sites"
+            clearable
+            value={siteId ? String(siteId) : null}
+            onChange={(value) => set('site', value)}
+            data={sites.items.map(({ id, name }) => ({ value: String(id), label: name }))}
+          />
+        )}
         <SegmentedControl
           size="xs"
           aria-label="Which alerts"
           value={past ? 'past' : 'open'}
-          onChange={(value) => setSearch(value === 'past' ? { show: 'past' } : {}, { replace: true })}
+          onChange={(value) => set('show', value === 'past' ? 'past' : null)}
           data={[
             { value: 'open', label: 'open' },
             { value: 'past', label: 'past' },
           ]}
         />
       </div>
-      {past ? <Past /> : <Open />}
+      {past ? <Past siteId={siteId} /> : <Open siteId={siteId} />}
     </>
   );
 }
 
-function Open() {
-  const { data, error, isPending, refetch } = useQuery(openAlertsQuery);
+function Open({ siteId }: { siteId: number | undefined }) {
+  const { data, error, isPending, refetch } = useQuery(openAlertsQuery(siteId));
   const { connected } = useLiveStatus();
   if (error && !data) return <ErrorState error={error} what="The alerts" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[24, 220, 220]} />;
@@ -43,9 +68,12 @@ function Open() {
   const taken = data.items.filter(({ state }) => state === 'acknowledged').length;
   return (
     <>
-      <p className="soft" role="status" style={{ margin: '4px 0 24px' }}>
-        {waiting === 0 ? 'Nothing waits for you' : `${waiting} wait${waiting === 1 ? 's' : ''} for somebody`}{' '}
-        · {taken} acknowledged{connected && ' · live'}
+      <p className="soft" style={{ margin: '4px 0 24px' }}>
+        <span role="status">
+          {waiting === 0 ? 'Nothing waits' : `${waiting} wait${waiting === 1 ? 's' : ''} for somebody`} ·{' '}
+          {taken} acknowledged
+        </span>
+        {connected && ' · live'}
       </p>
       {data.items.length === 0 ? (
         <EmptyState title="Nothing needs you">
@@ -62,9 +90,9 @@ function Open() {
   );
 }
 
-function Past() {
+function Past({ siteId }: { siteId: number | undefined }) {
   const { data, error, isPending, refetch, hasNextPage, fetchNextPage, isFetchingNextPage } =
-    useInfiniteQuery(pastAlertsQuery);
+    useInfiniteQuery(pastAlertsQuery(siteId));
   if (error && !data)
     return <ErrorState error={error} what="The past alerts" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[220, 220]} />;
@@ -78,6 +106,11 @@ function Past() {
           <AlertCard key={alert.id} alert={alert} />
         ))}
       </div>
+      {error && (
+        <p role="alert" className={classes.refusal}>
+          The older ones could not be loaded: {error.message}
+        </p>
+      )}
       {hasNextPage && (
         <Button variant="outline" mt="lg" loading={isFetchingNextPage} onClick={() => void fetchNextPage()}>
           Older ones
