@@ -6,61 +6,9 @@ import { AxisTile } from '../src/features/fleet/axis-tile';
 import type { Axis } from '../src/features/fleet/fleet-api';
 import { Component as FleetPage } from '../src/features/fleet/fleet-page';
 import { LiveTiles } from '../src/features/fleet/live-tiles';
+import { axisOf } from './axis-of';
 import { show } from './show';
 import { refusal, serviceOfTests, showPage } from './show-page';
-
-const axisOf = (differs: Partial<Axis>): Axis => ({
-  id: 3,
-  tag: 'GL-02 carriage',
-  name: 'Glaze carriage',
-  siteId: 1,
-  siteName: 'Tile Hall',
-  timeZone: 'Europe/London',
-  machineId: 5,
-  machineName: 'Glaze line',
-  actuator: 'electric',
-  state: 'in-tune',
-  stateReason: 'K and pole within 2 % of baseline.',
-  stateSince: '2026-12-01T06:00:00.000Z',
-  baseline: { gain: 16, pole: 12.9 },
-  baselineAt: '2026-10-22T06:00:00.000Z',
-  estimate: {
-    at: '2026-12-01T06:10:00.000Z',
-    gain: { value: 16.1, low: 15.9, high: 16.3 },
-    pole: { value: 12.8, low: 12.5, high: 13.1 },
-    coulomb: { value: 1.5, low: 1.3, high: 1.7 },
-    bias: { value: 0, low: -0.1, high: 0.1 },
-    deadTime: 0.002,
-    lnCovariance: { gain: 4e-5, cross: 0, pole: 1.4e-4 },
-    fitPct: 99,
-    movingSeconds: 48,
-    verdict: 'usable',
-    remarks: [],
-  },
-  gains: { kp: 5.78, ki: 38.5, kd: 0.227, kv: 0.3, ka: 0.005 },
-  structure: 'PI-D',
-  pattern: { kind: 'triple', lambda: 20 },
-  lambda: 20,
-  feedForward: true,
-  revision: 1,
-  tolerances: { followingError: 0.85, gainPct: 15, polePct: 20, saturatedPct: 5 },
-  travel: { min: 0, max: 700 },
-  move: { distance: 600, duration: 1.2 },
-  sampleTime: 0.002,
-  resolution: 0.01,
-  indicators: {
-    peakFollowingError: 0.4,
-    rmsFollowingError: 0.2,
-    saturatedPct: 0,
-    at: '2026-12-01T06:10:00.000Z',
-  },
-  maintenance: null,
-  trail: [],
-  openAlerts: [],
-  openProposal: null,
-  lastSampleAt: '2026-12-01T06:10:00.000Z',
-  ...differs,
-});
 
 const tileOf = (differs: Partial<LiveTile>): LiveTile => ({
   id: 3,
