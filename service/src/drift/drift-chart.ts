@@ -137,7 +137,7 @@ function updateQuantity(
     else follow(chart, value);
   }
   let direction = signalOf(chart);
-  const interval = pooled && pooled.verdict !== 'unidentifiable' ? pooled[quantity] : null;
+  const interval = pooled?.verdict === 'usable' ? pooled[quantity] : null;
   if (chart.centre !== null && interval) {
     const base = Math.exp(chart.centre);
     const low = interval.low / base;

@@ -78,12 +78,17 @@ export function unknownPlant(
 const LEAST_MOTION = 1;
 const FAIR_MOTION = 3;
 
-/** From a pooled fit to figures with 95 % intervals, a verdict and remarks. */
+/**
+ * From a pooled fit to figures with 95 % intervals, a verdict and remarks.
+ *
+ * @param unsettled the newest window contradicted the older ones: the plant changed within it or just before
+ */
 export function describePlant(
   pooled: PooledFit | null,
   prior: PlantPrior,
   deadTime: number,
   movingSeconds: number,
+  unsettled = false,
 ): PlantEstimate {
   if (movingSeconds < LEAST_MOTION) {
     return unknownPlant(prior, movingSeconds, deadTime, [`only ${seconds(movingSeconds)} of motion`]);
@@ -117,6 +122,7 @@ export function describePlant(
     remarks.push(text);
     verdict = 'doubtful';
   };
+  if (unsettled) doubt('the plant has just changed: not settled yet');
   if (movingSeconds < FAIR_MOTION) doubt(`only ${seconds(movingSeconds)} of motion`);
   const half = (i: Interval): number => 50 * Math.log(i.high / i.low);
   if (half(gain) > 10) doubt(`the gain is known to ±${half(gain).toFixed(0)} % only`);

@@ -56,14 +56,16 @@ export const STATE = {
   windowOpen: 15,
   windowTaken: 16,
   delayShift: 17,
+  /** 1 from a window that contradicts the older ones until one agrees with what was kept. */
+  unsettled: 18,
   /** Inputs of the interval before, for the hold's weighted mean. */
-  previous: 18,
+  previous: 19,
   /** Three stages of each of six signals. */
-  filters: 24,
-  positions: 42,
-  outputs: 42 + LINE,
-  block: 42 + 2 * LINE,
-  ring: 42 + 2 * LINE + BLOCK.length,
+  filters: 25,
+  positions: 43,
+  outputs: 43 + LINE,
+  block: 43 + 2 * LINE,
+  ring: 43 + 2 * LINE + BLOCK.length,
 } as const;
 
 /** Constants of an axis's filters, all following from its prior. */

@@ -34,6 +34,14 @@ const WINDOW_PATIENCE = 30;
 const WINDOW_LEAST_MOTION = 1.5;
 /** Share of samples a direction needs to count as present. */
 const DIRECTION_SHARE = 0.08;
+/** Cuts at which a change is looked for: the newest window and the one before. */
+const CUTS = 14;
+/** Blocks that a side of a cut needs. */
+const LEAST_SIDE = 2;
+/** Squared standard errors from which a difference is a change; large, because a dozen cuts are tried. */
+const CHANGED = 36;
+/** What fits of one unchanged plant may differ by beside their own errors (common practice, no source). */
+const MODEL_ERROR = { lnGain: 0.01, lnPole: 0.02, coulomb: 0.08, bias: 0.08 } as const;
 /** Motion needed before the dead time is moved, s. */
 const DELAY_MOTION = 6;
 
@@ -99,6 +107,7 @@ export class OnlineIdentifier {
       this.prior,
       this.state[STATE.deadTime]! + this.state[STATE.delayShift]!,
       this.movingSeconds(this.blockOffsets()),
+      this.state[STATE.unsettled] === 1,
     );
   }
 
@@ -200,7 +209,7 @@ export class OnlineIdentifier {
     const closes = motion >= WINDOW_MOTION || (elapsed >= WINDOW_PATIENCE && motion >= WINDOW_LEAST_MOTION);
     if (closes) {
       state[STATE.windowOpen] = open + 1;
-      this.forgetWhatChanged(window);
+      this.forgetWhatChanged();
     }
     this.refresh();
   }
@@ -237,34 +246,54 @@ export class OnlineIdentifier {
     state[STATE.simReady] = 1;
   }
 
-  /** When the newest window contradicts the older ones, only what speaks for the change is kept. */
-  private forgetWhatChanged(newest: readonly number[]): void {
+  /**
+   * Looks for the newest change of the plant: over the cuts that leave at least `LEAST_SIDE` blocks on each side, the
+   * largest of the squared differences of ln K, ln α, f and b in units of their variance (a Wald statistic for one
+   * change at an unknown place). Beyond `CHANGED` the blocks before the cut are forgotten, and the estimate counts as
+   * unsettled until a later window finds nothing.
+   */
+  private forgetWhatChanged(): void {
     const { state } = this;
-    const older = this.blockOffsets().filter((o) => !newest.includes(o));
-    if (older.length < 6 || newest.length < 2) return;
-    const shift = state[STATE.delayShift]!;
-    const before = this.fit(
-      older,
-      older.map(() => 1),
-      false,
-      shift,
-    );
-    const after = this.fit(
-      newest,
-      newest.map(() => 1),
-      false,
-      shift,
-    );
-    if (!before || !after) return;
-    const dGain = after.figures.lnGain - before.figures.lnGain;
-    const dPole = after.figures.lnPole - before.figures.lnPole;
-    const vGain = lnVariance(before, 'lnGain') + lnVariance(after, 'lnGain') + 0.01 ** 2;
-    const vPole = lnVariance(before, 'lnPole') + lnVariance(after, 'lnPole') + 0.02 ** 2;
-    if (dGain ** 2 / vGain > 36 || dPole ** 2 / vPole > 36) state[STATE.blockCount] = newest.length;
+    const offsets = this.blockOffsets();
+    let cut = 0;
+    let most = CHANGED;
+    for (let k = Math.max(LEAST_SIDE, offsets.length - CUTS); k <= offsets.length - LEAST_SIDE; k++) {
+      const statistic = this.contradiction(offsets.slice(0, k), offsets.slice(k));
+      if (statistic > most) {
+        most = statistic;
+        cut = k;
+      }
+    }
+    state[STATE.unsettled] = cut > 0 ? 1 : 0;
+    if (cut > 0) state[STATE.blockCount] = offsets.length - cut;
+  }
+
+  private contradiction(before: readonly number[], after: readonly number[]): number {
+    const shift = this.state[STATE.delayShift]!;
+    const fit = (offsets: readonly number[]) =>
+      this.fit(
+        offsets,
+        offsets.map(() => 1),
+        false,
+        shift,
+      );
+    const a = fit(before);
+    const b = fit(after);
+    if (!a || !b) return 0;
+    let most = 0;
+    for (const name of ['lnGain', 'lnPole', 'coulomb', 'bias'] as const) {
+      const difference = b.figures[name] - a.figures[name];
+      const variance = figureVariance(a, name) + figureVariance(b, name) + MODEL_ERROR[name] ** 2;
+      most = Math.max(most, difference ** 2 / variance);
+    }
+    return most;
   }
 }
 
-function lnVariance(part: { fit: BlockFit; figures: PlantFigures }, name: 'lnGain' | 'lnPole'): number {
+function figureVariance(
+  part: { fit: BlockFit; figures: PlantFigures },
+  name: keyof typeof MODEL_ERROR,
+): number {
   const g = part.figures.gradients[name];
-  return covarianceOf(part.fit, g, g);
+  return Math.max(0, covarianceOf(part.fit, g, g));
 }
