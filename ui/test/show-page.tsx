@@ -1,7 +1,7 @@
 import { MantineProvider } from '@mantine/core';
 import { Notifications } from '@mantine/notifications';
 import { QueryClientProvider } from '@tanstack/react-query';
-import { render } from '@testing-library/react';
+import { configure, render } from '@testing-library/react';
 import type { ComponentType } from 'react';
 import { createMemoryRouter, RouterProvider } from 'react-router-dom';
 import { afterEach, beforeEach, vi } from 'vitest';
@@ -9,6 +9,8 @@ import type { Role } from '../src/api/policy';
 import { queryClient } from '../src/api/query-client';
 import { signedIn, signedOut } from '../src/api/session';
 
+// A busy machine renders a page of forms in more than the second that the library waits.
+configure({ asyncUtilTimeout: 8_000 });
 // jsdom has no font loading, which a text area that grows listens to.
 Object.defineProperty(document, 'fonts', { value: new EventTarget() });
 

@@ -1,4 +1,4 @@
-import { queryOptions } from '@tanstack/react-query';
+import { infiniteQueryOptions, queryOptions } from '@tanstack/react-query';
 import { answer, client, type Schemas } from '../../api/client';
 import { queryClient } from '../../api/query-client';
 
@@ -10,19 +10,19 @@ export const rotaQuery = (siteId: number) =>
     queryFn: () => answer(client.GET('/api/v1/rota', { params: { query: { siteId } } })),
   });
 
+/** Hand-over notes, newest first, page by page. */
 export const notesQuery = (siteId: number) =>
-  queryOptions({
+  infiniteQueryOptions({
     queryKey: ['rota', siteId, 'notes'],
-    queryFn: () =>
+    initialPageParam: undefined as string | undefined,
+    queryFn: ({ pageParam }) =>
       answer(
-        client.GET('/api/v1/rota/{siteId}/notes', { params: { path: { siteId }, query: { limit: 20 } } }),
+        client.GET('/api/v1/rota/{siteId}/notes', {
+          params: { path: { siteId }, query: { limit: 10, ...(pageParam && { cursor: pageParam }) } },
+        }),
       ),
+    getNextPageParam: ({ nextCursor }) => nextCursor ?? undefined,
   });
-
-export const peopleQuery = queryOptions({
-  queryKey: ['people'],
-  queryFn: () => answer(client.GET('/api/v1/people')),
-});
 
 async function changed<T>(request: Promise<T>): Promise<T> {
   const result = await request;
