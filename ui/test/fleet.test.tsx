@@ -83,13 +83,20 @@ describe('a tile', () => {
     expect(tile().querySelector('svg')!.innerHTML).not.toBe(edge);
   });
 
-  test('of a silent axis shows no figure as if it were now', () => {
+  test('of a silent axis shows neither figures nor strips as if they were now', () => {
+    const tiles = new LiveTiles();
+    tiles.fill(3, seconds(100, 120));
+    const band = (): string => tile().querySelectorAll('svg')[2]!.querySelector('path')!.getAttribute('d')!;
+    const { unmount } = show(<AxisTile axis={axisOf({})} tiles={tiles} />);
+    expect(band()).not.toBe('');
+    unmount();
     show(
       <AxisTile
         axis={axisOf({ state: 'no-signal', stateReason: 'No samples since 06:02:11.' })}
-        tiles={new LiveTiles()}
+        tiles={tiles}
       />,
     );
+    expect(band()).toBe('');
     expect(tile()).not.toHaveTextContent('0.40');
     expect(tile()).not.toHaveTextContent('0.0 %');
   });

@@ -119,7 +119,13 @@ export function LiveTraceChart({ store, timeZone }: { store: TraceStore; timeZon
         </p>
       )}
       <div
-        style={{ display: 'flex', gap: 12, alignItems: 'center', justifyContent: 'space-between' }}
+        style={{
+          display: 'flex',
+          gap: 12,
+          alignItems: 'center',
+          justifyContent: 'space-between',
+          marginTop: 8,
+        }}
         className="no-print"
       >
         <figcaption

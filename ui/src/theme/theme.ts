@@ -54,6 +54,8 @@ export const cssVariables: CSSVariablesResolver = () => {
     '--mantine-color-error': palette[scheme].out,
     '--mantine-color-placeholder': palette[scheme].soft,
     '--mantine-color-anchor': palette[scheme].press,
+    '--mantine-color-verdigris-outline': palette[scheme].press,
+    '--mantine-color-verdigris-text': palette[scheme].press,
   });
   return { variables: {}, light: variables('light'), dark: variables('dark') };
 };

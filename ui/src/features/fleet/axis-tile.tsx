@@ -22,6 +22,8 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
   const indicators = tile ? tile.indicators : axis.indicators;
   const estimate = tile?.estimate ?? axis.estimate;
   const silent = state === 'no-signal';
+  // What a silent axis did before is not what it did in the last two minutes.
+  const drawn = near && !silent ? strip : NOT_DRAWN;
   const colour = state === 'in-maintenance' ? 'var(--ink)' : STATE_COLOUR[state];
   const lead = reason.slice(0, reason.search(/[.!?](\s|$)/) + 1) || reason;
   const alert = axis.openAlerts.find(({ state: of }) => of === 'unacknowledged') ?? axis.openAlerts[0];
@@ -77,18 +79,14 @@ export const AxisTile = memo(function AxisTile({ axis, tiles }: { axis: Axis; ti
                 : `${millimetres(indicators.peakFollowingError)} of ${axis.tolerances.followingError} mm`}
             </b>
           </div>
-          <ErrorStrip
-            points={near ? strip : NOT_DRAWN}
-            colour={colour}
-            tolerance={axis.tolerances.followingError}
-          />
+          <ErrorStrip points={drawn} colour={colour} tolerance={axis.tolerances.followingError} />
           <div className={classes.label}>
             <span>at limit</span>
             <b>
               {silent || indicators?.saturatedPct == null ? '–' : `${indicators.saturatedPct.toFixed(1)} %`}
             </b>
           </div>
-          <OutputStrip points={near ? strip : NOT_DRAWN} colour={colour} />
+          <OutputStrip points={drawn} colour={colour} />
         </div>
       </div>
       <div className={classes.why}>
