@@ -213,9 +213,10 @@ export class AlertsService implements OnApplicationBootstrap {
   }
 
   /**
-   * Takes one step of the life cycle and writes it down.
+   * Takes one step of the life cycle and writes it down. Where the alert's state does not allow it nothing changes:
+   * the service itself goes on with the next alert (a shelved one does not clear, it ends with its shelf).
    *
-   * @throws ConflictException when the alert's state does not allow it; nothing changes then
+   * @throws ConflictException when a person asked for what the state does not allow
    */
   private async step(
     id: number,
@@ -232,6 +233,7 @@ export class AlertsService implements OnApplicationBootstrap {
       const found = await manager.findOneByOrFail(Alert, { id });
       const before = found.state;
       const next = nextState(before, step, holding ?? this.timer(found.axisId, found.rule).active);
+      if (next === null && !user) return null;
       if (next === null)
         throw new ConflictException(
           `Alert ${id} is ${before.replaceAll('-', ' ')}; it cannot be ${PAST[step]} now`,
@@ -253,10 +255,18 @@ export class AlertsService implements OnApplicationBootstrap {
       if (step === 'unshelve' || step === 'unsuppress') {
         Object.assign(found, { shelvedUntil: null, shelvedBy: null, shelveReason: null });
         if (next === 'unacknowledged')
-          found.nextStepAt = new Date(at.getTime() + this.settingsOf(found.rule).mailAfter * 1000);
+          Object.assign(found, {
+            acknowledgedAt: null,
+            acknowledgedBy: null,
+            returnedAt: null,
+            nextStepAt: new Date(at.getTime() + this.settingsOf(found.rule).mailAfter * 1000),
+          });
       }
       if (step === 'suppress') Object.assign(found, { nextStepAt: null, shelvedUntil: null });
-      if (next === 'normal') found.nextStepAt = null;
+      if (next === 'normal') {
+        found.nextStepAt = null;
+        found.returnedAt ??= at; // it went while it was shelved or suppressed
+      }
       await manager.save(found);
       await this.note(manager, id, user?.name ?? 'service', PAST[step], note, at);
       await this.audit.record(manager, {
@@ -270,6 +280,7 @@ export class AlertsService implements OnApplicationBootstrap {
       });
       return found;
     });
+    if (!alert) return;
     tell(this.emitter, 'alert.changed', { alertId: id, axisId: alert.axisId, siteId: alert.siteId });
   }
 
