@@ -9,7 +9,7 @@ import { Axis } from '../fleet/axis.entity.js';
 import { Gateway } from '../fleet/gateway.entity.js';
 import { AxisCheckpoint } from './axis-checkpoint.entity.js';
 import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
-import { CheckpointWriter } from './checkpoint-writer.js';
+import { CheckpointWriter, type WrittenAxis } from './checkpoint-writer.js';
 import { decodeFrame, FrameError } from './frame-codec.js';
 
 /** How far a gateway has got; in memory it runs ahead of what is durable. */
@@ -68,7 +68,8 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
 
   onApplicationShutdown(): void {
     clearInterval(this.timer);
-    if (this.writer) this.checkpoint();
+    // Only written: whoever would be told works on the database, which closes next.
+    if (this.writer) this.write();
   }
 
   all(): AxisPipeline[] {
@@ -165,17 +166,8 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
 
   /** Writes what is known by now in one transaction, then tells the others. A failed write is tried again. */
   checkpoint(): void {
-    let written;
-    try {
-      written = this.writer.write([...this.pipelines.values()], [...this.gateways.values()]);
-      this.failedCheckpoints = 0;
-    } catch (error) {
-      this.failedCheckpoints++;
-      this.log.error(
-        `Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`,
-      );
-      return;
-    }
+    const written = this.write();
+    if (!written) return;
     for (const { axisId, seconds, moves, estimates } of written) {
       if (seconds.length > 0) tell(this.emitter, 'seconds.closed', { axisId, seconds });
       const last = estimates.at(-1);
@@ -188,6 +180,20 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       }
     }
     tell(this.emitter, 'checkpoint.written', { at: new Date() });
+  }
+
+  private write(): WrittenAxis[] | null {
+    try {
+      const written = this.writer.write([...this.pipelines.values()], [...this.gateways.values()]);
+      this.failedCheckpoints = 0;
+      return written;
+    } catch (error) {
+      this.failedCheckpoints++;
+      this.log.error(
+        `Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`,
+      );
+      return null;
+    }
   }
 
   /** An axis was registered or changed: tolerances, baseline, revision and maintenance count from here on. */
