@@ -1,5 +1,5 @@
 import { MantineProvider } from '@mantine/core';
-import { Notifications } from '@mantine/notifications';
+import { cleanNotifications, Notifications } from '@mantine/notifications';
 import { QueryClientProvider } from '@tanstack/react-query';
 import { configure, render } from '@testing-library/react';
 import type { ComponentType } from 'react';
@@ -69,6 +69,7 @@ export function serviceOfTests(): { current: FakeService } {
   });
   afterEach(() => {
     queryClient.clear();
+    cleanNotifications();
     signedOut();
     vi.unstubAllGlobals();
   });

@@ -39,3 +39,6 @@ export const invite = (body: Schemas['InviteDto']) =>
 
 export const revokeInvitation = (id: number) =>
   changed(answer(client.DELETE('/api/v1/people/invitations/{id}', { params: { path: { id } } })));
+
+/** Sign-ins and invitations belong to no site; they are told on the reader's own clock. */
+export const OWN_ZONE = Intl.DateTimeFormat().resolvedOptions().timeZone;
