@@ -11,6 +11,7 @@ export interface PooledFit {
   readonly atLimitShare: number;
   /** Share of the moving time spent forward, 0 … 1. */
   readonly forwardShare: number;
+  /** NaN while nothing has been simulated with this plant. */
   readonly fitPct: number;
 }
 
@@ -161,7 +162,7 @@ export function describePlant(
     bias,
     deadTime: Math.max(deadTime, 0),
     lnCovariance: lnCovariance(fit, figures),
-    fitPct: pooled.fitPct,
+    fitPct: Number.isFinite(pooled.fitPct) ? pooled.fitPct : 0,
     movingSeconds,
     verdict,
     remarks,

@@ -36,6 +36,8 @@ const WINDOW_LEAST_MOTION = 1.5;
 const DIRECTION_SHARE = 0.08;
 /** Cuts at which a change is looked for: the newest window and the one before. */
 const CUTS = 14;
+/** Blocks left out before a cut: the one in which the plant changed fits neither side, a ramp takes longer. */
+const SKIPPED = [1, 6] as const;
 /** Blocks that a side of a cut needs. */
 const LEAST_SIDE = 2;
 /** Squared standard errors from which a difference is a change; large, because a dozen cuts are tried. */
@@ -235,7 +237,8 @@ export class OnlineIdentifier {
       restartFilters(state, plan);
       return;
     }
-    state[STATE.delayShift] = shift;
+    // More than a sample is no remainder but a pool that does not fit together.
+    state[STATE.delayShift] = Math.min(Math.max(shift, -T), T);
     const alpha = Math.exp(figures.lnPole);
     const a = Math.exp(-alpha * T);
     state[STATE.simA] = a;
@@ -257,19 +260,27 @@ export class OnlineIdentifier {
     const offsets = this.blockOffsets();
     let cut = 0;
     let most = CHANGED;
-    for (let k = Math.max(LEAST_SIDE, offsets.length - CUTS); k <= offsets.length - LEAST_SIDE; k++) {
-      const statistic = this.contradiction(offsets.slice(0, k), offsets.slice(k));
-      if (statistic > most) {
-        most = statistic;
-        cut = k;
+    for (let k = Math.max(LEAST_SIDE, offsets.length - CUTS); k <= offsets.length - LEAST_SIDE; k++)
+      for (const skipped of SKIPPED) {
+        if (k - skipped < LEAST_SIDE) continue;
+        const statistic = this.contradiction(offsets.slice(0, k - skipped), offsets.slice(k));
+        if (statistic > most) {
+          most = statistic;
+          cut = k;
+        }
       }
-    }
     state[STATE.unsettled] = cut > 0 ? 1 : 0;
-    if (cut > 0) state[STATE.blockCount] = offsets.length - cut;
+    if (cut === 0) return;
+    state[STATE.blockCount] = offsets.length - cut;
+    // What was simulated with the former plant says nothing about the fit of the new one.
+    for (const o of offsets.slice(cut))
+      for (const sum of [BLOCK.simulated, BLOCK.velocity, BLOCK.velocitySquare, BLOCK.residualSquare])
+        state[o + sum] = 0;
   }
 
   private contradiction(before: readonly number[], after: readonly number[]): number {
-    const shift = this.state[STATE.delayShift]!;
+    // The dead time is held where the delay line has it: its pooled remainder is what a change upsets first.
+    const shift = 0;
     const fit = (offsets: readonly number[]) =>
       this.fit(
         offsets,
