@@ -3,6 +3,7 @@ import type { RecordedMove } from '../indicators/move-recorder.js';
 /** A figure of the same kind of moves before and after new gains: medians, and whether they differ. */
 export interface ComparedFigure {
   before: number;
+  /** For the same mix of kinds as before. */
   after: number;
   /** One-sided p that "after" is no larger than "before" (rank test); small means worse. */
   pWorse: number;
@@ -61,10 +62,11 @@ export function compareMoves(
     const a = scaled(pairs.before);
     const b = scaled(pairs.after);
     const { pGreater, pLess } = rankTest(a, b);
-    // Shown in the unit of the figure: medians over all matched moves.
+    // Medians in the unit of the figure; another mix of kinds after the change must not show as a difference.
+    const shown = median(pairs.before.map(({ move }) => figure(move)));
     return {
-      before: median(pairs.before.map(({ move }) => figure(move))),
-      after: median(pairs.after.map(({ move }) => figure(move))),
+      before: shown,
+      after: relative ? (median(a) > 0 ? (shown * median(b)) / median(a) : shown) : median(b),
       pWorse: pGreater,
       pBetter: pLess,
     };
