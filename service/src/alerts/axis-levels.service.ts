@@ -41,7 +41,7 @@ export class AxisLevelsService {
         decisions &&
         (decisions.pole.state === 'drifted' ? Math.abs(off(decisions.pole.pooledRatio?.value)) : 0),
       frictionRise:
-        estimate && axis.baseline && axis.baseline.coulomb !== null
+        estimate?.verdict === 'usable' && axis.baseline && axis.baseline.coulomb !== null
           ? Math.max(0, estimate.coulomb.low - axis.baseline.coulomb)
           : null,
       outputActivity: minute?.outputActivity ?? null,

@@ -321,7 +321,7 @@ export class AxesService {
   async confirmBaseline(id: number, user: SignedInUser): Promise<Axis> {
     const axis = await this.get(id, user, 'axis.baseline');
     const estimate = this.intake.pipeline(id)?.estimate;
-    if (!estimate || estimate.verdict === 'unidentifiable')
+    if (estimate?.verdict !== 'usable')
       throw new ConflictException(
         'There is no usable estimate of this axis yet; let it make some production moves',
       );

@@ -107,6 +107,8 @@ function figures(estimate: PlantEstimate, baseline: Baseline, decisions: DriftDe
 function calm(estimate: PlantEstimate | null, baseline: Baseline | null): string {
   if (!baseline) return 'No baseline yet. An engineer confirms the first usable estimate.';
   if (!estimate) return 'Listening. K and pole are not known from production moves yet.';
+  if (estimate.verdict !== 'usable')
+    return `Listening. ${sentence(capital(estimate.remarks[0] ?? 'the estimate is in doubt'))}`;
   const worst = Math.max(
     Math.abs(estimate.gain.value / baseline.gain - 1),
     Math.abs(estimate.pole.value / baseline.pole - 1),
@@ -116,4 +118,5 @@ function calm(estimate: PlantEstimate | null, baseline: Baseline | null): string
 
 const digits = (value: number): string =>
   value >= 100 ? value.toFixed(0) : value >= 10 ? value.toFixed(1) : value.toFixed(2);
+const capital = (text: string): string => text.charAt(0).toUpperCase() + text.slice(1);
 const sentence = (text: string): string => (/[.!?]$/.test(text) ? text : `${text}.`);

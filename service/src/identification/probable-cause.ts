@@ -118,7 +118,8 @@ export function probableCause(evidence: CauseEvidence): Cause {
   const candidates: Candidate[] = [
     along('load', { pole: -1 }),
     along('viscous drag', { gain: -1, pole: 1 }),
-    along('actuating force', { gain: 1, coulomb: -1 }),
+    // f = F/g and b = o/g rise when the force per output falls.
+    along('actuating force', { gain: 1, coulomb: -1, bias: -(biasBaseline ?? 0) }),
   ];
   if (axisOf.coulomb !== undefined) candidates.push(along('dry friction', { coulomb: 1 }));
   if (axisOf.bias !== undefined) candidates.push(along('offset', { bias: 1 }));

@@ -101,7 +101,7 @@ export class DraftingService {
     const axis = await this.dataSource.getRepository(Axis).findOneByOrFail({ id: axisId });
     const pipeline = this.intake.pipeline(axisId);
     const estimate = pipeline?.estimate;
-    if (!pipeline || !estimate || estimate.verdict === 'unidentifiable')
+    if (!pipeline || !estimate || estimate.verdict !== 'usable')
       throw new ConflictException(
         'Nothing usable is known of this axis’s plant yet; let it make some production moves',
       );
