@@ -66,7 +66,10 @@ export function compareMoves(
     const shown = median(pairs.before.map(({ move }) => figure(move)));
     return {
       before: shown,
-      after: relative ? (median(a) > 0 ? (shown * median(b)) / median(a) : shown) : median(b),
+      after:
+        relative && median(a) > 0
+          ? (shown * median(b)) / median(a)
+          : median(pairs.after.map(({ move }) => figure(move))),
       pWorse: pGreater,
       pBetter: pLess,
     };

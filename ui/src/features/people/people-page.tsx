@@ -59,9 +59,7 @@ function People() {
                     <th key={id}>{name}</th>
                   ))}
                   <th>Last sign-in</th>
-                  <th>
-                    <span className="visually-hidden">Account</span>
-                  </th>
+                  <th>Account</th>
                 </tr>
               </thead>
               <tbody>
