@@ -27,6 +27,7 @@ import { STEP } from './steps.js';
 
 /** A gateway that has not read the gains back after this time, ms, has not applied them. */
 const READ_BACK_WITHIN = 15_000;
+const ASKED_BACK = 'roll-back asked for';
 const GAIN_NAMES = ['kp', 'ki', 'kd', 'kv', 'ka'] as const;
 
 /**
@@ -131,7 +132,7 @@ export class ApplyService {
         manager,
         proposal,
         user.name,
-        rollingBack ? 'roll-back asked for' : 'gains sent',
+        rollingBack ? ASKED_BACK : 'gains sent',
         rollingBack ? why : `Checklist confirmed; revision ${next} sent to the machine`,
         user,
       );
@@ -178,7 +179,9 @@ export class ApplyService {
   private async applied(seen: Proposal): Promise<void> {
     const proposed = seen.proposed!;
     const plant = baselineOf(seen.evidence.estimate);
-    await this.transactions.run(async (manager) => {
+    const done = await this.transactions.run(async (manager) => {
+      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
+      if (!isWaiting(proposal, seen)) return false;
       const now = new Date();
       const person = await this.auth.nameOf(seen.appliedById);
       await manager.save(TuningRevision, {
@@ -200,7 +203,6 @@ export class ApplyService {
         baseline: plant,
         baselineAt: now,
       });
-      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
       Object.assign(proposal, {
         state: 'on trial',
         appliedAt: now,
@@ -216,18 +218,24 @@ export class ApplyService {
       } satisfies Partial<Proposal>);
       await manager.save(proposal);
       await this.note(manager, proposal, 'service', 'applied', 'The machine read the same gains back', null);
+      return true;
     });
-    this.tuned(seen);
+    if (done) this.tuned(seen);
   }
 
   private async rolledBack(seen: Proposal): Promise<void> {
-    await this.transactions.run(async (manager) => {
+    const done = await this.transactions.run(async (manager) => {
+      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
+      if (!isWaiting(proposal, seen)) return false;
       const now = new Date();
+      const asked = await manager.findOneOrFail(ProposalEvent, {
+        where: { proposalId: seen.id, action: ASKED_BACK },
+        order: { id: 'DESC' },
+      });
       const former = await manager.findOneByOrFail(TuningRevision, {
         axisId: seen.axisId,
         revision: seen.current.revision,
       });
-      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
       await manager.save(TuningRevision, {
         axisId: seen.axisId,
         revision: seen.revision!,
@@ -239,7 +247,7 @@ export class ApplyService {
         source: 'roll-back',
         proposalId: seen.id,
         appliedAt: now,
-        appliedBy: await this.auth.nameOf(seen.appliedById),
+        appliedBy: asked.by,
         note: `Back to revision ${former.revision}`,
       });
       await manager.update(Axis, seen.axisId, {
@@ -260,8 +268,9 @@ export class ApplyService {
         'The machine read the former gains back',
         null,
       );
+      return true;
     });
-    this.tuned(seen);
+    if (done) this.tuned(seen);
   }
 
   /** Gains that were not read back count as not applied; the former ones are asked for again. */
@@ -337,3 +346,7 @@ export class ApplyService {
     tell(this.emitter, 'proposal.changed', { proposalId: id, axisId, siteId });
   }
 }
+
+/** Whether a proposal still waits for the read-back that was seen: the same one may come twice, or silence be given up. */
+const isWaiting = (now: Proposal, seen: Proposal): boolean =>
+  now.state === 'applying' && now.revision === seen.revision;
