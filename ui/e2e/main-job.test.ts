@@ -196,12 +196,7 @@ describe('the main job, end to end', () => {
       const dialog = technician.getByRole('dialog');
       await dialog.getByLabel('Reason').fill('Louder than before');
       await dialog.getByRole('button', { name: 'Roll back' }).click();
-      await technician.waitForTimeout(700);
-      if (await dialog.isVisible()) {
-        await dialog.getByRole('button', { name: 'Cancel' }).click();
-        return false;
-      }
-      return true;
+      return taken(technician);
     });
     await until('the machine runs with the former gains', async () => {
       const { state } = await engineer.get<ProposalBody>(`/proposals/${id}`);
@@ -281,10 +276,7 @@ async function workThrough(tag: string): Promise<void> {
     for (const box of await dialog.getByRole('checkbox').all()) await box.check();
     await dialog.getByLabel('Your password, once more').fill('polewright-demo');
     await dialog.getByRole('button', { name: /^Send the gains/ }).click();
-    await technician.waitForTimeout(700);
-    if (!(await dialog.isVisible())) return true;
-    await dialog.getByRole('button', { name: 'Cancel' }).click();
-    return false;
+    return taken(technician);
   });
   await until(
     'the machine has read the gains back',
@@ -293,6 +285,16 @@ async function workThrough(tag: string): Promise<void> {
   );
   await putIn(technician, tag, 'production');
   for (const page of [engineerPage, approver, technician]) await page.context().close();
+}
+
+/** Whether the open dialog's step was taken; when it was refused, the dialog says why and is closed. */
+async function taken(page: Page): Promise<boolean> {
+  const dialog = page.getByRole('dialog');
+  await Promise.race([dialog.waitFor({ state: 'hidden' }), dialog.getByRole('alert').waitFor()]);
+  if (!(await dialog.isVisible())) return true;
+  await dialog.getByRole('button', { name: 'Cancel' }).click();
+  await dialog.waitFor({ state: 'hidden' });
+  return false;
 }
 
 async function putIn(page: Page, tag: string, where: 'maintenance' | 'production'): Promise<void> {

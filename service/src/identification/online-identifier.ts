@@ -42,6 +42,10 @@ const SKIPPED = [1, 6] as const;
 const LEAST_SIDE = 2;
 /** Squared standard errors from which a difference is a change; large, because a dozen cuts are tried. */
 const CHANGED = 36;
+/** Blocks that must agree among themselves before older ones are dropped as a mixture. */
+const NEWEST = 5;
+/** How many times the spread of all blocks exceeds that of the newest in a mixture; 0.3 … 12 seen without, above 10⁴ with. */
+const MIXED = 200;
 /** What fits of one unchanged plant may differ by beside their own errors (common practice, no source). */
 const MODEL_ERROR = { lnGain: 0.01, lnPole: 0.02, coulomb: 0.08, bias: 0.08 } as const;
 /** Motion needed before the dead time is moved, s. */
@@ -269,6 +273,7 @@ export class OnlineIdentifier {
           cut = k;
         }
       }
+    if (cut === 0 && this.newestFitBetter(offsets)) cut = offsets.length - NEWEST;
     state[STATE.unsettled] = cut > 0 ? 1 : 0;
     if (cut === 0) return;
     state[STATE.blockCount] = offsets.length - cut;
@@ -278,14 +283,33 @@ export class OnlineIdentifier {
         state[o + sum] = 0;
   }
 
+  /**
+   * Whether the newest blocks agree among themselves far better than all of them do: after a slow change the older
+   * ones are themselves a mixture, too uncertain to contradict anything.
+   */
+  private newestFitBetter(offsets: readonly number[]): boolean {
+    if (offsets.length < NEWEST + LEAST_SIDE) return false;
+    const spread = (some: readonly number[]): number | undefined =>
+      this.fit(
+        some,
+        some.map(() => 1),
+        true,
+        0,
+      )?.fit.inflation;
+    const all = spread(offsets);
+    const newest = spread(offsets.slice(-NEWEST));
+    return all !== undefined && newest !== undefined && all > MIXED * newest;
+  }
+
   private contradiction(before: readonly number[], after: readonly number[]): number {
     // The dead time is held where the delay line has it: its pooled remainder is what a change upsets first.
     const shift = 0;
+    // Gains by direction in any case: one for both would take a difference between directions for noise.
     const fit = (offsets: readonly number[]) =>
       this.fit(
         offsets,
         offsets.map(() => 1),
-        false,
+        true,
         shift,
       );
     const a = fit(before);
