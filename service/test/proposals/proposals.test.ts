@@ -130,7 +130,7 @@ test('a heavier load: drift, proposal, review by a second person, applying, tria
 
     // A window that ends after it begins and has not passed.
     proposal = await bench.get(id);
-    await refused(bench, proposal, 400, step(engineer, id, 'schedule', { from: at(5), to: at(5) }));
+    await refused(bench, proposal, 400, step(engineer, id, 'schedule', { from: at(6), to: at(5) }));
     await refused(bench, proposal, 400, step(engineer, id, 'schedule', { from: at(-9), to: at(-1) }));
     await refused(bench, proposal, 400, step(engineer, id, 'schedule', { from: 'soon', to: at(9) }));
     await refused(bench, proposal, 403, step(technician, id, 'schedule', { from: at(-1), to: at(60) }));
