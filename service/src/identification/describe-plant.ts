@@ -13,6 +13,7 @@ export interface PooledFit {
   readonly forwardShare: number;
   /** NaN while nothing has been simulated with this plant. */
   readonly fitPct: number;
+  readonly method: MethodVariance;
 }
 
 /** Two-sided 95 % quantile of Student's t, by the first terms of its expansion (Abramowitz & Stegun 26.7.5). */
@@ -29,20 +30,20 @@ export function covarianceOf(fit: BlockFit, g: Float64Array, h: Float64Array): n
   return quadraticForm(g, fit.covariance, h, fit.model.parameters);
 }
 
-/**
- * Variance that the equation itself leaves, beside the residuals': the start of motion and the velocity's sign
- * are known to a fraction of a sample only. Standard deviations of ln K, ln α and of f and b in % of output
- * (measured on simulated axes with noise near zero).
- */
-const EQUATION_VARIANCE = { lnGain: 1e-4 ** 2, lnPole: 2e-4 ** 2, friction: 1.5e-3 ** 2 };
+/** Variance that a method leaves beside the residuals': of ln K, of ln α, and of f and b in % of output. */
+export interface MethodVariance {
+  readonly lnGain: number;
+  readonly lnPole: number;
+  readonly friction: number;
+}
 
 /** Covariance of (ln K, ln α). */
-export function lnCovariance(fit: BlockFit, figures: PlantFigures): LnCovariance {
+export function lnCovariance(fit: BlockFit, figures: PlantFigures, method: MethodVariance): LnCovariance {
   const { lnGain, lnPole } = figures.gradients;
   return {
-    gain: covarianceOf(fit, lnGain, lnGain) + EQUATION_VARIANCE.lnGain,
+    gain: covarianceOf(fit, lnGain, lnGain) + method.lnGain,
     cross: covarianceOf(fit, lnGain, lnPole),
-    pole: covarianceOf(fit, lnPole, lnPole) + EQUATION_VARIANCE.lnPole,
+    pole: covarianceOf(fit, lnPole, lnPole) + method.lnPole,
   };
 }
 
@@ -76,7 +77,7 @@ export function unknownPlant(
 }
 
 /** Motion below which nothing is said, and below which it is said with doubt, s. */
-const LEAST_MOTION = 1;
+export const LEAST_MOTION = 1;
 const FAIR_MOTION = 3;
 
 /**
@@ -99,21 +100,21 @@ export function describePlant(
       'the moves do not tell gain, pole and friction apart: more than one speed is needed',
     ]);
   }
-  const { fit, figures } = pooled;
+  const { fit, figures, method } = pooled;
   const { gradients } = figures;
   const t = student95(fit.effectiveBlocks);
   const deviation = (g: Float64Array, beside: number): number =>
     Math.sqrt(Math.max(covarianceOf(fit, g, g), 0) + beside);
-  const logInterval = (ln: number, g: Float64Array, beside = EQUATION_VARIANCE.lnGain): Interval => {
+  const logInterval = (ln: number, g: Float64Array, beside = method.lnGain): Interval => {
     const half = t * deviation(g, beside);
     return { value: Math.exp(ln), low: Math.exp(ln - half), high: Math.exp(ln + half) };
   };
   const plainInterval = (value: number, g: Float64Array): Interval => {
-    const half = t * deviation(g, EQUATION_VARIANCE.friction);
+    const half = t * deviation(g, method.friction);
     return { value, low: value - half, high: value + half };
   };
   const gain = logInterval(figures.lnGain, gradients.lnGain);
-  const pole = logInterval(figures.lnPole, gradients.lnPole, EQUATION_VARIANCE.lnPole);
+  const pole = logInterval(figures.lnPole, gradients.lnPole, method.lnPole);
   let coulomb = plainInterval(figures.coulomb, gradients.coulomb);
   let bias = plainInterval(figures.bias, gradients.bias);
 
@@ -161,7 +162,7 @@ export function describePlant(
     coulomb,
     bias,
     deadTime: Math.max(deadTime, 0),
-    lnCovariance: lnCovariance(fit, figures),
+    lnCovariance: lnCovariance(fit, figures, method),
     fitPct: Number.isFinite(pooled.fitPct) ? pooled.fitPct : 0,
     movingSeconds,
     verdict,

@@ -72,12 +72,10 @@ export function motionModel(
 
 /** Normal equations of a model: mᵀ·A·m (p×p) and mᵀ·r from packed sums that start at `offset`. */
 export function normalEquations(
-  model: MotionModel,
+  { parameters: p, map }: Pick<MotionModel, 'parameters' | 'map'>,
   sums: Float64Array,
   offset: number,
 ): { matrix: Float64Array; vector: Float64Array } {
-  const p = model.parameters;
-  const { map } = model;
   const half = new Float64Array(FULL_PARAMETERS * p);
   const vector = new Float64Array(p);
   for (let i = 0; i < FULL_PARAMETERS; i++) {
@@ -119,7 +117,8 @@ const POOLED_SCORE_BLOCKS = 12;
  * averages over all parameters. (Huber 1967, White 1980, for the sandwich; the shrinkage is common practice,
  * no source.)
  *
- * @param blocks packed sums of each block, with the offset of each in `sums`.
+ * @param sums packed sums of the blocks, each from its offset on.
+ * @param mapOf a block's own map from free to full parameters; the model's where not given.
  * @returns null when the regressors cannot be told apart.
  */
 export function fitBlocks(
@@ -127,6 +126,7 @@ export function fitBlocks(
   sums: Float64Array,
   offsets: readonly number[],
   weights: readonly number[],
+  mapOf?: (block: number) => Float64Array,
 ): BlockFit | null {
   const p = model.parameters;
   const a = new Float64Array(p * p);
@@ -136,7 +136,8 @@ export function fitBlocks(
   let wSum = 0;
   let w2Sum = 0;
   for (let b = 0; b < offsets.length; b++) {
-    const part = normalEquations(model, sums, offsets[b]!);
+    const map = mapOf ? mapOf(b) : model.map;
+    const part = normalEquations({ parameters: p, map }, sums, offsets[b]!);
     parts.push(part);
     const w = weights[b]!;
     wSum += w;
@@ -166,7 +167,7 @@ export function fitBlocks(
     for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) g[i * p + j]! += score[i]! * score[j]!;
   }
   const effectiveBlocks = (wSum * wSum) / w2Sum;
-  const correction = effectiveBlocks / Math.max(effectiveBlocks - 1, 0.5);
+  const correction = effectiveBlocks / Math.max(effectiveBlocks - p, effectiveBlocks / 2);
   let trace = 0;
   for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) trace += inverse2[i * p + j]! * g[j * p + i]!;
   const spread = (trace / p) * correction;

@@ -48,6 +48,11 @@ const NEWEST = 5;
 const MIXED = 200;
 /** What fits of one unchanged plant may differ by beside their own errors (common practice, no source). */
 const MODEL_ERROR = { lnGain: 0.01, lnPole: 0.02, coulomb: 0.08, bias: 0.08 } as const;
+/**
+ * The start of motion and the velocity's sign are known to a fraction of a sample only: standard deviations of ln K,
+ * ln α and of f and b in % of output (measured on simulated axes with noise near zero).
+ */
+const METHOD_VARIANCE = { lnGain: 1e-4 ** 2, lnPole: 2e-4 ** 2, friction: 1.5e-3 ** 2 };
 /** Motion needed before the dead time is moved, s. */
 const DELAY_MOTION = 6;
 
@@ -165,6 +170,7 @@ export class OnlineIdentifier {
     const learned = this.sum(offsets, BLOCK.learned);
     return {
       ...chosen,
+      method: METHOD_VARIANCE,
       movingSeconds: this.movingSeconds(offsets),
       atLimitShare: this.sum(offsets, BLOCK.atLimit) / learned,
       forwardShare: this.sum(offsets, BLOCK.forward) / learned,
@@ -189,7 +195,7 @@ export class OnlineIdentifier {
       elapsedSeconds: this.sum(offsets, BLOCK.elapsed) * this.plan.sampleTime,
       lnGain: figures.lnGain,
       lnPole: figures.lnPole,
-      covariance: lnCovariance(fit, figures),
+      covariance: lnCovariance(fit, figures, METHOD_VARIANCE),
       coulomb: figures.coulomb,
       bias: figures.bias,
       gainForward: directional ? directional.figures.gainForward : null,
