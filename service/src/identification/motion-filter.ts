@@ -95,7 +95,7 @@ export interface FilterPlan {
 /**
  * Filter bandwidth α, at least 30 rad/s so that production moves pass, at most 0.35/T; span of the velocity's
  * sign a quarter of the plant's time constant, longer where the resolution is coarse; learning from seven
- * filter time constants after the axis has begun to move, when 3 % of what happened at breakaway is left in
+ * filter time constants after the axis has begun to move or turned, when 3 % of what happened then is left in
  * a third-order filter (common practice, no source; chosen on the simulated axes of the tests).
  */
 export function filterPlan(prior: PlantPrior): FilterPlan {
@@ -176,6 +176,9 @@ export function filterSamples(
   const simCF = state[STATE.simFrictionForward]!;
   const simCR = state[STATE.simFrictionReverse]!;
   let learned = state[B + BLOCK.learned]!;
+  // One column −U̇ for the remaining dead time: each direction's part by its own share of the mean gain.
+  const shareF = simReady ? (2 * simF) / (simF + simR) : 1;
+  const shareR = 2 - shareF;
 
   const P = STATE.previous;
   let sf0 = state[P]!;
@@ -228,12 +231,12 @@ export function filterSamples(
     if (counts >= movingCounts) {
       uf = u;
       sf = 1;
-      du = -(m1 * uNew + m2 * uOld + m3 * uOlder);
+      du = -shareF * (m1 * uNew + m2 * uOld + m3 * uOlder);
       vSim = simA * vSim + simF * u - simCF;
     } else if (counts <= -movingCounts) {
       ur = u;
       sr = 1;
-      du = -(m1 * uNew + m2 * uOld + m3 * uOlder);
+      du = -shareR * (m1 * uNew + m2 * uOld + m3 * uOlder);
       vSim = simA * vSim + simR * u + simCR;
     } else {
       moving = false;
@@ -256,6 +259,8 @@ export function filterSamples(
     e1 += g * (newer * sr + older * sr0 - e1);
     e2 += g * (e1 - e2);
     e3 += g * (e2 - e3);
+    // A reversal happens inside an interval, where neither direction's gain and friction hold.
+    if (sf * sr0 + sr * sf0 > 0 && settling < clearSamples) settling = clearSamples;
     h1 += g * (du - h1);
     h2 += g * (h1 - h2);
     h3 += g * (h2 - h3);
