@@ -1,19 +1,8 @@
-import { execFile } from 'node:child_process';
-import { promisify } from 'node:util';
 import { design, type DesignQuestion } from '../src/control/design.js';
 import { lambdaLimits, type LimitQuestion } from '../src/control/limits.js';
 import { simulateMove } from '../src/control/move.js';
 import { placeGains } from '../src/control/pole-placement.js';
-
-/** One line of `npm run bench`: a figure, the least the same work can cost, and the ratio of the two. */
-export interface BenchRecord {
-  name: string;
-  value: number | null;
-  unit: string;
-  floor: number | null;
-  ratio: number | null;
-  note?: string;
-}
+import { bestMs, pythonNumber, round, type BenchRecord } from './measure.js';
 
 const questions: DesignQuestion[] = [
   { gain: 8, pole: 25, lambda: 40 },
@@ -31,18 +20,6 @@ const questions: DesignQuestion[] = [
     move: { distance: 40, duration: 1, settle: 1, profile: 'raised-cosine' as const },
   })),
 );
-
-/** Milliseconds of the least disturbed run of `work`, after warming up. */
-function bestMs(work: () => void, runs: number): number {
-  for (let i = 0; i < Math.min(runs, 20); i++) work();
-  let best = Infinity;
-  for (let i = 0; i < runs; i++) {
-    const from = performance.now();
-    work();
-    best = Math.min(best, performance.now() - from);
-  }
-  return best;
-}
 
 /** The bare recursion of a move in one loop: what simulating it costs at least. */
 function bareMove(samples: number, position: Float64Array, output: Float64Array): number {
@@ -117,21 +94,10 @@ while time.perf_counter() < end:
 print(len(qs)/best)
 `;
 
-async function scipyDesignsPerSecond(): Promise<number | null> {
-  try {
-    const run = promisify(execFile)('python3', ['-c', SCIPY], { timeout: 60_000 });
-    run.child.stdin?.end(JSON.stringify(questions));
-    const rate = Number((await run).stdout);
-    return Number.isFinite(rate) ? rate : null;
-  } catch {
-    return null;
-  }
-}
-
 /** Figures of the control core: designs per second, one move, the limits of one axis. */
 export default async function controlBench(): Promise<BenchRecord[]> {
   const rate = (1000 * questions.length) / bestMs(() => questions.forEach((q) => design(q)), 100);
-  const scipy = await scipyDesignsPerSecond();
+  const scipy = await pythonNumber(SCIPY, JSON.stringify(questions));
 
   const plant = { gain: 8, pole: 25 };
   const gains = placeGains(plant, 'PI-D', { kind: 'triple', lambda: 40 }, false);
@@ -178,5 +144,3 @@ export default async function controlBench(): Promise<BenchRecord[]> {
     },
   ];
 }
-
-const round = (x: number): number => Number(x.toPrecision(4));

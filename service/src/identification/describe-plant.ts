@@ -1,5 +1,6 @@
 import { quadraticForm } from './symmetric.js';
-import type { BlockFit, PlantFigures } from './motion-regression.js';
+import type { BlockFit } from './motion-regression.js';
+import type { PlantFigures, PlantValues } from './plant-figures.js';
 import type { Interval, LnCovariance, PlantEstimate, PlantPrior, Verdict } from './plant-estimate.js';
 
 /** A pooled fit with what it was made from. */
@@ -47,11 +48,20 @@ export function lnCovariance(fit: BlockFit, figures: PlantFigures, method: Metho
   };
 }
 
+/** Difference of ln K⁺ and ln K⁻ that matters, and the standard errors it must exceed. */
+const DIRECTIONS = { difference: 0.02, deviations: 4 } as const;
+
+/** Whether K⁺ and K⁻ differ by as much as matters. */
+export function directionsMayDiffer({ gainForward, gainReverse }: PlantValues): boolean {
+  return Math.abs(Math.log(gainForward / gainReverse)) > DIRECTIONS.difference;
+}
+
 /** Whether K⁺ and K⁻ differ by more than 2 % and by more than four standard errors. */
 export function directionsDiffer(fit: BlockFit, figures: PlantFigures): boolean {
-  const difference = Math.abs(Math.log(figures.gainForward / figures.gainReverse));
+  if (!directionsMayDiffer(figures)) return false;
+  const difference = Math.log(figures.gainForward / figures.gainReverse);
   const g = figures.gradients.lnForward.map((v, i) => v - figures.gradients.lnReverse[i]!);
-  return difference > 0.02 && difference > 4 * Math.sqrt(covarianceOf(fit, g, g));
+  return Math.abs(difference) > DIRECTIONS.deviations * Math.sqrt(covarianceOf(fit, g, g));
 }
 
 /** What is answered when the data cannot say anything about the plant. */

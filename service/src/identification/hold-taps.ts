@@ -20,12 +20,18 @@ export function holdTaps(pole: number, sampleTime: number, late: number): HoldTa
   // Below αT = 1e-3 the weights no longer depend on α to 1e-4 and the difference of exponentials loses digits.
   const alpha = Math.max(pole, 1e-3 / sampleTime);
   const a = Math.exp(-alpha * sampleTime);
-  const response = (t: number): number => t + Math.expm1(-alpha * t) / alpha;
-  const slope = (t: number): number => Math.expm1(-alpha * t);
   const sum = sampleTime * (1 - a);
-  const combine = (f: (t: number) => number): [number, number, number] => {
-    const [f1, f2, f3] = [1, 2, 3].map((i) => f((i - late) * sampleTime)) as [number, number, number];
-    return [f1 / sum, (f2 - (2 + a) * f1) / sum, (f3 - (2 + a) * f2 + (1 + 2 * a) * f1) / sum];
+  const [t1, t2, t3] = [(1 - late) * sampleTime, (2 - late) * sampleTime, (3 - late) * sampleTime];
+  return {
+    weights: combine(response(alpha, t1), response(alpha, t2), response(alpha, t3), a, sum),
+    slopes: combine(slope(alpha, t1), slope(alpha, t2), slope(alpha, t3), a, sum),
   };
-  return { weights: combine(response), slopes: combine(slope) };
 }
+
+const response = (alpha: number, t: number): number => t + Math.expm1(-alpha * t) / alpha;
+const slope = (alpha: number, t: number): number => Math.expm1(-alpha * t);
+const combine = (f1: number, f2: number, f3: number, a: number, sum: number): [number, number, number] => [
+  f1 / sum,
+  (f2 - (2 + a) * f1) / sum,
+  (f3 - (2 + a) * f2 + (1 + 2 * a) * f1) / sum,
+];

@@ -43,6 +43,8 @@ export interface RecordTraces {
 const LEAST_WINDOWS = 10;
 /** Windows from which on a trend over the record is asked for. */
 const TREND_WINDOWS = 12;
+/** The search looks at every eighth sample; positions are sampled far above the plant's bandwidth. */
+const ROUGH_STRIDE = 8;
 /** A trend counts beyond this many standard errors and this relative change. */
 const TREND = { deviations: 4, gain: 0.01, pole: 0.03 } as const;
 /** A trend is constant inside a window, so windows are cut to this many time constants. */
@@ -76,7 +78,7 @@ export function identifyRecord(record: MotionRecord): RecordIdentification {
   const problem =
     motion.windows.length < LEAST_WINDOWS ? inWindowsOf(whole, (movingSamples * T) / LEAST_WINDOWS) : whole;
   const movingSeconds = movingSamples * T;
-  const start = movingSeconds >= LEAST_MOTION ? searchStart(problem) : null;
+  const start = movingSeconds >= LEAST_MOTION ? searchStart({ ...problem, stride: ROUGH_STRIDE }) : null;
   const found = start?.positive ? chooseFit(problem, start.plant, motion.noise) : null;
   const traces = tracesOf(found?.problem ?? problem, motion, found);
   const description = describePlant(
@@ -104,7 +106,8 @@ export function identifyRecord(record: MotionRecord): RecordIdentification {
 }
 
 function chooseFit(whole: OutputErrorProblem, start: OutputErrorPlant, noise: number): OutputErrorFit | null {
-  const plain = fitOutputError(whole, start);
+  const rough = fitOutputError({ ...whole, stride: ROUGH_STRIDE }, start);
+  const plain = rough && fitOutputError(whole, rough.plant);
   if (!plain) return null;
   const full = fitOutputError(whole, plain.plant, {
     directional: true,

@@ -149,25 +149,31 @@ export function filterSamples(
   const perSecond = plan.resolution / T;
   const g = plan.step;
   const rate = 1 / T;
-  const { newer, older, reach, movingCounts, stride, settleSamples, clearSamples } = plan;
-  const span = 2 * reach - 1;
+  const { newer, older } = plan;
+  // `| 0` tells the compiler that counts and indices are integers; as floating-point numbers they cost half as much again.
+  const reach = plan.reach | 0;
+  const movingCounts = plan.movingCounts | 0;
+  const stride = plan.stride | 0;
+  const settleSamples = plan.settleSamples | 0;
+  const clearSamples = plan.clearSamples | 0;
+  const span = (2 * reach - 1) | 0;
   const spanVelocity = plan.resolution / (span * T);
   const delaySamples = state[STATE.deadTime]! / T;
-  const d = Math.floor(delaySamples);
+  const d = Math.floor(delaySamples) | 0;
   const taps = holdTaps(plan.pole, T, delaySamples - d);
   const [n1, n2, n3] = taps.weights;
   const [m1, m2, m3] = taps.slopes;
-  const need = Math.max(span, reach + d + 2) + 1;
+  const need = (Math.max(span, reach + d + 2) + 1) | 0;
   const lineP = STATE.positions;
   const lineU = STATE.outputs;
   const B = STATE.block;
-  const blockLearned = Math.ceil(BLOCK_SECONDS / (T * stride));
+  const blockLearned = Math.ceil(BLOCK_SECONDS / (T * stride)) | 0;
 
-  let filled = state[STATE.filled]!;
-  let w = state[STATE.write]!;
-  let settling = state[STATE.settling]!;
-  let resting = state[STATE.resting]!;
-  let phase = state[STATE.phase]!;
+  let filled = state[STATE.filled]! | 0;
+  let w = state[STATE.write]! | 0;
+  let settling = state[STATE.settling]! | 0;
+  let resting = state[STATE.resting]! | 0;
+  let phase = state[STATE.phase]! | 0;
   let vSim = state[STATE.simulatedVelocity]!;
   const simReady = state[STATE.simReady]! > 0;
   const simA = state[STATE.simA]!;
@@ -175,7 +181,7 @@ export function filterSamples(
   const simR = state[STATE.simReverse]!;
   const simCF = state[STATE.simFrictionForward]!;
   const simCR = state[STATE.simFrictionReverse]!;
-  let learned = state[B + BLOCK.learned]!;
+  let learned = state[B + BLOCK.learned]! | 0;
   // One column −U̇ for the remaining dead time: each direction's part by its own share of the mean gain.
   const shareF = simReady ? (2 * simF) / (simF + simR) : 1;
   const shareR = 2 - shareF;
@@ -203,24 +209,31 @@ export function filterSamples(
   let h2 = state[F + 16]!;
   let h3 = state[F + 17]!;
 
+  // What the next sample finds one place further on in the delay line.
+  let pBefore = state[lineP + ((w - reach) & LINE_MASK)]!;
+  let uOld = state[lineU + ((w - reach - d - 1) & LINE_MASK)]!;
+  let uOlder = state[lineU + ((w - reach - d - 2) & LINE_MASK)]!;
+
   let k = from;
   for (; k < to && learned < blockLearned; k++) {
     const p = position[k]!;
     state[lineP + w] = p;
     state[lineU + w] = output[k]! * 0.01;
-    const now = w;
+    const i = w - reach;
+    const counts = p - state[lineP + ((w - span) & LINE_MASK)]!;
+    const pHere = state[lineP + ((i + 1) & LINE_MASK)]!;
+    const velocity = (pHere - pBefore) * perSecond;
+    pBefore = pHere;
+    const uNew = state[lineU + ((i - d) & LINE_MASK)]!;
+    const u = n1 * uNew + n2 * uOld + n3 * uOlder;
+    const slope = m1 * uNew + m2 * uOld + m3 * uOlder;
+    uOlder = uOld;
+    uOld = uNew;
     w = (w + 1) & LINE_MASK;
     if (filled < need) {
       filled++;
       if (filled < need) continue;
     }
-    const i = now - reach;
-    const counts = p - state[lineP + ((now - span) & LINE_MASK)]!;
-    const velocity = (state[lineP + ((i + 1) & LINE_MASK)]! - state[lineP + (i & LINE_MASK)]!) * perSecond;
-    const uNew = state[lineU + ((i - d) & LINE_MASK)]!;
-    const uOld = state[lineU + ((i - d - 1) & LINE_MASK)]!;
-    const uOlder = state[lineU + ((i - d - 2) & LINE_MASK)]!;
-    const u = n1 * uNew + n2 * uOld + n3 * uOlder;
 
     let uf = 0;
     let ur = 0;
@@ -231,16 +244,25 @@ export function filterSamples(
     if (counts >= movingCounts) {
       uf = u;
       sf = 1;
-      du = -shareF * (m1 * uNew + m2 * uOld + m3 * uOlder);
+      du = -shareF * slope;
       vSim = simA * vSim + simF * u - simCF;
     } else if (counts <= -movingCounts) {
       ur = u;
       sr = 1;
-      du = -shareR * (m1 * uNew + m2 * uOld + m3 * uOlder);
+      du = -shareR * slope;
       vSim = simA * vSim + simR * u + simCR;
     } else {
       moving = false;
       vSim = 0;
+      if (++resting > settleSamples) {
+        // After ten filter time constants at rest both sides of the equation are zero, and stay there.
+        if (resting === settleSamples + 1) {
+          v1 = v2 = v3 = a1 = a2 = a3 = b1 = b2 = b3 = 0;
+          c1 = c2 = c3 = e1 = e2 = e3 = h1 = h2 = h3 = 0;
+          sf0 = sr0 = 0;
+        }
+        continue;
+      }
     }
 
     const vBefore = v3;
@@ -268,8 +290,7 @@ export function filterSamples(
     sr0 = sr;
 
     if (!moving) {
-      // At rest both sides of the equation are zero: a long rest settles the filters by itself.
-      if (++resting >= settleSamples) settling = 0;
+      if (resting === settleSamples) settling = 0;
       if (settling > 0) settling--;
       continue;
     }
@@ -285,34 +306,7 @@ export function filterSamples(
     phase = 0;
     learned++;
     const D = (v3 - vBefore) * rate;
-    state[B]! += vBefore * vBefore;
-    state[B + 1]! -= vBefore * a3;
-    state[B + 2]! -= vBefore * b3;
-    state[B + 3]! += vBefore * c3;
-    state[B + 4]! -= vBefore * e3;
-    state[B + 5]! += vBefore * h3;
-    state[B + 6]! -= vBefore * D;
-    state[B + 7]! += a3 * a3;
-    state[B + 8]! += a3 * b3;
-    state[B + 9]! -= a3 * c3;
-    state[B + 10]! += a3 * e3;
-    state[B + 11]! -= a3 * h3;
-    state[B + 12]! += a3 * D;
-    state[B + 13]! += b3 * b3;
-    state[B + 14]! -= b3 * c3;
-    state[B + 15]! += b3 * e3;
-    state[B + 16]! -= b3 * h3;
-    state[B + 17]! += b3 * D;
-    state[B + 18]! += c3 * c3;
-    state[B + 19]! -= c3 * e3;
-    state[B + 20]! += c3 * h3;
-    state[B + 21]! -= c3 * D;
-    state[B + 22]! += e3 * e3;
-    state[B + 23]! -= e3 * h3;
-    state[B + 24]! += e3 * D;
-    state[B + 25]! += h3 * h3;
-    state[B + 26]! -= h3 * D;
-    state[B + 27]! += D * D;
+    addProducts(state, B, vBefore, a3, b3, c3, e3, h3, D);
     state[B + BLOCK.forward]! += sf;
     state[B + BLOCK.reverse]! += sr;
     if (u >= 99.99 || u <= -99.99) state[B + BLOCK.atLimit]! += 1;
@@ -355,6 +349,51 @@ export function filterSamples(
   state[F + 16] = h2;
   state[F + 17] = h3;
   return k;
+}
+
+/**
+ * Products of the regressors (−V, U⁺, U⁻, −S⁺, S⁻, −U̇) and the target D, added to packed sums. A function of its own so
+ * that the loop above stays small enough to be compiled early.
+ */
+function addProducts(
+  sums: Float64Array,
+  from: number,
+  v: number,
+  a: number,
+  b: number,
+  c: number,
+  e: number,
+  h: number,
+  D: number,
+): void {
+  sums[from]! += v * v;
+  sums[from + 1]! -= v * a;
+  sums[from + 2]! -= v * b;
+  sums[from + 3]! += v * c;
+  sums[from + 4]! -= v * e;
+  sums[from + 5]! += v * h;
+  sums[from + 6]! -= v * D;
+  sums[from + 7]! += a * a;
+  sums[from + 8]! += a * b;
+  sums[from + 9]! -= a * c;
+  sums[from + 10]! += a * e;
+  sums[from + 11]! -= a * h;
+  sums[from + 12]! += a * D;
+  sums[from + 13]! += b * b;
+  sums[from + 14]! -= b * c;
+  sums[from + 15]! += b * e;
+  sums[from + 16]! -= b * h;
+  sums[from + 17]! += b * D;
+  sums[from + 18]! += c * c;
+  sums[from + 19]! -= c * e;
+  sums[from + 20]! += c * h;
+  sums[from + 21]! -= c * D;
+  sums[from + 22]! += e * e;
+  sums[from + 23]! -= e * h;
+  sums[from + 24]! += e * D;
+  sums[from + 25]! += h * h;
+  sums[from + 26]! -= h * D;
+  sums[from + 27]! += D * D;
 }
 
 /** Whether the open block has enough to close: full, or old with some motion in it. */

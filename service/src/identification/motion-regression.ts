@@ -1,4 +1,4 @@
-import { invertPositive, multiply, packedIndex } from './symmetric.js';
+import { invertPositive, multiply, packedIndex, solvePositive } from './symmetric.js';
 
 /**
  * The regression that identification rests on.
@@ -20,6 +20,13 @@ export const FULL_PARAMETERS = 6;
 const COLUMNS = FULL_PARAMETERS + 1;
 /** Sums of products of six regressors and the target, packed upper triangle. */
 export const PRODUCT_SUMS = (COLUMNS * (COLUMNS + 1)) / 2;
+
+/** Place of (row, column) in the packed sums, for both orders. */
+const PLACE = Int32Array.from({ length: COLUMNS * COLUMNS }, (_, at) => {
+  const row = Math.floor(at / COLUMNS);
+  const column = at % COLUMNS;
+  return packedIndex(COLUMNS, Math.min(row, column), Math.max(row, column));
+});
 
 /** Which parameters are free. */
 export interface MotionModel {
@@ -77,21 +84,22 @@ export function normalEquations(
   offset: number,
 ): { matrix: Float64Array; vector: Float64Array } {
   const half = new Float64Array(FULL_PARAMETERS * p);
-  const vector = new Float64Array(p);
-  for (let i = 0; i < FULL_PARAMETERS; i++) {
-    for (let j = 0; j < FULL_PARAMETERS; j++) {
-      const a = sums[offset + (i <= j ? packedIndex(COLUMNS, i, j) : packedIndex(COLUMNS, j, i))]!;
-      for (let c = 0; c < p; c++) half[i * p + c]! += a * map[j * p + c]!;
-    }
-    const r = sums[offset + packedIndex(COLUMNS, i, FULL_PARAMETERS)]!;
-    for (let c = 0; c < p; c++) vector[c]! += r * map[i * p + c]!;
-  }
   const matrix = new Float64Array(p * p);
-  for (let i = 0; i < FULL_PARAMETERS; i++)
-    for (let r = 0; r < p; r++) {
-      const m = map[i * p + r]!;
+  const vector = new Float64Array(p);
+  // Most entries of a map are zero.
+  for (let j = 0; j < FULL_PARAMETERS; j++)
+    for (let c = 0; c < p; c++) {
+      const m = map[j * p + c]!;
       if (m === 0) continue;
-      for (let c = 0; c < p; c++) matrix[r * p + c]! += m * half[i * p + c]!;
+      for (let i = 0; i < FULL_PARAMETERS; i++)
+        half[i * p + c]! += m * sums[offset + PLACE[i * COLUMNS + j]!]!;
+      vector[c]! += m * sums[offset + PLACE[j * COLUMNS + FULL_PARAMETERS]!]!;
+    }
+  for (let i = 0; i < FULL_PARAMETERS; i++)
+    for (let c = 0; c < p; c++) {
+      const m = map[i * p + c]!;
+      if (m === 0) continue;
+      for (let d = 0; d < p; d++) matrix[c * p + d]! += m * half[i * p + d]!;
     }
   return { matrix, vector };
 }
@@ -129,24 +137,38 @@ export function fitBlocks(
   mapOf?: (block: number) => Float64Array,
 ): BlockFit | null {
   const p = model.parameters;
+  const maps = mapOf && offsets.map((_, b) => mapOf(b));
   const a = new Float64Array(p * p);
   const a2 = new Float64Array(p * p);
   const r = new Float64Array(p);
-  const parts: { matrix: Float64Array; vector: Float64Array }[] = [];
   let wSum = 0;
   let w2Sum = 0;
-  for (let b = 0; b < offsets.length; b++) {
-    const map = mapOf ? mapOf(b) : model.map;
-    const part = normalEquations({ parameters: p, map }, sums, offsets[b]!);
-    parts.push(part);
-    const w = weights[b]!;
+  if (maps) {
+    for (let b = 0; b < offsets.length; b++) {
+      const part = normalEquations({ parameters: p, map: maps[b]! }, sums, offsets[b]!);
+      const w = weights[b]!;
+      for (let i = 0; i < p * p; i++) {
+        a[i]! += w * part.matrix[i]!;
+        a2[i]! += w * w * part.matrix[i]!;
+      }
+      for (let i = 0; i < p; i++) r[i]! += w * part.vector[i]!;
+    }
+  } else {
+    // One map for all blocks: add the sums first, map once.
+    const total = weightedTotal(sums, offsets, weights);
+    const total2 = weightedTotal(
+      sums,
+      offsets,
+      weights.map((w) => w * w),
+    );
+    const part = normalEquations(model, total, 0);
+    a.set(part.matrix);
+    r.set(part.vector);
+    a2.set(normalEquations(model, total2, 0).matrix);
+  }
+  for (const w of weights) {
     wSum += w;
     w2Sum += w * w;
-    for (let i = 0; i < p * p; i++) {
-      a[i]! += w * part.matrix[i]!;
-      a2[i]! += w * w * part.matrix[i]!;
-    }
-    for (let i = 0; i < p; i++) r[i]! += w * part.vector[i]!;
   }
   const inverse = invertPositive(a, p);
   const inverse2 = invertPositive(a2, p);
@@ -156,15 +178,39 @@ export function fitBlocks(
 
   const g = new Float64Array(p * p);
   const score = new Float64Array(p);
-  for (let b = 0; b < parts.length; b++) {
-    const { matrix, vector } = parts[b]!;
-    const w = weights[b]!;
-    for (let i = 0; i < p; i++) {
-      let s = vector[i]!;
-      for (let j = 0; j < p; j++) s -= matrix[i * p + j]! * theta[j]!;
-      score[i] = w * s;
+  const full = new Float64Array(FULL_PARAMETERS);
+  const left = new Float64Array(FULL_PARAMETERS);
+  for (let b = 0; b < offsets.length; b++) {
+    const map = maps ? maps[b]! : model.map;
+    if (b === 0 || maps)
+      for (let i = 0; i < FULL_PARAMETERS; i++) {
+        let s = 0;
+        for (let c = 0; c < p; c++) s += map[i * p + c]! * theta[c]!;
+        full[i] = s;
+      }
+    // r_b − A_b·θ from the packed upper triangle, whose last column is the target's.
+    left.fill(0);
+    let n = offsets[b]!;
+    for (let i = 0; i < FULL_PARAMETERS; i++) {
+      const own = full[i]!;
+      let s = left[i]! - sums[n++]! * own;
+      for (let j = i + 1; j < FULL_PARAMETERS; j++) {
+        const x = sums[n++]!;
+        s -= x * full[j]!;
+        left[j]! -= x * own;
+      }
+      left[i] = s + sums[n++]!;
     }
-    for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) g[i * p + j]! += score[i]! * score[j]!;
+    const w = weights[b]!;
+    for (let c = 0; c < p; c++) {
+      let s = 0;
+      for (let i = 0; i < FULL_PARAMETERS; i++) s += map[i * p + c]! * left[i]!;
+      score[c] = w * s;
+    }
+    for (let i = 0; i < p; i++) {
+      const si = score[i]!;
+      for (let j = 0; j < p; j++) g[i * p + j]! += si * score[j]!;
+    }
   }
   const effectiveBlocks = (wSum * wSum) / w2Sum;
   const correction = effectiveBlocks / Math.max(effectiveBlocks - p, effectiveBlocks / 2);
@@ -178,100 +224,27 @@ export function fitBlocks(
   return { model, theta, covariance, effectiveBlocks, inflation: spread };
 }
 
-/** The plant of a fit, with the gradients that carry the covariance of θ to each figure. */
-export interface PlantFigures {
-  readonly lnGain: number;
-  readonly lnPole: number;
-  readonly gainForward: number;
-  readonly gainReverse: number;
-  readonly coulomb: number;
-  readonly bias: number;
-  readonly delayShift: number;
-  readonly gradients: {
-    readonly lnGain: Float64Array;
-    readonly lnPole: Float64Array;
-    readonly lnForward: Float64Array;
-    readonly lnReverse: Float64Array;
-    readonly coulomb: Float64Array;
-    readonly bias: Float64Array;
-    readonly delayShift: Float64Array;
-  };
+/** Σ w·sums of blocks. */
+export function weightedTotal(
+  sums: Float64Array,
+  offsets: readonly number[],
+  weights: readonly number[],
+): Float64Array {
+  const total = new Float64Array(PRODUCT_SUMS);
+  for (let b = 0; b < offsets.length; b++) {
+    const w = weights[b]!;
+    const from = offsets[b]!;
+    for (let i = 0; i < PRODUCT_SUMS; i++) total[i]! += w * sums[from + i]!;
+  }
+  return total;
 }
 
 /**
- * From θ to K, α, f, b, Δτ: α = −ln(1 − α̃T)/T, K = β/α̃, f ± b = c±/β±. Where the directions have gains of
- * their own, K is their mean. With one direction of travel only, f stands for f ± b and b for 0.
+ * θ of least squares over a total of sums, without its covariance.
  *
- * @returns null when θ is no plant (α̃ ≤ 0, α̃T ≥ 1 or a gain ≤ 0).
+ * @param sums packed sums of products; @returns null when the regressors cannot be told apart.
  */
-export function plantFigures(fit: BlockFit, sampleTime: number): PlantFigures | null {
-  const { model, theta } = fit;
-  const p = model.parameters;
-  const full = (row: number): number => {
-    let s = 0;
-    for (let j = 0; j < p; j++) s += model.map[row * p + j]! * theta[j]!;
-    return s;
-  };
-  const rowGradient = (row: number): Float64Array => model.map.slice(row * p, row * p + p);
-  const combine = (...terms: [number, Float64Array][]): Float64Array => {
-    const g = new Float64Array(p);
-    for (const [f, v] of terms) for (let i = 0; i < p; i++) g[i]! += f * v[i]!;
-    return g;
-  };
-  const alphaT = full(0);
-  const betaF = full(1);
-  const betaR = full(2);
-  if (!(alphaT > 0) || !(alphaT * sampleTime < 1) || !(betaF > 0) || !(betaR > 0)) return null;
-  const pole = -Math.log(1 - alphaT * sampleTime) / sampleTime;
-  const gAlpha = rowGradient(0);
-  const gF = rowGradient(1);
-  const gR = rowGradient(2);
-  const lnForward = combine([1 / betaF, gF], [-1 / alphaT, gAlpha]);
-  const lnReverse = combine([1 / betaR, gR], [-1 / alphaT, gAlpha]);
-  const gainForward = betaF / alphaT;
-  const gainReverse = betaR / alphaT;
-  const gain = (gainForward + gainReverse) / 2;
-  const lnGain = combine([gainForward / (2 * gain), lnForward], [gainReverse / (2 * gain), lnReverse]);
-  const lnPole = combine([1 / ((1 - alphaT * sampleTime) * pole), gAlpha]);
-
-  const resistF = model.forward ? full(3) / betaF : 0;
-  const resistR = model.reverse ? full(4) / betaR : 0;
-  const gResistF = model.forward
-    ? combine([1 / betaF, rowGradient(3)], [-resistF / betaF, gF])
-    : new Float64Array(p);
-  const gResistR = model.reverse
-    ? combine([1 / betaR, rowGradient(4)], [-resistR / betaR, gR])
-    : new Float64Array(p);
-  const both = model.forward && model.reverse;
-  const half = both ? 0.5 : 1;
-  const coulomb = half * (resistF + resistR);
-  const bias = both ? 0.5 * (resistF - resistR) : 0;
-
-  const beta = (betaF + betaR) / 2;
-  let delayShift = model.heldDelay;
-  let gDelay = new Float64Array(p);
-  if (model.delayIndex >= 0) {
-    delayShift = full(5) / beta;
-    gDelay = new Float64Array(
-      combine([1 / beta, rowGradient(5)], [-delayShift / (2 * beta), gF], [-delayShift / (2 * beta), gR]),
-    );
-  }
-  return {
-    lnGain: Math.log(gain),
-    lnPole: Math.log(pole),
-    gainForward,
-    gainReverse,
-    coulomb,
-    bias,
-    delayShift,
-    gradients: {
-      lnGain,
-      lnPole,
-      lnForward,
-      lnReverse,
-      coulomb: combine([half, gResistF], [half, gResistR]),
-      bias: both ? combine([0.5, gResistF], [-0.5, gResistR]) : new Float64Array(p),
-      delayShift: gDelay,
-    },
-  };
+export function solveSums(model: MotionModel, sums: Float64Array, offset: number): Float64Array | null {
+  const { matrix, vector } = normalEquations(model, sums, offset);
+  return solvePositive(matrix, vector, model.parameters);
 }

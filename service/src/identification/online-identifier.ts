@@ -7,18 +7,14 @@ import {
   restartFilters,
   type FilterPlan,
 } from './motion-filter.js';
-import {
-  fitBlocks,
-  motionModel,
-  plantFigures,
-  type BlockFit,
-  type PlantFigures,
-} from './motion-regression.js';
+import { fitBlocks, motionModel, solveSums, weightedTotal, type MotionModel } from './motion-regression.js';
+import { plantFigures, plantValues, type PlantValues } from './plant-figures.js';
 import type { PlantEstimate, PlantPrior, WindowEstimate } from './plant-estimate.js';
 import {
   covarianceOf,
   describePlant,
   directionsDiffer,
+  directionsMayDiffer,
   lnCovariance,
   type PooledFit,
 } from './describe-plant.js';
@@ -34,8 +30,11 @@ const WINDOW_PATIENCE = 30;
 const WINDOW_LEAST_MOTION = 1.5;
 /** Share of samples a direction needs to count as present. */
 const DIRECTION_SHARE = 0.08;
-/** Cuts at which a change is looked for: the newest window and the one before. */
-const CUTS = 14;
+/**
+ * Cuts at which a change is looked for, in blocks from the newest: all of the newest window's, and one in every window
+ * before, since a window closes about every three blocks.
+ */
+const CUTS = [2, 3, 4, 5, 8, 11, 14] as const;
 /** Blocks left out before a cut: the one in which the plant changed fits neither side, a ramp takes longer. */
 const SKIPPED = [1, 6] as const;
 /** Blocks that a side of a cut needs. */
@@ -149,20 +148,38 @@ export class OnlineIdentifier {
     directional: boolean,
     held: number | null,
   ) {
-    const learned = this.sum(offsets, BLOCK.learned);
-    const forward = this.sum(offsets, BLOCK.forward) >= DIRECTION_SHARE * learned;
-    const reverse = this.sum(offsets, BLOCK.reverse) >= DIRECTION_SHARE * learned;
-    const fit = fitBlocks(motionModel(forward, reverse, directional, held), this.state, offsets, weights);
+    const fit = fitBlocks(this.modelOf(offsets, directional, held), this.state, offsets, weights);
     const figures = fit && plantFigures(fit, this.plan.sampleTime);
     return fit && figures ? { fit, figures } : null;
+  }
+
+  private modelOf(offsets: readonly number[], directional: boolean, held: number | null): MotionModel {
+    const learned = this.sum(offsets, BLOCK.learned);
+    return motionModel(
+      this.sum(offsets, BLOCK.forward) >= DIRECTION_SHARE * learned,
+      this.sum(offsets, BLOCK.reverse) >= DIRECTION_SHARE * learned,
+      directional,
+      held,
+    );
+  }
+
+  /** The plant by direction, without its covariance. */
+  private valuesOf(offsets: readonly number[], weights: readonly number[]): PlantValues | null {
+    const model = this.modelOf(offsets, true, null);
+    const theta = solveSums(model, weightedTotal(this.state, offsets, weights), 0);
+    return theta && plantValues(model, theta, this.plan.sampleTime);
   }
 
   private pooled(): PooledFit | null {
     const offsets = this.blockOffsets();
     const weights = offsets.map((_, i) => FORGETTING ** (offsets.length - 1 - i));
-    const split = this.fit(offsets, weights, true, null);
-    let chosen = this.fit(offsets, weights, false, null);
-    if (split?.fit.model.directional && directionsDiffer(split.fit, split.figures)) chosen = split;
+    // A covariance costs most: the split is fitted in full only where its gains differ at all.
+    const values = this.valuesOf(offsets, weights);
+    const split = values && directionsMayDiffer(values) ? this.fit(offsets, weights, true, null) : null;
+    const chosen =
+      split?.fit.model.directional && directionsDiffer(split.fit, split.figures)
+        ? split
+        : this.fit(offsets, weights, false, null);
     if (!chosen) return null;
     const n = this.sum(offsets, BLOCK.simulated);
     const mean = this.sum(offsets, BLOCK.velocity) / Math.max(n, 1);
@@ -219,25 +236,25 @@ export class OnlineIdentifier {
     const motion = this.movingSeconds(window);
     const elapsed = this.sum(window, BLOCK.elapsed) * plan.sampleTime;
     const closes = motion >= WINDOW_MOTION || (elapsed >= WINDOW_PATIENCE && motion >= WINDOW_LEAST_MOTION);
+    // Between windows the estimate hardly moves; until there is one, every block may bring it.
+    if (!closes && state[STATE.simReady] !== 0) return;
+    let pooled = this.pooled();
     if (closes) {
       state[STATE.windowOpen] = open + 1;
-      this.forgetWhatChanged();
+      if (this.forgetWhatChanged(pooled)) pooled = this.pooled();
     }
-    this.refresh();
+    if (pooled) this.refresh(pooled);
   }
 
   /** Puts the pooled estimate to use: velocity simulation, held delay, and the delay line's dead time. */
-  private refresh(): void {
+  private refresh({ fit, figures, movingSeconds }: PooledFit): void {
     const { state, plan } = this;
-    const pooled = this.pooled();
-    if (!pooled) return;
-    const { fit, figures } = pooled;
     const T = plan.sampleTime;
     const shift = figures.delayShift;
     const se = Math.sqrt(covarianceOf(fit, figures.gradients.delayShift, figures.gradients.delayShift));
     const moved = Math.min(Math.max(state[STATE.deadTime]! + shift, 0), plan.longestDelay);
     if (
-      pooled.movingSeconds >= DELAY_MOTION &&
+      movingSeconds >= DELAY_MOTION &&
       Math.abs(moved - state[STATE.deadTime]!) > Math.max(0.4 * T, 4 * se)
     ) {
       // Sums of the old dead time do not fit the new one: start over with it.
@@ -260,81 +277,151 @@ export class OnlineIdentifier {
   }
 
   /**
-   * Looks for the newest change of the plant: over the cuts that leave at least `LEAST_SIDE` blocks on each side, the
+   * Looks for the newest change of the plant: over the cuts of `CUTS` that leave at least `LEAST_SIDE` blocks before, the
    * largest of the squared differences of ln K, ln α, f and b in units of their variance (a Wald statistic for one
    * change at an unknown place). Beyond `CHANGED` the blocks before the cut are forgotten, and the estimate counts as
    * unsettled until a later window finds nothing.
+   *
+   * @returns whether blocks were forgotten
    */
-  private forgetWhatChanged(): void {
+  private forgetWhatChanged(pooled: PooledFit | null): boolean {
     const { state } = this;
     const offsets = this.blockOffsets();
+    const sides = new CutSides(this.state, offsets, this.plan.sampleTime);
     let cut = 0;
     let most = CHANGED;
-    for (let k = Math.max(LEAST_SIDE, offsets.length - CUTS); k <= offsets.length - LEAST_SIDE; k++)
+    // The oldest blocks hold the plant before any change that a cut could show: they differ from it the most.
+    const oldest = Math.max(LEAST_SIDE, offsets.length - Math.max(...CUTS) - Math.max(...SKIPPED));
+    for (const after of CUTS) {
+      const k = offsets.length - after;
+      if (k < oldest || sides.mostPossible(oldest, k) <= most) continue;
       for (const skipped of SKIPPED) {
-        if (k - skipped < LEAST_SIDE) continue;
-        const statistic = this.contradiction(offsets.slice(0, k - skipped), offsets.slice(k));
+        if (k - skipped < LEAST_SIDE || sides.mostPossible(k - skipped, k) <= most) continue;
+        const statistic = contradiction(
+          this.sideFit(offsets.slice(0, k - skipped)),
+          this.sideFit(offsets.slice(k)),
+        );
         if (statistic > most) {
           most = statistic;
           cut = k;
         }
       }
-    if (cut === 0 && this.newestFitBetter(offsets)) cut = offsets.length - NEWEST;
+    }
+    if (cut === 0 && this.newestFitBetter(offsets, pooled)) cut = offsets.length - NEWEST;
     state[STATE.unsettled] = cut > 0 ? 1 : 0;
-    if (cut === 0) return;
+    if (cut === 0) return false;
     state[STATE.blockCount] = offsets.length - cut;
     // What was simulated with the former plant says nothing about the fit of the new one.
     for (const o of offsets.slice(cut))
       for (const sum of [BLOCK.simulated, BLOCK.velocity, BLOCK.velocitySquare, BLOCK.residualSquare])
         state[o + sum] = 0;
+    return true;
   }
 
   /**
    * Whether the newest blocks agree among themselves far better than all of them do: after a slow change the older
    * ones are themselves a mixture, too uncertain to contradict anything.
    */
-  private newestFitBetter(offsets: readonly number[]): boolean {
-    if (offsets.length < NEWEST + LEAST_SIDE) return false;
-    const spread = (some: readonly number[]): number | undefined =>
-      this.fit(
-        some,
-        some.map(() => 1),
-        true,
-        0,
-      )?.fit.inflation;
-    const all = spread(offsets);
-    const newest = spread(offsets.slice(-NEWEST));
-    return all !== undefined && newest !== undefined && all > MIXED * newest;
+  private newestFitBetter(offsets: readonly number[], pooled: PooledFit | null): boolean {
+    if (!pooled || offsets.length < NEWEST + LEAST_SIDE) return false;
+    const newest = offsets.slice(-NEWEST);
+    const inflation = this.fit(
+      newest,
+      newest.map(() => 1),
+      true,
+      0,
+    )?.fit.inflation;
+    return inflation !== undefined && pooled.fit.inflation > MIXED * inflation;
   }
 
-  private contradiction(before: readonly number[], after: readonly number[]): number {
-    // The dead time is held where the delay line has it: its pooled remainder is what a change upsets first.
-    const shift = 0;
-    // Gains by direction in any case: one for both would take a difference between directions for noise.
-    const fit = (offsets: readonly number[]) =>
-      this.fit(
-        offsets,
-        offsets.map(() => 1),
-        true,
-        shift,
-      );
-    const a = fit(before);
-    const b = fit(after);
-    if (!a || !b) return 0;
-    let most = 0;
-    for (const name of ['lnGain', 'lnPole', 'coulomb', 'bias'] as const) {
-      const difference = b.figures[name] - a.figures[name];
-      const variance = figureVariance(a, name) + figureVariance(b, name) + MODEL_ERROR[name] ** 2;
-      most = Math.max(most, difference ** 2 / variance);
-    }
-    return most;
+  /** A side of a cut, for `contradiction`. */
+  private sideFit(offsets: readonly number[]): SideFit | null {
+    // The dead time is held where the delay line has it: its pooled remainder is what a change upsets first. Gains by
+    // direction in any case: one for both would take a difference between directions for noise.
+    const side = this.fit(
+      offsets,
+      offsets.map(() => 1),
+      true,
+      0,
+    );
+    if (!side) return null;
+    const { fit, figures } = side;
+    const variance = (name: ChangingFigure): number => {
+      const g = figures.gradients[name];
+      return Math.max(0, covarianceOf(fit, g, g));
+    };
+    return CHANGING.map((name) => ({ value: figures[name], variance: variance(name) }));
   }
 }
 
-function figureVariance(
-  part: { fit: BlockFit; figures: PlantFigures },
-  name: keyof typeof MODEL_ERROR,
-): number {
-  const g = part.figures.gradients[name];
-  return Math.max(0, covarianceOf(part.fit, g, g));
+const CHANGING = ['lnGain', 'lnPole', 'coulomb', 'bias'] as const;
+type ChangingFigure = (typeof CHANGING)[number];
+type SideFit = { readonly value: number; readonly variance: number }[];
+
+/** The largest squared difference between two sides in units of its variance. */
+function contradiction(before: SideFit | null, after: SideFit | null): number {
+  if (!before || !after) return 0;
+  let most = 0;
+  CHANGING.forEach((name, i) => {
+    const difference = after[i]!.value - before[i]!.value;
+    const variance = before[i]!.variance + after[i]!.variance + MODEL_ERROR[name] ** 2;
+    most = Math.max(most, difference ** 2 / variance);
+  });
+  return most;
+}
+
+/**
+ * Estimates of both sides of every cut from running totals of the blocks, without their variances: cheap enough to
+ * ask first whether a cut can contradict at all.
+ */
+class CutSides {
+  private readonly totals: Float64Array;
+  private readonly known = new Map<number, PlantValues | null>();
+  private readonly blocks: number;
+  private readonly sums = new Float64Array(BLOCK.length);
+
+  constructor(
+    state: Float64Array,
+    offsets: readonly number[],
+    private readonly sampleTime: number,
+  ) {
+    this.blocks = offsets.length;
+    this.totals = new Float64Array((offsets.length + 1) * BLOCK.length);
+    offsets.forEach((offset, b) => {
+      const at = b * BLOCK.length;
+      for (let i = 0; i < BLOCK.length; i++)
+        this.totals[at + BLOCK.length + i] = this.totals[at + i]! + state[offset + i]!;
+    });
+  }
+
+  /** What `contradiction` of blocks 0 … end−1 against start … cannot exceed: the differences over the model's own error. */
+  mostPossible(end: number, start: number): number {
+    const before = this.side(0, end);
+    const after = this.side(start, this.blocks);
+    if (!before || !after) return 0;
+    let most = 0;
+    for (const name of CHANGING)
+      most = Math.max(most, ((after[name] - before[name]) / MODEL_ERROR[name]) ** 2);
+    return most;
+  }
+
+  private side(from: number, to: number): PlantValues | null {
+    const key = from * RING * 2 + to;
+    const known = this.known.get(key);
+    if (known !== undefined) return known;
+    const { sums, totals } = this;
+    for (let i = 0; i < BLOCK.length; i++)
+      sums[i] = totals[to * BLOCK.length + i]! - totals[from * BLOCK.length + i]!;
+    const learned = sums[BLOCK.learned]!;
+    const model = motionModel(
+      sums[BLOCK.forward]! >= DIRECTION_SHARE * learned,
+      sums[BLOCK.reverse]! >= DIRECTION_SHARE * learned,
+      true,
+      0,
+    );
+    const theta = solveSums(model, sums, 0);
+    const values = theta && plantValues(model, theta, this.sampleTime);
+    this.known.set(key, values);
+    return values;
+  }
 }

@@ -7,10 +7,10 @@ import {
   PRODUCT_SUMS,
   type BlockFit,
   type MotionModel,
-  type PlantFigures,
 } from './motion-regression.js';
+import { weightedSum, type PlantFigures } from './plant-figures.js';
 import { plantAt, windowSums, WindowScratch, type OutputErrorPlant } from './output-error.js';
-import { invertPositive } from './symmetric.js';
+import { solvePositive } from './symmetric.js';
 
 /** The data of an output-error fit. */
 export interface OutputErrorProblem {
@@ -21,6 +21,8 @@ export interface OutputErrorProblem {
   /** T, s. */
   readonly sampleTime: number;
   readonly windows: readonly MotionWindow[];
+  /** About every how many samples one is looked at; 1 where not given. */
+  readonly stride?: number;
 }
 
 export interface OutputErrorFit {
@@ -159,7 +161,7 @@ export function fitOutputError(
     }
     if (!next) break;
     const settled =
-      Math.abs(Math.log(next.plant.pole / plant.pole)) < 1e-7 &&
+      Math.abs(Math.log(next.plant.pole / plant.pole)) < 1e-6 &&
       Math.abs(next.plant.deadTime - plant.deadTime) < 1e-5 * T &&
       now.square - next.square <= 1e-9 * now.square;
     now = next;
@@ -340,6 +342,7 @@ function evaluate(
       sums,
       offset,
       derivatives,
+      problem.stride,
     );
     square += sums[offset + PRODUCT_SUMS - 1]!;
     if (!map || free.gainTrend >= 0) map = mapAt(free, plant, along);
@@ -381,10 +384,15 @@ function solve(
   const n = columns.length;
   const part = new Float64Array(n * n);
   columns.forEach((row, i) => columns.forEach((c, j) => (part[i * n + j] = matrix[row * p + c]!)));
-  const inverse = invertPositive(part, n, 1e-13);
-  if (!inverse) return null;
+  const found = solvePositive(
+    part,
+    Float64Array.from(columns, (c) => vector[c]!),
+    n,
+    1e-13,
+  );
+  if (!found) return null;
   const delta = new Float64Array(p);
-  columns.forEach((row, i) => columns.forEach((c, j) => (delta[row]! += inverse[i * n + j]! * vector[c]!)));
+  columns.forEach((c, i) => (delta[c] = found[i]!));
   return delta;
 }
 
@@ -396,17 +404,12 @@ function figuresOf(free: FreeParameters, plant: OutputErrorPlant): PlantFigures 
     g.set(model.map.subarray(r * model.parameters, (r + 1) * model.parameters));
     return g;
   };
-  const combine = (...terms: [number, Float64Array][]): Float64Array => {
-    const g = new Float64Array(p);
-    for (const [f, v] of terms) for (let i = 0; i < p; i++) g[i]! += f * v[i]!;
-    return g;
-  };
   const { pole, gainForward, gainReverse, dragForward, dragReverse, deadTime } = plant;
   const gain = (gainForward + gainReverse) / 2;
   const resistForward = model.forward ? dragForward / gainForward : 0;
   const resistReverse = model.reverse ? dragReverse / gainReverse : 0;
-  const gResistForward = combine([1 / gainForward, row(3)], [-resistForward / gainForward, row(1)]);
-  const gResistReverse = combine([1 / gainReverse, row(4)], [-resistReverse / gainReverse, row(2)]);
+  const gResistForward = weightedSum([1 / gainForward, row(3)], [-resistForward / gainForward, row(1)]);
+  const gResistReverse = weightedSum([1 / gainReverse, row(4)], [-resistReverse / gainReverse, row(2)]);
   const both = model.forward && model.reverse;
   const half = both ? 0.5 : 1;
   const none = new Float64Array(p);
@@ -419,15 +422,15 @@ function figuresOf(free: FreeParameters, plant: OutputErrorPlant): PlantFigures 
     bias: both ? 0.5 * (resistForward - resistReverse) : 0,
     delayShift: deadTime,
     gradients: {
-      lnGain: combine([0.5 / gain, row(1)], [0.5 / gain, row(2)]),
-      lnPole: combine([1 / pole, row(0)]),
-      lnForward: combine([1 / gainForward, row(1)]),
-      lnReverse: combine([1 / gainReverse, row(2)]),
-      coulomb: combine(
+      lnGain: weightedSum([0.5 / gain, row(1)], [0.5 / gain, row(2)]),
+      lnPole: weightedSum([1 / pole, row(0)]),
+      lnForward: weightedSum([1 / gainForward, row(1)]),
+      lnReverse: weightedSum([1 / gainReverse, row(2)]),
+      coulomb: weightedSum(
         [half, model.forward ? gResistForward : none],
         [half, model.reverse ? gResistReverse : none],
       ),
-      bias: both ? combine([0.5, gResistForward], [-0.5, gResistReverse]) : none,
+      bias: both ? weightedSum([0.5, gResistForward], [-0.5, gResistReverse]) : none,
       delayShift: model.delayIndex >= 0 ? row(5) : none,
     },
   };

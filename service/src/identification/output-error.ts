@@ -98,6 +98,9 @@ function respond(u: Float64Array, window: MotionWindow, step: HoldStep, x: Float
   }
 }
 
+/** Short windows are looked at more closely: eight samples at least. */
+const strideIn = (samples: number, stride: number): number => Math.max(1, Math.min(stride, samples >> 3));
+
 /** Work arrays for windows of up to `length` samples. */
 export class WindowScratch {
   readonly x: Float64Array;
@@ -119,6 +122,8 @@ export class WindowScratch {
  * The window's start by least squares and what is left: fills `residual` (NaN where the row is missing) with
  * y − ŷ, and `x` and `phi` with the responses it used.
  *
+ * @param stride about every how many samples one is looked at; the others' residuals are not filled.
+ *
  * @returns sum of squared residuals and the number of measured samples.
  */
 export function windowResidual(
@@ -128,21 +133,23 @@ export function windowResidual(
   window: MotionWindow,
   plant: OutputErrorPlant,
   scratch: WindowScratch,
+  stride = 1,
 ): { square: number; measured: number; velocity: number; start: number } {
   const { x, phi, residual } = scratch;
   const n = window.to - window.from;
+  const every = strideIn(n, stride);
   respond(output, window, holdStep(plant.pole, plant.deadTime, sampleTime), x);
   const forward = window.direction > 0;
   const gain = forward ? plant.gainForward : plant.gainReverse;
   const drag = forward ? -plant.dragForward : plant.dragReverse;
-  const fade = Math.exp(-plant.pole * sampleTime);
+  const fade = Math.exp(-plant.pole * sampleTime * every);
   let e = 1;
   let m = 0;
   let sPhi = 0;
   let sPhi2 = 0;
   let sR = 0;
   let sPhiR = 0;
-  for (let k = 0; k < n; k++) {
+  for (let k = 0; k < n; k += every) {
     const f = (1 - e) / plant.pole;
     e *= fade;
     phi[k] = f;
@@ -159,7 +166,7 @@ export function windowResidual(
   const velocity = (sPhiR - mean * sR) / (sPhi2 - mean * sPhi);
   const start = sR / m - velocity * mean;
   let square = 0;
-  for (let k = 0; k < n; k++) {
+  for (let k = 0; k < n; k += every) {
     const r = (residual[k]! -= start + velocity * phi[k]!);
     if (r === r) square += r * r;
   }
@@ -183,9 +190,10 @@ export function windowSums(
   sums: Float64Array,
   offset: number,
   derivatives = true,
+  stride = 1,
 ): void {
   const { x, xPole, xDelay, phi, residual } = scratch;
-  const { velocity } = windowResidual(position, output, sampleTime, window, plant, scratch);
+  const { velocity } = windowResidual(position, output, sampleTime, window, plant, scratch, stride);
   const { pole, deadTime } = plant;
   const dPole = POLE_STEP * pole;
   const dDelay = DELAY_STEP * sampleTime;
@@ -197,6 +205,7 @@ export function windowSums(
   const gain = forward ? plant.gainForward : plant.gainReverse;
   const drag = forward ? -plant.dragForward : plant.dragReverse;
   const n = window.to - window.from;
+  const every = strideIn(n, stride);
   const gainPerPole = gain / dPole;
   const gainPerDelay = gain / dDelay;
   // Responses grow with t³; about their middle the sums keep their digits.
@@ -228,7 +237,7 @@ export function windowSums(
   let q44 = 0,
     q4r = 0,
     qrr = 0;
-  for (let k = 0; k < n; k++) {
+  for (let k = 0; k < n; k += every) {
     const r = residual[k]!;
     if (r !== r) continue;
     const f = phi[k]!;

@@ -10,15 +10,12 @@ export function packedIndex(p: number, row: number, column: number): number {
   return row * p - (row * (row - 1)) / 2 + (column - row);
 }
 
-/**
- * Inverse of a symmetric positive definite matrix by Cholesky's factorisation of the matrix scaled to unit
- * diagonal.
- *
- * @param a p×p, row-major; left unchanged.
- * @returns the inverse, or null when a pivot of the scaled matrix falls below `tolerance`: the columns are
- * then too nearly dependent to tell apart.
- */
-export function invertPositive(a: Float64Array, p: number, tolerance = 1e-10): Float64Array | null {
+/** Cholesky's factor L of the matrix scaled to unit diagonal, and the scale; null as `invertPositive` says. */
+function factor(
+  a: Float64Array,
+  p: number,
+  tolerance: number,
+): { l: Float64Array; scale: Float64Array } | null {
   const scale = new Float64Array(p);
   for (let i = 0; i < p; i++) {
     const d = a[i * p + i]!;
@@ -38,22 +35,60 @@ export function invertPositive(a: Float64Array, p: number, tolerance = 1e-10): F
       }
     }
   }
+  return { l, scale };
+}
+
+/** L·Lᵀ·x = x in place. */
+function substitute(l: Float64Array, x: Float64Array, p: number): void {
+  for (let i = 0; i < p; i++) {
+    let s = x[i]!;
+    for (let k = 0; k < i; k++) s -= l[i * p + k]! * x[k]!;
+    x[i] = s / l[i * p + i]!;
+  }
+  for (let i = p - 1; i >= 0; i--) {
+    let s = x[i]!;
+    for (let k = i + 1; k < p; k++) s -= l[k * p + i]! * x[k]!;
+    x[i] = s / l[i * p + i]!;
+  }
+}
+
+/**
+ * Inverse of a symmetric positive definite matrix by Cholesky's factorisation of the matrix scaled to unit
+ * diagonal.
+ *
+ * @param a p×p, row-major; left unchanged.
+ * @returns the inverse, or null when a pivot of the scaled matrix falls below `tolerance`: the columns are
+ * then too nearly dependent to tell apart.
+ */
+export function invertPositive(a: Float64Array, p: number, tolerance = 1e-10): Float64Array | null {
+  const factored = factor(a, p, tolerance);
+  if (!factored) return null;
+  const { l, scale } = factored;
   const inverse = new Float64Array(p * p);
   const x = new Float64Array(p);
   for (let c = 0; c < p; c++) {
-    for (let i = 0; i < p; i++) {
-      let s = i === c ? 1 : 0;
-      for (let k = 0; k < i; k++) s -= l[i * p + k]! * x[k]!;
-      x[i] = s / l[i * p + i]!;
-    }
-    for (let i = p - 1; i >= 0; i--) {
-      let s = x[i]!;
-      for (let k = i + 1; k < p; k++) s -= l[k * p + i]! * x[k]!;
-      x[i] = s / l[i * p + i]!;
-    }
+    x.fill(0);
+    x[c] = 1;
+    substitute(l, x, p);
     for (let i = 0; i < p; i++) inverse[i * p + c] = x[i]! * scale[i]! * scale[c]!;
   }
   return inverse;
+}
+
+/** x of a·x = b for a symmetric positive definite a; null as `invertPositive` says. */
+export function solvePositive(
+  a: Float64Array,
+  b: Float64Array,
+  p: number,
+  tolerance = 1e-10,
+): Float64Array | null {
+  const factored = factor(a, p, tolerance);
+  if (!factored) return null;
+  const { l, scale } = factored;
+  const x = b.map((value, i) => value * scale[i]!);
+  substitute(l, x, p);
+  for (let i = 0; i < p; i++) x[i]! *= scale[i]!;
+  return x;
 }
 
 /** gᵀ·C·h for a p×p matrix C. */
