@@ -1,18 +1,16 @@
 import { Injectable } from '@nestjs/common';
 import { InjectRepository } from '@nestjs/typeorm';
-import { createHash } from 'node:crypto';
-import { Brackets, type EntityManager, Repository } from 'typeorm';
+import { Brackets, type EntityManager, Repository, type SelectQueryBuilder } from 'typeorm';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
+import { Transactions } from '../database/transactions.js';
 import { UserRole } from '../people/user-role.entity.js';
 import { AuditEntry } from './audit-entry.entity.js';
-import { canonicalJson } from './canonical-json.js';
+import { chainHash, ORIGIN, verifyChain, type ChainReport, type StoredEntry } from './chain.js';
 
-/** What stands before the first entry. */
-const ORIGIN = '0'.repeat(64);
 /** Who is named when the service acted by itself. */
 export const SERVICE_NAME = 'Polewright';
-/** Entries that are read at once while the chain is checked. */
-const VERIFY_BATCH = 1_000;
+/** Entries that are read at once. */
+const BATCH = 1_000;
 /** What engineers may read the record of: the subjects of their own work. */
 const ENGINEERS_SUBJECTS = ['axis', 'proposal'];
 
@@ -28,29 +26,17 @@ export interface AuditRecord {
   after?: unknown;
 }
 
-export interface AuditFilter {
+/** Which part of what a person may read. */
+export interface AuditScope {
   siteId?: number;
   subjectType?: string;
   subjectId?: string;
+}
+
+export interface AuditFilter extends AuditScope {
   limit: number;
   /** Only entries before this one. */
   beforeId?: number;
-}
-
-export interface ChainReport {
-  entries: number;
-  intact: boolean;
-  /** The first entry that does not follow from the one before it, or was altered. */
-  brokenAt: number | null;
-  /** The hash of the last good entry: kept elsewhere, it also shows a cut-off end. */
-  head: string;
-}
-
-/** SHA-256 over the hash of the entry before and the canonical JSON of this entry's content, in hexadecimal. */
-function chainHash(previousHash: string, entry: Omit<AuditEntry, 'id' | 'hash' | 'previousHash'>): string {
-  const { at, userId, actor, action, subjectType, subjectId, siteId, note, before, after } = entry;
-  const content = { at, userId, actor, action, subjectType, subjectId, siteId, note, before, after };
-  return createHash('sha256').update(previousHash).update(canonicalJson(content)).digest('hex');
 }
 
 /** A value as it comes back from its JSON column. */
@@ -59,7 +45,10 @@ const asStored = (value: unknown): unknown =>
 
 @Injectable()
 export class AuditService {
-  constructor(@InjectRepository(AuditEntry) private readonly entries: Repository<AuditEntry>) {}
+  constructor(
+    @InjectRepository(AuditEntry) private readonly entries: Repository<AuditEntry>,
+    private readonly transactions: Transactions,
+  ) {}
 
   /**
    * Adds an entry to the record, in the transaction of what it records.
@@ -98,56 +87,77 @@ export class AuditService {
     user: SignedInUser,
     filter: AuditFilter,
   ): Promise<{ items: AuditEntry[]; nextCursor: string | null }> {
-    const readable = sitesOf(user, 'audit.read');
-    const administered = sitesOf(user, 'people.manage');
-    const query = this.entries
-      .createQueryBuilder('entry')
-      .where(
-        new Brackets((scope) =>
-          scope
-            .where('entry.siteId IN (:...administered)', { administered: [-1, ...administered] })
-            .orWhere('entry.siteId IN (:...readable) AND entry.subjectType IN (:...subjects)', {
-              readable: [-1, ...readable],
-              subjects: ENGINEERS_SUBJECTS,
-            })
-            .orWhere(
-              `entry.siteId IS NULL AND entry.subjectType = 'person' AND EXISTS (${this.entries.manager
-                .createQueryBuilder(UserRole, 'role')
-                .select('1')
-                .where('CAST(role.userId AS TEXT) = entry.subjectId AND role.siteId IN (:...administered)')
-                .getQuery()})`,
-            ),
-        ),
-      )
+    const query = this.readable(user, filter)
       .orderBy('entry.id', 'DESC')
       .take(filter.limit + 1);
-    if (filter.siteId !== undefined) query.andWhere('entry.siteId = :siteId', { siteId: filter.siteId });
-    if (filter.subjectType) query.andWhere('entry.subjectType = :type', { type: filter.subjectType });
-    if (filter.subjectId) query.andWhere('entry.subjectId = :id', { id: filter.subjectId });
     if (filter.beforeId) query.andWhere('entry.id < :beforeId', { beforeId: filter.beforeId });
     const found = await query.getMany();
     const items = found.slice(0, filter.limit);
     return { items, nextCursor: found.length > filter.limit ? String(items.at(-1)?.id) : null };
   }
 
-  /** Walks the whole chain and says where, if anywhere, it does not hold. */
-  async verify(): Promise<ChainReport> {
-    const report: ChainReport = { entries: 0, intact: true, brokenAt: null, head: ORIGIN };
+  /** The same entries, oldest first, with their hashes, batch by batch: nothing is held that was handed on. */
+  async *export(user: SignedInUser, filter: AuditScope): AsyncGenerator<AuditEntry[]> {
     for (let lastId = 0; ;) {
-      const batch = await this.entries
-        .createQueryBuilder('entry')
-        .where('entry.id > :lastId', { lastId })
+      const batch = await this.readable(user, filter)
+        .andWhere('entry.id > :lastId', { lastId })
         .orderBy('entry.id')
-        .take(VERIFY_BATCH)
+        .take(BATCH)
         .getMany();
-      for (const entry of batch) {
-        if (entry.previousHash !== report.head || chainHash(entry.previousHash, entry) !== entry.hash)
-          return { ...report, intact: false, brokenAt: entry.id };
-        report.entries += 1;
-        report.head = entry.hash;
-        lastId = entry.id;
-      }
-      if (batch.length < VERIFY_BATCH) return report;
+      if (batch.length > 0) yield batch;
+      if (batch.length < BATCH) return;
+      lastId = batch.at(-1)!.id;
     }
+  }
+
+  private readable(user: SignedInUser, filter: AuditScope): SelectQueryBuilder<AuditEntry> {
+    const readable = sitesOf(user, 'audit.read');
+    const administered = sitesOf(user, 'people.manage');
+    const query = this.entries.createQueryBuilder('entry').where(
+      new Brackets((scope) =>
+        scope
+          .where('entry.siteId IN (:...administered)', { administered: [-1, ...administered] })
+          .orWhere('entry.siteId IN (:...readable) AND entry.subjectType IN (:...subjects)', {
+            readable: [-1, ...readable],
+            subjects: ENGINEERS_SUBJECTS,
+          })
+          .orWhere(
+            `entry.siteId IS NULL AND entry.subjectType = 'person' AND EXISTS (${this.entries.manager
+              .createQueryBuilder(UserRole, 'role')
+              .select('1')
+              .where('CAST(role.userId AS TEXT) = entry.subjectId AND role.siteId IN (:...administered)')
+              .getQuery()})`,
+          ),
+      ),
+    );
+    if (filter.siteId !== undefined) query.andWhere('entry.siteId = :siteId', { siteId: filter.siteId });
+    if (filter.subjectType) query.andWhere('entry.subjectType = :type', { type: filter.subjectType });
+    if (filter.subjectId) query.andWhere('entry.subjectId = :id', { id: filter.subjectId });
+    return query;
+  }
+
+  /** Walks the whole chain, as stored, and says where, if anywhere, it does not hold. */
+  async verify(): Promise<ChainReport> {
+    const { manager } = this.entries;
+    // Asked for between two units of work: one that is under way may yet be rolled back.
+    const [end] = await this.transactions.run<{ given: number; last: number }[]>((unit) =>
+      unit.query(
+        `SELECT COALESCE((SELECT "seq" FROM "sqlite_sequence" WHERE "name" = 'audit_entry'), 0) AS "given",
+                COALESCE((SELECT MAX("id") FROM "audit_entry"), 0) AS "last"`,
+      ),
+    );
+    const { given, last } = end!;
+    async function* batches(): AsyncGenerator<StoredEntry[]> {
+      for (let lastId = 0; lastId < last;) {
+        const batch: StoredEntry[] = await manager.query(
+          'SELECT * FROM "audit_entry" WHERE "id" > ? AND "id" <= ? ORDER BY "id" LIMIT ?',
+          [lastId, last, BATCH],
+        );
+        if (batch.length === 0) return;
+        yield batch;
+        lastId = batch.at(-1)!.id;
+      }
+    }
+    return verifyChain(batches(), given);
   }
 }

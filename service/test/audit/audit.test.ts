@@ -89,7 +89,11 @@ describe('the record', () => {
       id,
     ])) as unknown[];
     await people.dataSource.query('DELETE FROM "audit_entry" WHERE "id" = ?', [id]);
-    expect(await audit.verify()).toMatchObject({ intact: false, brokenAt: id + 1 });
+    expect(await audit.verify()).toMatchObject({
+      intact: false,
+      brokenAt: id,
+      reason: `Entry ${id} is missing`,
+    });
     await people.dataSource.getRepository(AuditEntry).insert({
       ...(row[0] as AuditEntry),
       at: new Date(`${String((row[0] as { at: string }).at).replace(' ', 'T')}Z`),

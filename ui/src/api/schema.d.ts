@@ -20,6 +20,22 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/audit/export": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["AuditController_export"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/audit/chain": {
         parameters: {
             query?: never;
@@ -911,11 +927,24 @@ export interface components {
             items: components["schemas"]["AuditEntryDto"][];
             nextCursor: string | null;
         };
+        BrokenEntryDto: {
+            /** @description As it reads now; it may be what was altered */
+            at: string;
+            actor: string;
+            action: string;
+            subjectType: string;
+            subjectId: string;
+        };
         AuditChainDto: {
+            /** @description Good entries from the first one on */
             entries: number;
             intact: boolean;
             /** @description The first entry that was altered or does not follow */
             brokenAt: number | null;
+            /** @description What is wrong there, in words */
+            reason: string | null;
+            /** @description null when it is gone, or another site’s */
+            broken: components["schemas"]["BrokenEntryDto"] | null;
             /** @description SHA-256 of the last good entry */
             head: string;
         };
@@ -2261,6 +2290,29 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["AuditPageDto"];
+                };
+            };
+        };
+    };
+    AuditController_export: {
+        parameters: {
+            query?: {
+                siteId?: number;
+                subjectType?: string;
+                subjectId?: string;
+            };
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/jsonl": string;
                 };
             };
         };

@@ -22,6 +22,7 @@ export function Layout() {
     { to: '/rota', label: 'Rota', count: 0 },
     ...(administrator ? [{ to: '/admin/people', label: 'People', count: 0 }] : []),
     { to: '/admin/mail', label: 'Mail', count: 0 },
+    ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record', count: 0 }] : []),
   ];
   const link = ({ to, label, count }: (typeof links)[number]) => (
     <NavLink key={to} to={to} end={to === '/'} className={({ isActive }) => (isActive ? classes.here : '')}>

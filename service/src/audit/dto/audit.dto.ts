@@ -2,7 +2,7 @@ import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
 import { IsInt, IsOptional, IsString, Max, MaxLength, Min } from 'class-validator';
 
-export class AuditQueryDto {
+export class AuditScopeDto {
   @ApiPropertyOptional()
   @IsOptional()
   @Type(() => Number)
@@ -20,7 +20,9 @@ export class AuditQueryDto {
   @IsString()
   @MaxLength(100)
   subjectId?: string;
+}
 
+export class AuditQueryDto extends AuditScopeDto {
   @ApiPropertyOptional({ default: 50, minimum: 1, maximum: 200 })
   @IsOptional()
   @Type(() => Number)
@@ -79,8 +81,25 @@ export class AuditPageDto {
   nextCursor: string | null;
 }
 
-export class AuditChainDto {
+class BrokenEntryDto {
+  @ApiProperty({ description: 'As it reads now; it may be what was altered' })
+  at: string;
+
   @ApiProperty()
+  actor: string;
+
+  @ApiProperty()
+  action: string;
+
+  @ApiProperty()
+  subjectType: string;
+
+  @ApiProperty()
+  subjectId: string;
+}
+
+export class AuditChainDto {
+  @ApiProperty({ description: 'Good entries from the first one on' })
   entries: number;
 
   @ApiProperty()
@@ -92,6 +111,16 @@ export class AuditChainDto {
     description: 'The first entry that was altered or does not follow',
   })
   brokenAt: number | null;
+
+  @ApiProperty({ type: String, nullable: true, description: 'What is wrong there, in words' })
+  reason: string | null;
+
+  @ApiProperty({
+    type: BrokenEntryDto,
+    nullable: true,
+    description: 'null when it is gone, or another site’s',
+  })
+  broken: BrokenEntryDto | null;
 
   @ApiProperty({ description: 'SHA-256 of the last good entry' })
   head: string;
