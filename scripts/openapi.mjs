@@ -12,7 +12,9 @@ try {
   const document = join(folder, 'openapi.json');
   run('npx', 'tsc', '-p', 'service/tsconfig.build.json');
   run(process.execPath, 'service/dist/openapi.js', document);
-  run('npx', 'openapi-typescript', document, '-o', process.argv[2] ?? 'ui/src/api/schema.d.ts');
+  const out = process.argv[2] ?? 'ui/src/api/schema.d.ts';
+  // A field with a default may be left out of a request.
+  run('npx', 'openapi-typescript', document, '--default-non-nullable', 'false', '-o', out);
 } finally {
   rmSync(folder, { recursive: true });
 }

@@ -28,6 +28,8 @@ export interface DesignQuestion {
   move?: Move;
   /** Hz, > 0; 200 logarithmic points when absent, see `defaultFrequencies`. */
   frequenciesHz?: readonly number[];
+  /** The move starts as an axis in production does: held, its integrator at the bias. */
+  holding?: boolean;
 }
 
 export interface Design {
@@ -64,7 +66,7 @@ export function defaultFrequencies(plant: Plant, gains: Gains, sampleTime: numbe
  * @throws UnphysicalInputError naming the field
  */
 export function design(question: DesignQuestion): Design {
-  const { plant, structure, controller, move, frequenciesHz } = question;
+  const { plant, structure, controller, move, frequenciesHz, holding } = question;
   checkPlant(plant);
   checkController(controller);
   const gains = gainsOf(question);
@@ -86,7 +88,16 @@ export function design(question: DesignQuestion): Design {
       maxSensitivity: sensitivity?.value ?? null,
       maxSensitivityHz: sensitivity?.frequencyHz ?? null,
     },
-    move: move ? simulateMove(plant, gains, structure, controller, move) : null,
+    move: move
+      ? simulateMove(
+          plant,
+          gains,
+          structure,
+          controller,
+          move,
+          holding ? { output: plant.bias ?? 0 } : undefined,
+        )
+      : null,
   };
 }
 

@@ -352,9 +352,14 @@ function matrixProduct(
   return result;
 }
 
+/** |z| below which a pole stands for a delay and has no counterpart in s. */
+const PURE_DELAY = 1e-9;
+
 export interface SampledLoop {
   /** Eigenvalues in z, by descending magnitude. */
   poles: Complex[];
+  /** The same as poles in s, ln(z)/T, rad/s; those at z = 0, pure delay, are left out. */
+  equivalentPoles: Complex[];
   /** Largest |z|. */
   spectralRadius: number;
   stable: boolean;
@@ -382,6 +387,12 @@ export function sampledLoop(plant: Plant, gains: Gains, controller: Controller):
   const stable = spectralRadius < 1;
   return {
     poles,
+    equivalentPoles: poles
+      .filter((z) => Math.hypot(z.re, z.im) > PURE_DELAY)
+      .map((z) => ({
+        re: Math.log(Math.hypot(z.re, z.im)) / controller.sampleTime,
+        im: Math.atan2(z.im, z.re) / controller.sampleTime,
+      })),
     spectralRadius,
     stable,
     damping: Math.min(...poles.map(poleDamping)),

@@ -4,6 +4,7 @@ import { InjectDataSource } from '@nestjs/typeorm';
 import { In, type DataSource } from 'typeorm';
 import { AuditService } from '../audit/audit.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
+import { bindingOf } from '../control/binding.js';
 import {
   checkGains,
   checkPattern,
@@ -23,7 +24,6 @@ import { RecentSeconds } from '../indicators/recent-seconds.js';
 import type { AxisPipeline } from '../telemetry/axis-pipeline.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import {
-  bindingOf,
   decisionSentence,
   expectedOf,
   lambdaOf,

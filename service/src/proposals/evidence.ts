@@ -1,4 +1,3 @@
-import type { LimitName } from '../control/limits.js';
 import {
   expectedMove,
   recommendGains,
@@ -71,21 +70,6 @@ export interface Expected {
   worst: ExpectedFigures | null;
 }
 
-export interface Binding {
-  /** λ of the proposed gains, rad/s; null where none are proposed */
-  lambda: number | null;
-  commissionedLambda: number;
-  /** Whether the commissioned λ is kept. */
-  kept: boolean;
-  upper: { name: LimitName; lambda: number } | null;
-  lower: { name: LimitName; lambda: number } | null;
-  allowed: { low: number; high: number } | null;
-  limits: { name: LimitName; side: 'upper' | 'lower'; lambda: number | null }[];
-  searched: { low: number; high: number };
-  reason: string;
-  waysOut: string[];
-}
-
 /** Trace points sent to a page: enough for a chart, few enough to store with the proposal. */
 const TRACE_POINTS = 400;
 
@@ -124,25 +108,6 @@ export function recommend(
     move: moveOf(axis),
     tolerances: { followingError: axis.tolerances.followingError },
   });
-}
-
-export function bindingOf({ limits, lambda, verdict, reason, waysOut }: Recommendation): Binding {
-  const bound = (name: LimitName | null): { name: LimitName; lambda: number } | null => {
-    const found = limits.limits.find((limit) => limit.name === name);
-    return found && found.bound !== null ? { name: found.name, lambda: found.bound } : null;
-  };
-  return {
-    lambda,
-    commissionedLambda: limits.lambda,
-    kept: verdict === 'keep',
-    upper: bound(limits.binding.upper),
-    lower: bound(limits.binding.lower),
-    allowed: limits.allowed,
-    limits: limits.limits.map(({ name, side, bound: at }) => ({ name, side, lambda: at })),
-    searched: limits.searched,
-    reason,
-    waysOut,
-  };
 }
 
 /** The axis's own move on the plant as identified, with the gains of today and with the proposed ones. */

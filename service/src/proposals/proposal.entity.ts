@@ -11,7 +11,8 @@ import {
 } from 'typeorm';
 import type { Gains, PolePattern, Structure } from '../control/pole-placement.js';
 import { Axis } from '../fleet/axis.entity.js';
-import type { Binding, CurrentTuning, Evidence, Expected } from './evidence.js';
+import type { Binding } from '../control/binding.js';
+import type { CurrentTuning, Evidence, Expected } from './evidence.js';
 import type { Cause } from '../identification/probable-cause.js';
 import type { TrialResult } from './trial.js';
 

@@ -884,6 +884,22 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/design/limits": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["DesignController_limits"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/status": {
         parameters: {
             query?: never;
@@ -1764,6 +1780,13 @@ export interface components {
             side: "upper" | "lower";
             /** @description rad/s; null when it does not bind within the searched range */
             lambda: number | null;
+            /** @description Commissioned λ inside the bound, as a ratio above 1 */
+            margin?: number | null;
+            /** @description The quantity at the commissioned λ, worst of the region */
+            value?: number | null;
+            /** @description What the quantity may be: at most, for the damping at least */
+            threshold?: number;
+            unit?: string;
         };
         BindingDto: {
             /** @description λ of the proposed gains, rad/s */
@@ -2038,17 +2061,17 @@ export interface components {
              * @description Dead time, s
              * @default 0
              */
-            deadTime: number;
+            deadTime?: number;
             /**
              * @description Coulomb friction, % of output
              * @default 0
              */
-            coulomb: number;
+            coulomb?: number;
             /**
              * @description Bias, % of output
              * @default 0
              */
-            bias: number;
+            bias?: number;
         };
         DesignGainsDto: {
             /** @description %/mm */
@@ -2069,23 +2092,23 @@ export interface components {
              * @description Samples from computing an output to applying it
              * @default 0
              */
-            outputDelaySamples: number;
+            outputDelaySamples?: number;
             /**
              * @description Position resolution, mm; 0 is continuous
              * @default 0
              */
-            resolution: number;
+            resolution?: number;
             /**
              * @description Output limit, %
              * @default 100
              */
-            outputLimit: number;
+            outputLimit?: number;
             /**
              * @description Integrator law: "clamp" also drags the integrator inward, "conditional" only stops its growth
              * @default clamp
              * @enum {string}
              */
-            antiWindup: "clamp" | "conditional";
+            antiWindup?: "clamp" | "conditional";
         };
         DesignMoveDto: {
             /** @description mm, negative for the other direction */
@@ -2096,9 +2119,16 @@ export interface components {
              * @description s at rest after the move
              * @default 1
              */
-            settle: number;
+            settle?: number;
             /** @enum {string} */
             profile: "raised-cosine" | "step";
+            /**
+             * @description Starts as an axis in production: held, its integrator at the bias
+             * @default false
+             */
+            holding?: boolean;
+            /** @description Thins the trace to about this many points */
+            points?: number;
         };
         DesignRequestDto: {
             plant: components["schemas"]["DesignPlantDto"];
@@ -2112,12 +2142,17 @@ export interface components {
              * @description Kv = 1/K (PI-D: 1/K + Kd) and Ka = 1/(Kα); a Kv or Ka given with the gains is kept
              * @default false
              */
-            feedForward: boolean;
+            feedForward?: boolean;
             controller: components["schemas"]["DesignControllerDto"];
             /** @description At most 200 000 samples long */
             move?: components["schemas"]["DesignMoveDto"];
             /** @description Hz; 200 logarithmic points up to the Nyquist frequency when absent */
             frequenciesHz?: number[];
+            /**
+             * @description What a person should know of these gains, in words
+             * @default false
+             */
+            remarks?: boolean;
         };
         ComplexDto: {
             re: number;
@@ -2195,6 +2230,8 @@ export interface components {
         SampledLoopDto: {
             /** @description Eigenvalues in z */
             poles: components["schemas"]["ComplexDto"][];
+            /** @description ln(z)/T, rad/s; poles at z = 0 left out */
+            equivalentPoles: components["schemas"]["ComplexDto"][];
             /** @description Largest |z| */
             spectralRadius: number;
             stable: boolean;
@@ -2249,6 +2286,49 @@ export interface components {
             sampled: components["schemas"]["SampledLoopDto"];
             /** @description null when no move was asked for */
             move: components["schemas"]["MoveAnswerDto"] | null;
+            /** @description In words, when asked for */
+            remarks?: string[];
+        };
+        BoundsDto: {
+            low: number;
+            high: number;
+        };
+        RegionDto: {
+            /** @description K, (mm/s)/% */
+            gain: components["schemas"]["BoundsDto"];
+            /** @description α, rad/s */
+            pole: components["schemas"]["BoundsDto"];
+        };
+        LimitTolerancesDto: {
+            /** @description Largest following error on the move, mm */
+            followingError: number;
+            /**
+             * @description Largest output ripple while holding, % RMS
+             * @default 1
+             */
+            ripplePct?: number;
+            /**
+             * @description Largest Ms with all delays
+             * @default 2
+             */
+            maxSensitivity?: number;
+            /** @description Smallest damping ratio of the sampled loop */
+            damping?: number;
+        };
+        LimitsRequestDto: {
+            plant: components["schemas"]["DesignPlantDto"];
+            /** @description 95 % region; its corners are checked beside the plant */
+            region?: components["schemas"]["RegionDto"];
+            /** @enum {string} */
+            structure: "PID" | "PI-D" | "I-PD";
+            /** @description Its frequency is the λ that is kept where no limit forbids it */
+            pattern: components["schemas"]["PatternDto"];
+            /** @default false */
+            feedForward?: boolean;
+            controller: components["schemas"]["DesignControllerDto"];
+            /** @description At most 20 000 samples long: it is simulated hundreds of times */
+            move: components["schemas"]["DesignMoveDto"];
+            tolerances: components["schemas"]["LimitTolerancesDto"];
         };
         StatusDto: {
             /** @description Whether this is the demo with its invented works */
@@ -3782,6 +3862,37 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["DesignAnswerDto"];
+                };
+            };
+            400: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProblemDto"];
+                };
+            };
+        };
+    };
+    DesignController_limits: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["LimitsRequestDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["BindingDto"];
                 };
             };
             400: {

@@ -21,6 +21,7 @@ export const router = createBrowserRouter([
                 children: [
                   { path: '/', lazy: () => import('../features/fleet/fleet-page') },
                   { path: '/axes/:id', lazy: () => import('../features/axis/axis-page') },
+                  { path: '/axes/:id/bench', lazy: () => import('../features/bench/bench-page') },
                   { path: '/alerts', lazy: () => import('../features/alerts/alerts-page') },
                   { path: '/alerts/:id', lazy: () => import('../features/alerts/alert-page') },
                   { path: '/proposals', lazy: () => import('../features/proposals/proposals-page') },

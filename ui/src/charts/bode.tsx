@@ -12,6 +12,12 @@ export interface BodeCurve {
   dashed?: boolean;
 }
 
+/** A frequency worth knowing: a letter in the plot, its words below. */
+export interface FrequencyMark {
+  hz: number;
+  words: string;
+}
+
 const LEFT = 46;
 const RIGHT = 12;
 const TOP = 26;
@@ -24,10 +30,18 @@ const MOST_DB = 60;
 const LEAST_DB = -40;
 
 /**
- * Open loop as two stacked plots on one logarithmic frequency axis: magnitude, dB, with the 0 dB line; phase, degrees,
- * with the −180° line. Pointer or arrow keys read both curves at one frequency.
+ * A loop as two stacked plots on one logarithmic frequency axis: magnitude, dB, with the 0 dB line; phase, degrees,
+ * with the −180° line. Pointer or arrow keys read the curves at one frequency.
  */
-export function Bode({ curves }: { curves: readonly BodeCurve[] }) {
+export function Bode({
+  curves,
+  loop = 'open loop',
+  marks: frequencyMarks = [],
+}: {
+  curves: readonly BodeCurve[];
+  loop?: 'open loop' | 'closed loop';
+  marks?: readonly FrequencyMark[];
+}) {
   const describedBy = useId();
   const { ref, width } = useChartWidth();
   const frequencies = curves[0]?.frequencyHz ?? [];
@@ -49,6 +63,7 @@ export function Bode({ curves }: { curves: readonly BodeCurve[] }) {
     TOP,
   );
   const phase = scaleOf(Math.min(-180, ...phases), Math.max(-90, ...phases), 45, TOP + TALL + GAP);
+  const inFrame = frequencyMarks.filter(({ hz: f }) => Math.log10(f) >= from && Math.log10(f) <= to);
   const hz = at === null ? null : frequencies[at]!;
   const valueAt = (curve: BodeCurve, frequency: number): string => {
     const i = indexAt(curve.frequencyHz, frequency);
@@ -60,7 +75,7 @@ export function Bode({ curves }: { curves: readonly BodeCurve[] }) {
         width={width}
         height={HEIGHT}
         role="img"
-        aria-label="Open loop, magnitude and phase over frequency, arrow keys to read"
+        aria-label={`${loop}, magnitude and phase over frequency, arrow keys to read`}
         aria-describedby={describedBy}
         {...reading}
         style={{ display: 'block', maxWidth: '100%', touchAction: 'pan-y' }}
@@ -123,13 +138,35 @@ export function Bode({ curves }: { curves: readonly BodeCurve[] }) {
             </g>
           </g>
         ))}
+        {inFrame.map(({ hz: f }, i) => (
+          <g key={i}>
+            <path
+              d={`M${x(f)} ${TOP}v${TALL}m0 ${GAP}v${TALL}`}
+              stroke="var(--press)"
+              strokeDasharray="1 3"
+              strokeWidth="1.4"
+            />
+            <text x={x(f) + 4} y={TOP + 12 + 13 * (i % 3)} fontSize="12" fontWeight="600" fill="var(--press)">
+              {letter(i)}
+            </text>
+          </g>
+        ))}
         {hz !== null && <path d={`M${x(hz)} ${TOP}V${HEIGHT - BOTTOM}`} stroke="var(--press)" />}
       </svg>
       <figcaption id={describedBy} className="small soft" aria-live="polite" style={{ minHeight: 38 }}>
         {hz === null
-          ? `open loop, ${curves.map(({ label, dashed }) => `${label} ${dashed ? 'dashed' : 'solid'}`).join(', ')}`
+          ? `${loop}, ${curves.map(({ label, dashed }) => `${label} ${dashed ? 'dashed' : 'solid'}`).join(', ')}`
           : `${significant(hz)} Hz: ${curves.map((curve) => `${curve.label} ${valueAt(curve, hz)}`).join('; ')}`}
       </figcaption>
+      {inFrame.length > 0 && (
+        <ul className="small" style={{ margin: '4px 0', paddingLeft: 0, listStyle: 'none' }}>
+          {inFrame.map(({ hz: f, words }, i) => (
+            <li key={i}>
+              <b style={{ color: 'var(--press)' }}>{letter(i)}</b> {significant(f)} Hz: {words}
+            </li>
+          ))}
+        </ul>
+      )}
       <TableView
         columns={['Hz', ...curves.flatMap(({ label }) => [`${label}, dB`, `${label}, °`])]}
         rows={() =>
@@ -145,6 +182,8 @@ export function Bode({ curves }: { curves: readonly BodeCurve[] }) {
     </figure>
   );
 }
+
+const letter = (i: number): string => String.fromCharCode(65 + i);
 
 /** Index of the frequency nearest on a logarithmic scale. */
 function indexAt(frequencies: readonly number[], hz: number): number {

@@ -7,6 +7,8 @@ export interface Series {
   values: readonly number[];
   /** Before dashed, after solid, everywhere. */
   dashed?: boolean;
+  /** What is asked for, not what happens: dotted. */
+  dotted?: boolean;
 }
 
 const LEFT = 56;
@@ -107,15 +109,16 @@ export function MoveChart({
             d={path(one)}
             fill="none"
             stroke="var(--ink)"
-            strokeWidth={one.dashed ? 1.5 : 2}
+            strokeWidth={one.dashed || one.dotted ? 1.5 : 2}
             {...(one.dashed && { strokeDasharray: '5 4', strokeOpacity: 0.7 })}
+            {...(one.dotted && { strokeDasharray: '1.5 3.5' })}
           />
         ))}
         {t !== null && <path d={`M${x(t)} ${TOP}V${height - BOTTOM}`} stroke="var(--press)" />}
       </svg>
       <figcaption id={describedBy} className="small soft" aria-live="polite" style={{ minHeight: 19 }}>
         {t === null
-          ? series.map(({ label, dashed }) => `${label} ${dashed ? 'dashed' : 'solid'}`).join(', ')
+          ? series.map((one) => `${one.label} ${strokeOf(one)}`).join(', ')
           : `${t.toFixed(2)} s: ${series.map((one) => `${one.label} ${read(one, t)} ${unit}`).join(', ')}`}
       </figcaption>
       <TableView
@@ -130,3 +133,5 @@ export function MoveChart({
     </figure>
   );
 }
+
+const strokeOf = ({ dashed, dotted }: Series): string => (dashed ? 'dashed' : dotted ? 'dotted' : 'solid');

@@ -3,6 +3,10 @@ import { roundMarks, TableView, useChartWidth } from './chart-frame';
 export interface PoleSet {
   label: string;
   poles: readonly { re: number; im: number }[];
+  /** Drawn as circles. */
+  zeros?: readonly { re: number; im: number }[];
+  /** Drawn as a plus instead of a cross. */
+  plus?: boolean;
   /** Before faint, after solid. */
   faint?: boolean;
 }
@@ -20,7 +24,7 @@ const LEFT = 56;
 export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
   const { ref, width: room } = useChartWidth();
   const width = Math.min(WIDEST, room);
-  const all = sets.flatMap(({ poles }) => poles);
+  const all = sets.flatMap(({ poles, zeros = [] }) => [...poles, ...zeros]);
   const leftmost = Math.max(1e-6, ...all.map(({ re }) => -re));
   const highest = Math.max(1e-9, ...all.map(({ im }) => Math.abs(im)));
   const rightmost = Math.max(0, ...all.map(({ re }) => re));
@@ -71,11 +75,13 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
             {signed(mark)}
           </text>
         ))}
-        {sets.map(({ label, poles, faint }) =>
+        {sets.map(({ label, poles, faint, plus }) =>
           distinct(poles, reach).map(({ re, im, times }, i) => (
             <g key={`${label} ${i}`}>
               <path
-                d={`M${x(re) - 5} ${y(im) - 5}l10 10m0-10l-10 10`}
+                d={
+                  plus ? `M${x(re) - 6} ${y(im)}h12m-6-6v12` : `M${x(re) - 5} ${y(im) - 5}l10 10m0-10l-10 10`
+                }
                 stroke={faint ? 'var(--soft)' : 'var(--ink)'}
                 strokeWidth={faint ? 1.6 : 2.2}
               />
@@ -93,17 +99,33 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
             </g>
           )),
         )}
+        {sets.map(({ label, zeros = [], faint }) =>
+          distinct(zeros, reach).map(({ re, im }) => (
+            <circle
+              key={`${label} zero ${re} ${im}`}
+              cx={x(re)}
+              cy={y(im)}
+              r="5"
+              fill="none"
+              stroke={faint ? 'var(--soft)' : 'var(--ink)'}
+              strokeWidth={faint ? 1.4 : 1.8}
+            />
+          )),
+        )}
       </svg>
       <figcaption className="small soft">
-        {sets.map(({ label, faint }) => `${label} ${faint ? 'thin' : 'heavy'}`).join(', ')}; rad/s, equal
-        scales
+        {sets.map(signOf).join(', ')}
+        {sets.some(({ zeros }) => zeros?.length) && ', zeros as circles'}; rad/s, equal scales
       </figcaption>
       <TableView
-        columns={['poles', 'real, rad/s', 'imaginary, rad/s']}
+        columns={['poles and zeros', 'real, rad/s', 'imaginary, rad/s']}
         rows={() =>
-          sets.flatMap(({ label, poles }) =>
-            poles.map(({ re, im }) => [
-              label,
+          sets.flatMap(({ label, poles, zeros = [] }) =>
+            [
+              ...poles.map((pole) => ({ name: label, ...pole })),
+              ...zeros.map((zero) => ({ name: `${label}, zero`, ...zero })),
+            ].map(({ name, re, im }) => [
+              name,
               signed(Number(re.toPrecision(4))),
               signed(Number(im.toPrecision(4))),
             ]),
@@ -129,3 +151,6 @@ function distinct(poles: PoleSet['poles'], reach: number): { re: number; im: num
 
 const wordsOf = ({ label, poles }: PoleSet): string =>
   `${label}: ${poles.map(({ re, im }) => `${re.toFixed(1)}${Math.abs(im) > 1e-6 ? ` ${im < 0 ? '−' : '+'} ${Math.abs(im).toFixed(1)}j` : ''}`).join(', ')} rad/s`;
+
+const signOf = ({ label, faint, plus }: PoleSet): string =>
+  `${label} ${plus ? 'as plus signs' : faint ? 'thin' : 'heavy'}`;

@@ -13,23 +13,30 @@ export const LIMIT_WORDS: Record<Binding['limits'][number]['name'], string> = {
 
 /** Assumed until the page is laid out, px. */
 const USUAL_WIDTH = 640;
-const MARGIN = 24;
+/** Room left of and right of the ruler, px. */
+export const MARGIN = 24;
 /** Labels closer than this, px, move to another row. */
 const LEAST_GAP = 118;
 
 /** What binds: one logarithmic bar, the allowed interval filled, each limit a named tick, the chosen λ a mark. */
-export function LambdaRuler({ binding }: { binding: Binding }) {
+export function LambdaRuler({
+  binding,
+  range,
+}: {
+  binding: Binding;
+  /** Ends of the ruler, rad/s; around what there is to show where not given. */
+  range?: { from: number; to: number };
+}) {
   const { allowed, limits, lambda, commissionedLambda, upper, lower, kept } = binding;
   const { ref, width: measured } = useElementSize();
   const width = measured || USUAL_WIDTH;
   const bounds = limits.flatMap(({ lambda: at }) => (at === null ? [] : [at]));
   const all = [commissionedLambda, ...(lambda ? [lambda] : []), ...bounds];
-  const from = Math.min(...all) / 1.5;
-  const to = Math.max(...all) * 1.5;
+  const { from, to } = range ?? { from: Math.min(...all) / 1.5, to: Math.max(...all) * 1.5 };
   const x = (v: number): number => MARGIN + ((width - 2 * MARGIN) * Math.log(v / from)) / Math.log(to / from);
   const rows: number[] = [];
   const ticks = limits
-    .flatMap(({ name, lambda: at }) => (at === null ? [] : [{ name, at }]))
+    .flatMap(({ name, lambda: at }) => (at === null || at < from || at > to ? [] : [{ name, at }]))
     .sort((a, b) => a.at - b.at)
     .map(({ name, at }) => {
       let row = rows.findIndex((last) => x(at) - last >= LEAST_GAP);

@@ -1,4 +1,4 @@
-import { ApiProperty } from '@nestjs/swagger';
+import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { GainsDto } from '../../fleet/dto/axis.dto.js';
 import { NullableNumber } from '../../page.js';
 
@@ -115,6 +115,9 @@ export class SampledLoopDto {
   @ApiProperty({ type: [ComplexDto], description: 'Eigenvalues in z' })
   poles: ComplexDto[];
 
+  @ApiProperty({ type: [ComplexDto], description: 'ln(z)/T, rad/s; poles at z = 0 left out' })
+  equivalentPoles: ComplexDto[];
+
   @ApiProperty({ description: 'Largest |z|' })
   spectralRadius: number;
 
@@ -201,4 +204,7 @@ export class DesignAnswerDto {
 
   @ApiProperty({ type: MoveAnswerDto, nullable: true, description: 'null when no move was asked for' })
   move: MoveAnswerDto | null;
+
+  @ApiPropertyOptional({ type: [String], description: 'In words, when asked for' })
+  remarks?: string[];
 }

@@ -155,6 +155,21 @@ export class DesignMoveDto {
   @ApiProperty({ enum: ['raised-cosine', 'step'] })
   @IsIn(['raised-cosine', 'step'])
   profile: 'raised-cosine' | 'step';
+
+  @ApiPropertyOptional({
+    default: false,
+    description: 'Starts as an axis in production: held, its integrator at the bias',
+  })
+  @IsOptional()
+  @IsBoolean()
+  holding?: boolean;
+
+  @ApiPropertyOptional({ description: 'Thins the trace to about this many points', minimum: 50 })
+  @IsOptional()
+  @IsInt()
+  @Min(50)
+  @Max(200_000)
+  points?: number;
 }
 
 export class DesignRequestDto {
@@ -215,4 +230,9 @@ export class DesignRequestDto {
   @Min(1e-6, { each: true })
   @Max(1e7, { each: true })
   frequenciesHz?: number[];
+
+  @ApiPropertyOptional({ default: false, description: 'What a person should know of these gains, in words' })
+  @IsOptional()
+  @IsBoolean()
+  remarks?: boolean;
 }

@@ -12,7 +12,7 @@ import {
   MaxLength,
   ValidateNested,
 } from 'class-validator';
-import { LIMITS, type LimitName } from '../../control/limits.js';
+import { BindingDto } from '../../design/dto/binding.dto.js';
 import {
   patternFrequency,
   STRUCTURES,
@@ -36,7 +36,6 @@ import { PROPOSAL_STATES, type Proposal, type ProposalState } from '../proposal.
 import type { Possibilities } from '../review.service.js';
 import { STEPS, type Step } from '../steps.js';
 
-const LIMIT_NAMES = LIMITS.map(({ name }) => name);
 const CAUSES = [
   'load',
   'viscous drag',
@@ -200,65 +199,6 @@ class ExpectedDto {
     description: 'Worst corner of the 95 % region, with the new gains',
   })
   worst: ExpectedFiguresDto | null;
-}
-
-class BoundDto {
-  @ApiProperty({ enum: LIMIT_NAMES })
-  name: LimitName;
-
-  @ApiProperty({ description: 'rad/s' })
-  lambda: number;
-}
-
-class LimitDto {
-  @ApiProperty({ enum: LIMIT_NAMES })
-  name: LimitName;
-
-  @ApiProperty({ enum: ['upper', 'lower'] })
-  side: 'upper' | 'lower';
-
-  @NullableNumber('rad/s; null when it does not bind within the searched range')
-  lambda: number | null;
-}
-
-class RangeDto {
-  @ApiProperty()
-  low: number;
-
-  @ApiProperty()
-  high: number;
-}
-
-class BindingDto {
-  @NullableNumber('λ of the proposed gains, rad/s')
-  lambda: number | null;
-
-  @ApiProperty({ description: 'rad/s' })
-  commissionedLambda: number;
-
-  @ApiProperty({ description: 'Whether the commissioned λ is kept' })
-  kept: boolean;
-
-  @ApiProperty({ type: BoundDto, nullable: true, description: 'What stops λ from going higher' })
-  upper: BoundDto | null;
-
-  @ApiProperty({ type: BoundDto, nullable: true, description: 'What stops λ from going lower' })
-  lower: BoundDto | null;
-
-  @ApiProperty({ type: RangeDto, nullable: true, description: 'rad/s' })
-  allowed: RangeDto | null;
-
-  @ApiProperty({ type: [LimitDto] })
-  limits: LimitDto[];
-
-  @ApiProperty()
-  searched: RangeDto;
-
-  @ApiProperty()
-  reason: string;
-
-  @ApiProperty({ type: [String] })
-  waysOut: string[];
 }
 
 class ComparedDto {

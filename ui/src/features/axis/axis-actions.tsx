@@ -1,7 +1,7 @@
 import { Button, Select, Textarea } from '@mantine/core';
 import { useMutation } from '@tanstack/react-query';
 import { useState } from 'react';
-import { useNavigate } from 'react-router-dom';
+import { Link, useNavigate } from 'react-router-dom';
 import { may } from '../../api/policy';
 import { queryClient } from '../../api/query-client';
 import { useSession } from '../../api/use-session';
@@ -35,6 +35,11 @@ export function AxisActions({ axis, state }: { axis: Axis; state: Axis['state'] 
       {may(user, 'proposal.work', axis.siteId) && !axis.openProposal && axis.estimate && (
         <Button variant="outline" loading={draft.isPending} onClick={() => draft.mutate()}>
           Start a proposal
+        </Button>
+      )}
+      {axis.gains && (
+        <Button component={Link} to={`/axes/${axis.id}/bench`} variant="outline">
+          Try gains
         </Button>
       )}
       {may(user, 'axis.maintenance', axis.siteId) && (
