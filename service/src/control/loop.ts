@@ -100,10 +100,21 @@ export function referenceTransfer(plant: Plant, gains: Gains, structure: Structu
   return { numerator, denominator, denominatorUncertainty: uncertainty };
 }
 
+/** The last loop asked for: one design asks for its poles three times. */
+let lastPoles: { coefficients: Polynomial; uncertainty: Polynomial; poles: readonly Complex[] } | null = null;
+
 /** Poles of the closed loop: the roots of Δ(s), rad/s. A triple pole comes back as three equal reals. */
-export function closedLoopPoles(plant: Plant, gains: Gains): Complex[] {
+export function closedLoopPoles(plant: Plant, gains: Gains): readonly Complex[] {
   const { coefficients, uncertainty } = characteristicPolynomial(plant, gains);
-  return roots(coefficients, uncertainty);
+  const equal = (a: Polynomial, b: Polynomial): boolean =>
+    a.length === b.length && a.every((c, i) => c === b[i]);
+  if (
+    !lastPoles ||
+    !equal(lastPoles.coefficients, coefficients) ||
+    !equal(lastPoles.uncertainty, uncertainty)
+  )
+    lastPoles = { coefficients, uncertainty, poles: roots(coefficients, uncertainty) };
+  return lastPoles.poles;
 }
 
 /** Whether Δ(s) has all its roots in the open left half plane (Routh): all dᵢ > 0 and d₂d₁ > d₀. */
@@ -116,7 +127,7 @@ export function isStable(plant: Plant, gains: Gains): boolean {
 
 export interface ClosedLoop {
   /** Roots of Δ(s), rad/s. */
-  poles: Complex[];
+  poles: readonly Complex[];
   /** Roots of T's numerator, rad/s. */
   zeros: Complex[];
   /** First frequency where |T| falls to −3 dB (10^(−3/20)) of its value at rest, Hz; null when it never does. */

@@ -6,6 +6,7 @@ import {
   type PolePattern,
   type Structure,
 } from './pole-placement.js';
+import { abs, type Complex } from './polynomial.js';
 import { outputRipple } from './sampled-loop.js';
 import type { Plant } from './plant.js';
 
@@ -40,31 +41,36 @@ function kdRemarks(plant: Plant, pattern: PolePattern, kd: number): string[] {
     : [`Kd turns negative below ${where}, where PI alone places the poles.`];
 }
 
-/** What the structure does to the zeros and so to a step; the poles are the same for all three. */
-function structureRemarks(structure: Structure, { closedLoop, step, errors }: Design): string[] {
+/** What the structure and the feed-forward do to the zeros and so to a step; the poles are the same for all three. */
+function structureRemarks(structure: Structure, { gains, closedLoop, step, errors }: Design): string[] {
   const real = closedLoop.poles.every(({ re, im }) => Math.abs(im) <= 1e-9 * Math.abs(re));
-  const poles = real ? 'although all poles are real' : 'with these poles';
-  const zeros =
-    closedLoop.zeros.length === 0
-      ? 'no zeros'
-      : `${closedLoop.zeros.length === 1 ? 'one zero' : `${closedLoop.zeros.length} zeros`} at ${closedLoop.zeros
-          .map(({ re, im }) =>
-            im === 0 ? figure(re) : `${figure(re)} ${im < 0 ? '−' : '+'} ${figure(Math.abs(im))}j`,
-          )
-          .join(' and ')} rad/s`;
   const overshoot =
     step.overshootPct === null
       ? 'a step does not settle'
       : step.overshootPct < 0.005
         ? 'a step does not overshoot'
-        : `a step overshoots by ${step.overshootPct.toFixed(1)} % ${poles}`;
+        : `a step overshoots by ${step.overshootPct.toFixed(1)} % ${real ? 'although all poles are real' : 'with these poles'}`;
   const lag =
     errors.ramp === null
       ? 'it falls further and further behind a ramp'
-      : Math.abs(errors.ramp) < 1e-12
+      : Math.abs(errors.ramp) < 1e-9
         ? 'it follows a ramp without lag'
         : `it lags ${figure(errors.ramp * 100)} mm behind a ramp of 100 mm/s`;
-  return [`${structure} adds ${zeros}: ${overshoot}; ${lag}.`];
+  const who = gains.kv === 0 && gains.ka === 0 ? structure : `${structure} with feed-forward`;
+  return [`${who} adds ${zerosInWords(closedLoop)}: ${overshoot}; ${lag}.`];
+}
+
+/** "2 zeros at −25.3 ± 5.95j rad/s"; zeros that cancel every pole are said to. */
+function zerosInWords({ poles, zeros }: Design['closedLoop']): string {
+  if (zeros.length === 0) return 'no zeros';
+  const near = (a: Complex, b: Complex): boolean =>
+    abs({ re: a.re - b.re, im: a.im - b.im }) <= 1e-3 * abs(a);
+  if (zeros.length === poles.length && zeros.every((zero) => poles.some((pole) => near(pole, zero))))
+    return `${zeros.length} zeros that cancel the poles`;
+  const places = zeros
+    .filter(({ im }) => im >= 0)
+    .map(({ re, im }) => (im === 0 ? figure(re) : `${figure(re)} ± ${figure(im)}j`));
+  return `${zeros.length === 1 ? 'one zero' : `${zeros.length} zeros`} at ${places.join(' and ')} rad/s`;
 }
 
 /** λ from which on the ripple that the resolution causes exceeds HUM, by bisection on the pattern scaled to λ. */

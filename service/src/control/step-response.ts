@@ -1,6 +1,5 @@
-import { referenceTransfer } from './loop.js';
+import { closedLoopPoles, referenceTransfer } from './loop.js';
 import { checkPlant, type Plant } from './plant.js';
-import { roots } from './polynomial.js';
 import { checkGains, type Gains, type Structure } from './pole-placement.js';
 
 export interface StepFigures {
@@ -55,7 +54,7 @@ export function stepFigures(plant: Plant, gains: Gains, structure: Structure): S
   const n = denominator.length - 1;
   const final = transfer.numerator[0]! / denominator[0]!;
   if (!Number.isFinite(final) || final === 0) return NO_FIGURES;
-  const poles = roots(denominator, transfer.denominatorUncertainty);
+  const poles = closedLoopPoles(plant, gains);
   const sizes = poles.map((p) => Math.hypot(p.re, p.im));
   if (poles.some((p, i) => p.re >= -LEAST_DAMPING * sizes[i]!)) return NO_FIGURES;
 

@@ -125,7 +125,7 @@ describe('POST /design', () => {
     );
     const overshoot = held.step.overshootPct!.toFixed(1);
     expect(held.remarks![1]).toBe(
-      `PID adds 2 zeros at −25.3 + 5.95j and −25.3 − 5.95j rad/s: a step overshoots by ${overshoot} % although all poles are real; it follows a ramp without lag.`,
+      `PID adds 2 zeros at −25.3 ± 5.95j rad/s: a step overshoots by ${overshoot} % although all poles are real; it follows a ramp without lag.`,
     );
     expect(held.remarks![2]).toMatch(
       /^With a resolution of 1 µm .*starts to hum \(1 %\) from λ = [\d.]+ rad\/s\.$/,

@@ -36,7 +36,8 @@ export function PoleMap({ sets }: { sets: readonly PoleSet[] }) {
   const tall = (HEIGHT / 2 - 14) / scale;
   const ray = Math.min(reach, tall);
   const realMarks = roundMarks(-reach, (width - 20 - zero) / scale, width / 90).filter((mark) => mark !== 0);
-  const imaginaryMarks = roundMarks(-tall, tall, 4).filter((mark) => mark !== 0);
+  // The top is the axis's name's.
+  const imaginaryMarks = roundMarks(-tall, tall, 4).filter((mark) => mark !== 0 && y(mark) > 32);
   return (
     <figure style={{ margin: 0 }} ref={ref}>
       <svg

@@ -12,7 +12,7 @@ export class ComplexDto {
 
 export class ClosedLoopDto {
   @ApiProperty({ type: [ComplexDto], description: 'rad/s' })
-  poles: ComplexDto[];
+  poles: readonly ComplexDto[];
 
   @ApiProperty({ type: [ComplexDto], description: 'rad/s' })
   zeros: ComplexDto[];

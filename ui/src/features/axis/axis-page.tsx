@@ -19,6 +19,7 @@ import type { Axis } from '../fleet/fleet-api';
 import { AxisActions } from './axis-actions';
 import { axisQuery, estimatesQuery, SPANS, type Span } from './axis-api';
 import classes from './axis-page.module.css';
+import { LambdaCard } from './lambda-card';
 import { LoopCard } from './loop-card';
 import { Tunings } from './tunings';
 import { WhatHappened } from './what-happened';
@@ -101,6 +102,7 @@ function AxisView({ axis }: { axis: Axis }) {
         </div>
         <div className={classes.present}>
           <PlantCard axis={axis} tile={tile} />
+          <LambdaCard axis={axis} />
           <LoopCard axis={axis} />
         </div>
       </div>
