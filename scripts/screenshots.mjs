@@ -49,7 +49,17 @@ const axis = await tile.locator('a[href^="/axes/"]').getAttribute('href');
 
 const sizes = { phone: 360, hand: 390, desk: 1280, wall: 2560 };
 const shots = every
-  ? ['/', axis, `${axis}/bench`, '/alerts', '/proposals', proposal, '/rota', '/admin/mail', '/admin/people'].flatMap((path) =>
+  ? [
+      '/',
+      axis,
+      `${axis}/bench`,
+      '/alerts',
+      '/proposals',
+      proposal,
+      '/rota',
+      '/admin/mail',
+      '/admin/people',
+    ].flatMap((path) =>
       ['phone', 'desk', 'wall'].flatMap((size) =>
         ['light', 'dark'].map((scheme) => ({ path, size, scheme })),
       ),
