@@ -275,6 +275,7 @@ async function workThrough(tag: string): Promise<void> {
     const dialog = technician.getByRole('dialog');
     for (const box of await dialog.getByRole('checkbox').all()) await box.check();
     await dialog.getByLabel('Your password, once more').fill('polewright-demo');
+    await dialog.getByRole('button', { name: 'Go on' }).click();
     await dialog.getByRole('button', { name: /^Send the gains/ }).click();
     return taken(technician);
   });

@@ -27,6 +27,7 @@ export const POLICY = {
   'proposal.apply': TECHNICIAN_AND_UP,
   'proposal.keep': ENGINEER_AND_UP,
   'proposal.roll-back': TECHNICIAN_AND_UP,
+  'checklist.change': ADMINISTRATOR,
   'rota.change': ADMINISTRATOR,
   'rota.override': ['technician', 'engineer', 'approver', 'administrator'],
   'note.write': ['technician', 'engineer', 'approver', 'administrator'],

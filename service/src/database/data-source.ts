@@ -17,12 +17,14 @@ import { Invitation } from '../people/invitation.entity.js';
 import { UserRole } from '../people/user-role.entity.js';
 import { User } from '../people/user.entity.js';
 import { Proposal, ProposalEvent } from '../proposals/proposal.entity.js';
+import { SiteChecklistItem } from '../proposals/site-checklist.entity.js';
 import { HandoverNote } from '../rota/handover-note.entity.js';
 import { RotaLayer } from '../rota/rota-layer.entity.js';
 import { RotaOverride } from '../rota/rota-override.entity.js';
 import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
 import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
+import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 
 export const ENTITIES = [
   Site,
@@ -41,6 +43,7 @@ export const ENTITIES = [
   AlertEvent,
   Proposal,
   ProposalEvent,
+  SiteChecklistItem,
   User,
   UserRole,
   Invitation,
@@ -64,7 +67,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       db.pragma('busy_timeout = 5000');
     },
     entities: ENTITIES,
-    migrations: [Fleet1764547200000, People1764547201000],
+    migrations: [Fleet1764547200000, People1764547201000, ChangesAtMachines1764637000100],
     migrationsRun: true,
     synchronize: false,
   };

@@ -296,6 +296,10 @@ export class AxesService {
       throw new BadRequestException({ errors: [{ path: 'until', message: 'must lie ahead' }] });
     if (!on && (await this.dataSource.getRepository(Proposal).existsBy({ axisId: id, state: 'applying' })))
       throw new ConflictException('Gains are on their way to this axis; wait for the read-back');
+    if (!on && (await this.dataSource.getRepository(Proposal).existsBy({ axisId: id, restoring: true })))
+      throw new ConflictException(
+        `${axis.tag} has not read its gains back yet; until it has, nobody knows what it runs with`,
+      );
     await this.transactions.run(async (manager) => {
       await manager.update(Axis, id, {
         inMaintenance: on,

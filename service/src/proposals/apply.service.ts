@@ -1,52 +1,39 @@
-import {
-  BadRequestException,
-  ConflictException,
-  ForbiddenException,
-  Injectable,
-  Logger,
-} from '@nestjs/common';
-import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
-import { Interval } from '@nestjs/schedule';
+import { BadRequestException, ConflictException, ForbiddenException, Injectable } from '@nestjs/common';
+import { EventEmitter2 } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { IsNull, LessThan, Not, type DataSource, type EntityManager } from 'typeorm';
-import { AuditService } from '../audit/audit.service.js';
+import { IsNull, Not, type DataSource, type EntityManager } from 'typeorm';
 import { AuthService } from '../auth/auth.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
 import type { Gains } from '../control/pole-placement.js';
 import { Transactions } from '../database/transactions.js';
-import { tell, type Events } from '../events.js';
-import { Axis } from '../fleet/axis.entity.js';
-import { baselineOf } from '../fleet/axes.service.js';
+import { tell } from '../events.js';
+import type { Axis } from '../fleet/axis.entity.js';
 import { TuningRevision } from '../fleet/tuning-revision.entity.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { TelemetryGateway } from '../telemetry/telemetry.gateway.js';
-import { CHECKLIST, missingFrom } from './checklist.js';
-import { Proposal, ProposalEvent } from './proposal.entity.js';
+import { missingFrom, type ChecklistItem } from './checklist.js';
+import { ChecklistService } from './checklist.service.js';
+import { Proposal } from './proposal.entity.js';
+import { ReadBackService } from './read-back.service.js';
 import { allow, ReviewService } from './review.service.js';
-import { STEP } from './steps.js';
-
-/** A gateway that has not read the gains back after this time, ms, has not applied them. */
-const READ_BACK_WITHIN = 15_000;
-const ASKED_BACK = 'roll-back asked for';
-const GAIN_NAMES = ['kp', 'ki', 'kd', 'kv', 'ka'] as const;
+import { StepRecorder } from './step-recorder.js';
+import { ASKED_BACK, STEP } from './steps.js';
 
 /**
- * Sends gains to a machine and believes only what it reads back.
- *
- * The order is: write down what will be sent, send it once, compare the read-back with it to the bit of its float32.
- * A mismatch or silence counts as not applied; then the former gains are asked for again.
+ * Sends gains to a machine: first what will be sent is written down, then it leaves, once. Whether it was applied is for
+ * `ReadBackService` to say.
  */
 @Injectable()
 export class ApplyService {
-  private readonly log = new Logger(ApplyService.name);
-
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
-    private readonly audit: AuditService,
     private readonly auth: AuthService,
     private readonly review: ReviewService,
     private readonly intake: IntakeService,
+    private readonly checklists: ChecklistService,
+    private readonly readBacks: ReadBackService,
+    private readonly steps: StepRecorder,
     private readonly gateway: TelemetryGateway,
     private readonly emitter: EventEmitter2,
   ) {}
@@ -66,12 +53,13 @@ export class ApplyService {
   ): Promise<void> {
     const seen = await this.review.get(id, user);
     allow(seen, 'apply', user, ifMatch);
-    const missing = missingFrom(checklist);
+    const items = await this.checklists.of(seen.siteId);
+    const missing = missingFrom(items, checklist);
     if (missing.length > 0)
       throw new BadRequestException({
-        errors: missing.map((key) => ({
+        errors: missing.map(({ key, text }) => ({
           path: `checklist.${key}`,
-          message: `must be confirmed: ${CHECKLIST.find((item) => item.key === key)!.text}`,
+          message: `must be confirmed: ${text}`,
         })),
       });
     if (!(await this.auth.passwordIsOf(user.id, password)))
@@ -82,7 +70,7 @@ export class ApplyService {
     if (!seen.windowFrom || !seen.windowTo || now < seen.windowFrom || now > seen.windowTo)
       throw new ConflictException('The maintenance window is not open now. Nothing was sent');
     this.requireAtRest(seen.axis);
-    await this.send(seen, user, false, 'apply', seen.proposed!.gains);
+    await this.send(seen, user, false, 'apply', seen.proposed!.gains, items);
   }
 
   /** Asks for the former gains again: one step for whoever stands at the machine. */
@@ -111,6 +99,7 @@ export class ApplyService {
     rollingBack: boolean,
     why: string,
     gains: Gains,
+    confirmed: readonly ChecklistItem[] = [],
   ): Promise<void> {
     const structure = rollingBack ? seen.current.structure : seen.proposed!.structure;
     const revision = await this.transactions.run(async (manager) => {
@@ -124,23 +113,26 @@ export class ApplyService {
         state: STEP.apply.to,
         revision: next,
         sentAt: new Date(),
+        restoring: false,
         rollingBack,
         ...(!rollingBack && { appliedById: user.id }),
       });
       await manager.save(proposal);
-      await this.note(
+      // Other gains are on their way: those asked for before are wanted no more.
+      await manager.update(Proposal, { axisId: seen.axisId, restoring: true }, { restoring: false });
+      await this.steps.note(
         manager,
         proposal,
-        user.name,
         rollingBack ? ASKED_BACK : 'gains sent',
         rollingBack ? why : `Checklist confirmed; revision ${next} sent to the machine`,
         user,
+        ...(confirmed.length > 0 ? [{ checklist: confirmed }] : []),
       );
       return next;
     });
-    this.changed(seen);
+    tell(this.emitter, 'proposal.changed', { proposalId: seen.id, axisId: seen.axisId, siteId: seen.siteId });
     if (!this.gateway.sendGains(seen.axisId, revision, gains, structure))
-      await this.notApplied(seen.id, 'The gateway was lost before the gains could be sent');
+      await this.readBacks.notApplied(seen.id, 'The gateway was lost before the gains could be sent');
   }
 
   /** Revisions count up and are never used again, also those that a machine refused. */
@@ -156,197 +148,4 @@ export class ApplyService {
     };
     return Math.max(await largest(Proposal), await largest(TuningRevision)) + 1;
   }
-
-  @OnEvent('gains.read-back')
-  async readBack({ axisId, revision, gains }: Events['gains.read-back']): Promise<void> {
-    const proposal = await this.dataSource.getRepository(Proposal).findOne({
-      where: { axisId, state: 'applying', revision },
-      relations: { axis: true },
-    });
-    if (!proposal)
-      return this.log.log(`Axis ${axisId} read back revision ${revision}, which nobody waits for`);
-    const sent = proposal.rollingBack ? proposal.current.gains : proposal.proposed!.gains;
-    const wrong = GAIN_NAMES.filter((name) => Math.fround(sent[name]) !== Math.fround(gains[name]));
-    if (wrong.length > 0)
-      return this.notApplied(
-        proposal.id,
-        `The machine read back other gains: ${wrong.map((name) => `${name} ${gains[name]} instead of ${sent[name]}`).join(', ')}`,
-      );
-    if (proposal.rollingBack) await this.rolledBack(proposal);
-    else await this.applied(proposal);
-  }
-
-  private async applied(seen: Proposal): Promise<void> {
-    const proposed = seen.proposed!;
-    const plant = baselineOf(seen.evidence.estimate);
-    const done = await this.transactions.run(async (manager) => {
-      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
-      if (!isWaiting(proposal, seen)) return false;
-      const now = new Date();
-      const person = await this.auth.nameOf(seen.appliedById);
-      await manager.save(TuningRevision, {
-        axisId: seen.axisId,
-        revision: seen.revision!,
-        ...proposed,
-        plant,
-        source: 'proposal',
-        proposalId: seen.id,
-        appliedAt: now,
-        appliedBy: person,
-        note: seen.note,
-      });
-      await manager.update(Axis, seen.axisId, {
-        revision: seen.revision!,
-        structure: proposed.structure,
-        feedForward: proposed.feedForward,
-        ...(proposed.pattern && { pattern: proposed.pattern }),
-        baseline: plant,
-        baselineAt: now,
-      });
-      Object.assign(proposal, {
-        state: 'on trial',
-        appliedAt: now,
-        trial: {
-          startedAt: now.toISOString(),
-          moves: { before: 0, after: 0 },
-          peakFollowingError: null,
-          rmsFollowingError: null,
-          saturatedPct: null,
-          verdict: 'waiting',
-          sentence: 'Waiting for production moves with the new gains.',
-        },
-      } satisfies Partial<Proposal>);
-      await manager.save(proposal);
-      await this.note(manager, proposal, 'service', 'applied', 'The machine read the same gains back', null);
-      return true;
-    });
-    if (done) this.tuned(seen);
-  }
-
-  private async rolledBack(seen: Proposal): Promise<void> {
-    const done = await this.transactions.run(async (manager) => {
-      const proposal = await manager.findOneByOrFail(Proposal, { id: seen.id });
-      if (!isWaiting(proposal, seen)) return false;
-      const now = new Date();
-      const asked = await manager.findOneOrFail(ProposalEvent, {
-        where: { proposalId: seen.id, action: ASKED_BACK },
-        order: { id: 'DESC' },
-      });
-      const former = await manager.findOneByOrFail(TuningRevision, {
-        axisId: seen.axisId,
-        revision: seen.current.revision,
-      });
-      await manager.save(TuningRevision, {
-        axisId: seen.axisId,
-        revision: seen.revision!,
-        structure: former.structure,
-        pattern: former.pattern,
-        feedForward: former.feedForward,
-        gains: former.gains,
-        plant: former.plant,
-        source: 'roll-back',
-        proposalId: seen.id,
-        appliedAt: now,
-        appliedBy: asked.by,
-        note: `Back to revision ${former.revision}`,
-      });
-      await manager.update(Axis, seen.axisId, {
-        revision: seen.revision!,
-        structure: former.structure,
-        feedForward: former.feedForward,
-        ...(former.pattern && { pattern: former.pattern }),
-        baseline: seen.evidence.baseline,
-        baselineAt: now,
-      });
-      proposal.state = 'rolled back';
-      await manager.save(proposal);
-      await this.note(
-        manager,
-        proposal,
-        'service',
-        'rolled back',
-        'The machine read the former gains back',
-        null,
-      );
-      return true;
-    });
-    if (done) this.tuned(seen);
-  }
-
-  /** Gains that were not read back count as not applied; the former ones are asked for again. */
-  private async notApplied(id: number, why: string): Promise<void> {
-    const proposal = await this.transactions.run(async (manager) => {
-      const found = await manager.findOneByOrFail(Proposal, { id });
-      if (found.state !== 'applying') return null;
-      found.state = found.rollingBack ? 'on trial' : 'scheduled';
-      found.sentAt = null;
-      await manager.save(found);
-      await this.note(manager, found, 'service', 'not applied', why, null);
-      return found;
-    });
-    if (!proposal) return;
-    const axis = await this.dataSource.getRepository(Axis).findOneByOrFail({ id: proposal.axisId });
-    const running = await this.dataSource
-      .getRepository(TuningRevision)
-      .findOneByOrFail({ axisId: axis.id, revision: axis.revision });
-    this.gateway.sendGains(axis.id, running.revision, running.gains, running.structure);
-    this.changed(proposal);
-  }
-
-  /** Silence after sending, also across a restart of the service. */
-  @Interval(1_000)
-  async giveUpOnSilence(): Promise<void> {
-    const silent = await this.dataSource
-      .getRepository(Proposal)
-      .findBy({ state: 'applying', sentAt: LessThan(new Date(Date.now() - READ_BACK_WITHIN)) });
-    for (const { id } of silent) await this.notApplied(id, 'The machine did not read the gains back in time');
-  }
-
-  private async note(
-    manager: EntityManager,
-    proposal: Proposal,
-    by: string,
-    action: string,
-    note: string | null,
-    user: SignedInUser | null,
-  ): Promise<void> {
-    await manager.save(ProposalEvent, {
-      proposalId: proposal.id,
-      at: new Date(),
-      by,
-      action,
-      note,
-      version: proposal.version,
-    });
-    await this.audit.record(manager, {
-      user,
-      action: `proposal.${action.replaceAll(' ', '-')}`,
-      subject: { type: 'proposal', id: proposal.id },
-      siteId: proposal.siteId,
-      note,
-      after: {
-        state: proposal.state,
-        revision: proposal.revision,
-        gains: proposal.rollingBack ? proposal.current.gains : proposal.proposed?.gains,
-      },
-    });
-  }
-
-  private tuned(seen: Proposal): void {
-    tell(this.emitter, 'axis.changed', { axisId: seen.axisId, siteId: seen.siteId });
-    tell(this.emitter, 'tuning.applied', {
-      axisId: seen.axisId,
-      siteId: seen.siteId,
-      revision: seen.revision!,
-    });
-    this.changed(seen);
-  }
-
-  private changed({ id, axisId, siteId }: Proposal): void {
-    tell(this.emitter, 'proposal.changed', { proposalId: id, axisId, siteId });
-  }
 }
-
-/** Whether a proposal still waits for the read-back that was seen: the same one may come twice, or silence be given up. */
-const isWaiting = (now: Proposal, seen: Proposal): boolean =>
-  now.state === 'applying' && now.revision === seen.revision;

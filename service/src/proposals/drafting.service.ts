@@ -2,7 +2,6 @@ import { ConflictException, Injectable } from '@nestjs/common';
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { In, type DataSource } from 'typeorm';
-import { AuditService } from '../audit/audit.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
 import { bindingOf } from '../control/binding.js';
 import {
@@ -32,7 +31,8 @@ import {
   type CurrentTuning,
   type Evidence,
 } from './evidence.js';
-import { LIVE_STATES, Proposal, ProposalEvent, type Proposed } from './proposal.entity.js';
+import { LIVE_STATES, Proposal, type Proposed } from './proposal.entity.js';
+import { StepRecorder } from './step-recorder.js';
 
 /** What a person wants altered; what is absent stays. */
 export interface Alteration {
@@ -58,7 +58,7 @@ export class DraftingService {
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
-    private readonly audit: AuditService,
+    private readonly steps: StepRecorder,
     private readonly intake: IntakeService,
     private readonly axes: AxesService,
     private readonly recent: RecentSeconds,
@@ -130,22 +130,8 @@ export class DraftingService {
         note: wish.note ?? null,
         alteredById: user?.id ?? null,
       });
-      await manager.save(ProposalEvent, {
-        proposalId: saved.id,
-        at: new Date(),
-        by: user?.name ?? 'service',
-        action: 'drafted',
-        note: wish.note ?? evidence.decisions.map(({ sentence }) => sentence).join(' '),
-        version: 1,
-      });
-      await this.audit.record(manager, {
-        user,
-        action: 'proposal.drafted',
-        subject: { type: 'proposal', id: saved.id },
-        siteId: axis.siteId,
-        note: `${axis.tag}, from ${source}`,
-        after: { proposed: worked.proposed && { ...worked.proposed } },
-      });
+      const why = wish.note ?? (evidence.decisions.map(({ sentence }) => sentence).join(' ') || null);
+      await this.steps.note(manager, saved as Proposal, 'drafted', why, user, { axis: axis.tag, source });
       return saved;
     });
     tell(this.emitter, 'proposal.changed', { proposalId: proposal.id, axisId, siteId: axis.siteId });
@@ -252,14 +238,8 @@ export class DraftingService {
           probableCause: causeBetween(axis.baseline!, estimate),
         }),
       );
-      await manager.save(ProposalEvent, {
-        proposalId: fresh.id,
-        at: new Date(),
-        by: 'service',
-        action: 'newer evidence',
-        note: evidence.decisions.map(({ sentence }) => sentence).join(' ') || null,
-        version: fresh.version,
-      });
+      const why = evidence.decisions.map(({ sentence }) => sentence).join(' ') || null;
+      await this.steps.note(manager, fresh, 'newer evidence', why, null);
       return true;
     });
     if (done)
@@ -277,22 +257,7 @@ export class DraftingService {
       if (proposal.version !== seen.version || !isUntouched(proposal)) return false;
       proposal.state = 'withdrawn';
       await manager.save(proposal);
-      const note = 'The plant is back within tolerance.';
-      await manager.save(ProposalEvent, {
-        proposalId: seen.id,
-        at: new Date(),
-        by: 'service',
-        action: 'withdrawn',
-        note,
-        version: seen.version,
-      });
-      await this.audit.record(manager, {
-        user: null,
-        action: 'proposal.withdrawn',
-        subject: { type: 'proposal', id: seen.id },
-        siteId: seen.siteId,
-        note,
-      });
+      await this.steps.note(manager, proposal, 'withdrawn', 'The plant is back within tolerance.', null);
       return true;
     });
     if (done)

@@ -145,6 +145,13 @@ export class Proposal {
   @Column({ default: false })
   rollingBack: boolean;
 
+  /**
+   * True while the machine may run with other gains than the axis's revision says: gains left and were not read back,
+   * and those of the revision were asked for and not read back yet either.
+   */
+  @Column({ default: false })
+  restoring: boolean;
+
   @Column({ type: 'simple-json', nullable: true })
   trial: TrialResult | null;
 

@@ -20,6 +20,7 @@ import { AxesService } from '../fleet/axes.service.js';
 import { pageOf, type Page } from '../page.js';
 import { User } from '../people/user.entity.js';
 import { ApplyService } from './apply.service.js';
+import { ChecklistService } from './checklist.service.js';
 import { DraftingService, type Alteration } from './drafting.service.js';
 import {
   AlterProposalDto,
@@ -54,6 +55,7 @@ export class ProposalsController {
     private readonly drafting: DraftingService,
     private readonly review: ReviewService,
     private readonly applying: ApplyService,
+    private readonly checklists: ChecklistService,
   ) {}
 
   /** Newest first. */
@@ -95,6 +97,7 @@ export class ProposalsController {
       proposal,
       new Map(names.map((person) => [person.id, person.name])),
       this.review.possibilities(proposal, user),
+      await this.checklists.of(proposal.siteId),
     );
   }
 

@@ -10,7 +10,6 @@ import { EventEmitter2 } from '@nestjs/event-emitter';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { LessThan, type DataSource, type EntityManager } from 'typeorm';
-import { AuditService } from '../audit/audit.service.js';
 import { may, requireRole, type SignedInUser } from '../auth/signed-in-user.js';
 import { Transactions } from '../database/transactions.js';
 import { tell } from '../events.js';
@@ -19,6 +18,7 @@ import { baselineOf } from '../fleet/axes.service.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { DraftingService, type Alteration } from './drafting.service.js';
 import { Proposal, ProposalEvent, type ProposalState } from './proposal.entity.js';
+import { StepRecorder, stateOf } from './step-recorder.js';
 import { STEP, STEPS, type Step } from './steps.js';
 
 const PRECONDITION_REQUIRED = 428;
@@ -47,7 +47,7 @@ export class ReviewService {
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
-    private readonly audit: AuditService,
+    private readonly steps: StepRecorder,
     private readonly drafting: DraftingService,
     private readonly intake: IntakeService,
     private readonly emitter: EventEmitter2,
@@ -188,7 +188,7 @@ export class ReviewService {
       if (proposal.state !== seen.state) return false;
       proposal.state = state;
       await manager.save(proposal);
-      await this.note(manager, proposal, null, state, note);
+      await this.steps.note(manager, proposal, state, note, null);
       return true;
     });
     if (done) this.changed(seen);
@@ -208,40 +208,13 @@ export class ReviewService {
         throw new ConflictException(
           `Proposal ${seen.id} has changed meanwhile: it is ${proposal.state}, version ${proposal.version}`,
         );
-      const before = { state: proposal.state, version: proposal.version, proposed: proposal.proposed };
+      const before = stateOf(proposal);
       proposal.state = STEP[step].to ?? proposal.state;
       await change?.(proposal, manager);
       await manager.save(proposal);
-      await this.note(manager, proposal, user, DONE[step], note, before);
+      await this.steps.note(manager, proposal, DONE[step], note, user, {}, before);
     });
     this.changed(seen);
-  }
-
-  private async note(
-    manager: EntityManager,
-    proposal: Proposal,
-    user: SignedInUser | null,
-    action: string,
-    note: string | null,
-    before?: Record<string, unknown>,
-  ): Promise<void> {
-    await manager.save(ProposalEvent, {
-      proposalId: proposal.id,
-      at: new Date(),
-      by: user?.name ?? 'service',
-      action,
-      note,
-      version: proposal.version,
-    });
-    await this.audit.record(manager, {
-      user,
-      action: `proposal.${action.replaceAll(' ', '-')}`,
-      subject: { type: 'proposal', id: proposal.id },
-      siteId: proposal.siteId,
-      note,
-      ...(before && { before }),
-      after: { state: proposal.state, version: proposal.version, proposed: proposal.proposed },
-    });
   }
 
   private changed({ id, axisId, siteId }: Proposal): void {

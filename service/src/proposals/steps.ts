@@ -33,3 +33,6 @@ export const STEP: Record<Step, { from: readonly ProposalState[]; right: Action;
     keep: { from: ['on trial'], right: 'proposal.keep', to: 'kept' },
     'roll-back': { from: ['on trial'], right: 'proposal.roll-back', to: 'applying' },
   };
+
+/** What a roll-back is called on the proposal while the former gains are on their way. */
+export const ASKED_BACK = 'roll-back asked for';

@@ -150,6 +150,7 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
     this.intake.startEpoch(progress, epoch);
     progress.lastSeenAt = Date.now();
     socket.data.served = served;
+    tell(this.emitter, 'gateway.greeted', { axisIds: served });
     return {
       axes: answers,
       durableSequence: progress.durable,

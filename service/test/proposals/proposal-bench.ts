@@ -14,6 +14,7 @@ export interface ProposalBody {
   state: string;
   version: number;
   source: string;
+  restoring: boolean;
   probableCause: { name: string; advice: string } | null;
   evidence: {
     estimate: Record<'gain' | 'pole', { value: number; low: number; high: number }>;

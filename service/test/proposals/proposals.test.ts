@@ -1,6 +1,6 @@
 import { afterAll, beforeAll, expect, test, vi, type MockInstance } from 'vitest';
-import { ApplyService } from '../../src/proposals/apply.service.js';
 import { CHECKLIST } from '../../src/proposals/checklist.js';
+import { ReadBackService } from '../../src/proposals/read-back.service.js';
 import { DEMO_PASSWORD, startService, until, type Caller, type Service } from '../support/start-service.js';
 import { closedFormula, LAMBDA, PLANT, ProposalBench, type ProposalBody } from './proposal-bench.js';
 
@@ -15,11 +15,11 @@ let engineer: Caller;
 let approver: Caller;
 let secondApprover: Caller;
 let stranger: Caller;
-let readBacks: MockInstance<ApplyService['readBack']>;
+let readBacks: MockInstance<ReadBackService['readBack']>;
 
 beforeAll(async () => {
   service = await startService();
-  readBacks = vi.spyOn(service.app.get(ApplyService), 'readBack');
+  readBacks = vi.spyOn(service.app.get(ReadBackService), 'readBack');
   await service.addPerson('second-approver', [{ siteId: service.siteIds[0], role: 'approver' }]);
   await service.addPerson('elsewhere', [{ siteId: service.siteIds[1], role: 'approver' }]);
   [viewer, technician, engineer, approver, secondApprover, stranger] = (await Promise.all(
@@ -179,7 +179,14 @@ test('a heavier load: drift, proposal, review by a second person, applying, tria
     expect(proposal.events.at(-1)!.note).toContain('kp');
     const former = await until('the former gains', () => bench.gateway.orders[1]);
     expect(former).toMatchObject({ revision: 1, gains: proposal.current.gains });
+    // Until they are read back nobody knows what the machine runs with: it does not go back into production.
+    expect(proposal).toMatchObject({ restoring: true });
+    await technician
+      .post(`/api/v1/axes/${bench.axis.axisId}/maintenance`)
+      .send({ on: false, reason: 'Done' })
+      .expect(409);
     await bench.readBack(former);
+    await until('the former gains are back', async () => !(await bench.get(id)).restoring);
     expect(await bench.axisBody()).toMatchObject({ revision: 1, gains: proposal.current.gains });
 
     // Silence is no read-back either: as if the order had left 16 s ago.
@@ -245,6 +252,7 @@ test('a heavier load: drift, proposal, review by a second person, applying, tria
       'scheduled',
       'gains sent',
       'not applied',
+      'gains restored',
       'gains sent',
       'not applied',
       'gains sent',
@@ -256,7 +264,9 @@ test('a heavier load: drift, proposal, review by a second person, applying, tria
       .get(`/api/v1/audit?subjectType=proposal&subjectId=${id}&limit=200`)
       .expect(200);
     const recorded = (record.body as { items: { action: string }[] }).items;
-    expect(new Set(recorded.map(({ action }) => action))).toEqual(
+    expect(
+      new Set(recorded.map(({ action }) => action).filter((action) => action !== 'proposal.newer-evidence')),
+    ).toEqual(
       new Set([
         'proposal.drafted',
         'proposal.altered',
@@ -265,6 +275,7 @@ test('a heavier load: drift, proposal, review by a second person, applying, tria
         'proposal.scheduled',
         'proposal.gains-sent',
         'proposal.not-applied',
+        'proposal.gains-restored',
         'proposal.applied',
         'proposal.kept',
       ]),

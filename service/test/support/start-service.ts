@@ -1,7 +1,7 @@
 import 'reflect-metadata';
 import type { INestApplication } from '@nestjs/common';
 import { NestFactory } from '@nestjs/core';
-import { mkdtempSync, rmSync } from 'node:fs';
+import { mkdtempSync, renameSync, rmSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import request from 'supertest';
@@ -46,9 +46,14 @@ export async function signIn(target: Parameters<typeof request.agent>[0], who: s
 
 export const temporaryFolder = (): string => mkdtempSync(join(tmpdir(), 'polewright-service-'));
 
-/** Starts the service as `main.ts` does, with the demo's works and people but without its simulator. */
-export async function startService(): Promise<Service> {
+/**
+ * Starts the service as `main.ts` does, with the demo's works and people but without its simulator.
+ *
+ * @param over a database file that it is started over, as after a crash; it is taken away at the end
+ */
+export async function startService(over?: string): Promise<Service> {
   const folder = temporaryFolder();
+  if (over) renameSync(over, join(folder, 'polewright.sqlite'));
   const settings = readSettings({
     PORT: '0',
     DATA_DIR: folder,

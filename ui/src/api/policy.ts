@@ -12,6 +12,7 @@ const POLICY = {
   'axis.maintenance': TECHNICIAN_AND_UP,
   'axis.baseline': ENGINEER_AND_UP,
   'proposal.work': ENGINEER_AND_UP,
+  'checklist.change': ['administrator'],
   'rota.change': ['administrator'],
   'rota.override': [...TECHNICIAN_AND_UP, 'administrator'],
   'note.write': [...TECHNICIAN_AND_UP, 'administrator'],

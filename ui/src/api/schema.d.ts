@@ -724,6 +724,22 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/sites/{siteId}/checklist": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["ChecklistController_get"];
+        put: operations["ChecklistController_replace"];
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/rota": {
         parameters: {
             query?: never;
@@ -1862,6 +1878,8 @@ export interface components {
             /** Format: date-time */
             appliedAt: string | null;
             rollingBack: boolean;
+            /** @description Whether the machine may run with other gains than the revision says */
+            restoring: boolean;
             /** @description Oldest first */
             events: components["schemas"]["ProposalEventDto"][];
             /** @description What apply must confirm */
@@ -1908,6 +1926,17 @@ export interface components {
             };
             /** @description Your own password, once more */
             password: string;
+        };
+        SiteChecklistDto: {
+            siteId: number;
+            /** @description On every site; cannot be taken away */
+            always: components["schemas"]["ChecklistItemDto"][];
+            /** @description What the site’s administrator added */
+            own: components["schemas"]["ChecklistItemDto"][];
+        };
+        ChangeChecklistDto: {
+            /** @description In order, each up to 300 characters */
+            items: string[];
         };
         RotaMemberDto: {
             userId: number;
@@ -3615,6 +3644,52 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["ProposalDto"];
+                };
+            };
+        };
+    };
+    ChecklistController_get: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["SiteChecklistDto"];
+                };
+            };
+        };
+    };
+    ChecklistController_replace: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["ChangeChecklistDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["SiteChecklistDto"];
                 };
             };
         };

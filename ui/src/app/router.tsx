@@ -25,6 +25,10 @@ export const router = createBrowserRouter([
                   { path: '/alerts', lazy: () => import('../features/alerts/alerts-page') },
                   { path: '/alerts/:id', lazy: () => import('../features/alerts/alert-page') },
                   { path: '/proposals', lazy: () => import('../features/proposals/proposals-page') },
+                  {
+                    path: '/proposals/checklists',
+                    lazy: () => import('../features/proposals/checklist-page'),
+                  },
                   { path: '/proposals/:id', lazy: () => import('../features/proposals/proposal-page') },
                   { path: '/rota', lazy: () => import('../features/rota/rota-page') },
                   { path: '/admin/people', lazy: () => import('../features/people/people-page') },

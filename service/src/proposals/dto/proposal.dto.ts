@@ -30,11 +30,11 @@ import {
 } from '../../fleet/dto/axis.dto.js';
 import type { CauseName } from '../../identification/probable-cause.js';
 import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
-import { CHECKLIST } from '../checklist.js';
 import { lambdaOf } from '../evidence.js';
 import { PROPOSAL_STATES, type Proposal, type ProposalState } from '../proposal.entity.js';
 import type { Possibilities } from '../review.service.js';
 import { STEPS, type Step } from '../steps.js';
+import { ChecklistItemDto } from './checklist.dto.js';
 
 const CAUSES = [
   'load',
@@ -263,14 +263,6 @@ class ProposalEventDto {
   version: number;
 }
 
-class ChecklistItemDto {
-  @ApiProperty()
-  key: string;
-
-  @ApiProperty()
-  text: string;
-}
-
 class NamedPersonDto {
   @ApiProperty()
   id: number;
@@ -385,6 +377,9 @@ export class ProposalDto extends ProposalSummaryDto {
   @ApiProperty()
   rollingBack: boolean;
 
+  @ApiProperty({ description: 'Whether the machine may run with other gains than the revision says' })
+  restoring: boolean;
+
   @ApiProperty({ type: [ProposalEventDto], description: 'Oldest first' })
   events: ProposalEventDto[];
 
@@ -437,6 +432,7 @@ export function proposalOf(
   proposal: Proposal,
   names: Map<number, string>,
   possibilities: Possibilities,
+  checklist: readonly ChecklistItemDto[],
 ): ProposalDto {
   const person = (id: number | null): NamedPersonDto | null =>
     id === null ? null : { id, name: names.get(id) ?? 'somebody' };
@@ -464,8 +460,9 @@ export function proposalOf(
     sentAt: proposal.sentAt,
     appliedAt: proposal.appliedAt,
     rollingBack: proposal.rollingBack,
+    restoring: proposal.restoring,
     events: proposal.events.map(({ at, by, action, note, version }) => ({ at, by, action, note, version })),
-    checklist: CHECKLIST,
+    checklist,
     ...possibilities,
   };
 }

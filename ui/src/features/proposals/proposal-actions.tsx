@@ -5,6 +5,8 @@ import { useState } from 'react';
 import { Link } from 'react-router-dom';
 import { Caution } from '../../components/caution';
 import { ConfirmDialog } from '../../components/confirm-dialog';
+import { significant } from '../../components/quantity';
+import { GAIN_ROWS } from './gain-rows';
 import { takeStep, type Proposal, type Step, type StepInput } from './proposals-api';
 
 type Doable = Exclude<Step, 'alter'>;
@@ -171,24 +173,70 @@ function ScheduleStep({ proposal, onTake, ...rest }: DialogProps) {
   );
 }
 
-function ApplyStep({ proposal, onTake, ...rest }: DialogProps) {
+/** Twice: first what is confirmed at the machine, then what exactly will be sent. */
+function ApplyStep({ proposal, problem, onTake, ...rest }: DialogProps) {
   const [checked, setChecked] = useState<Record<string, boolean>>({});
   const [password, setPassword] = useState('');
+  const [ready, setReady] = useState(false);
   const complete = proposal.checklist.every(({ key }) => checked[key]);
+  const { axisTag, version, current, proposed } = proposal;
+  if (ready && proposed)
+    return (
+      <ConfirmDialog
+        opened
+        danger
+        title={`Send now: ${axisTag}`}
+        confirmLabel={`Send the gains to ${axisTag}`}
+        problem={problem}
+        onConfirm={() => onTake({ step: 'apply', checklist: checked, password })}
+        {...rest}
+      >
+        <Caution />
+        <p>
+          Version {version} leaves now, once. Revision {current.revision} stays in the record and can be asked
+          for again.
+        </p>
+        <table className="plain-table">
+          <thead>
+            <tr>
+              <th>Gain</th>
+              <th>now</th>
+              <th>will be</th>
+            </tr>
+          </thead>
+          <tbody>
+            {GAIN_ROWS.map(([name, label, unit]) => (
+              <tr key={name}>
+                <td>
+                  {label} <span className="soft small">{unit}</span>
+                </td>
+                <td>{significant(current.gains[name], 4)}</td>
+                <td>
+                  <b>{significant(proposed.gains[name], 4)}</b>
+                </td>
+              </tr>
+            ))}
+          </tbody>
+        </table>
+        <Button variant="subtle" mt="sm" onClick={() => setReady(false)}>
+          Back to the checklist
+        </Button>
+      </ConfirmDialog>
+    );
   return (
     <ConfirmDialog
       opened
-      danger
-      title={`Apply at the machine: ${proposal.axisTag}`}
-      confirmLabel={`Send the gains to ${proposal.axisTag}`}
+      title={`Apply at the machine: ${axisTag}`}
+      confirmLabel="Go on"
       disabled={!complete || !password}
-      onConfirm={() => onTake({ step: 'apply', checklist: checked, password })}
+      problem={problem}
+      onConfirm={() => setReady(true)}
       {...rest}
     >
       <Caution />
       <p>
-        Put <Link to={`/axes/${proposal.axisId}`}>{proposal.axisTag}</Link> in maintenance and wait until it
-        rests. The gains count as applied only when the machine reads the same ones back.
+        Put <Link to={`/axes/${proposal.axisId}`}>{axisTag}</Link> in maintenance and wait until it rests. The
+        gains count as applied only when the machine reads the same ones back.
       </p>
       <div style={{ display: 'grid', gap: 10 }}>
         {proposal.checklist.map(({ key, text }) => (

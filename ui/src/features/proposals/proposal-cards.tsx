@@ -4,6 +4,7 @@ import { Card } from '../../components/card';
 import { LambdaRuler, rulerText } from '../../components/lambda-ruler';
 import { Quantity, significant } from '../../components/quantity';
 import { SiteTime } from '../../components/site-time';
+import { GAIN_ROWS } from './gain-rows';
 import classes from './proposal-page.module.css';
 import type { Proposal } from './proposals-api';
 
@@ -83,14 +84,6 @@ export function ProbableCause({ cause }: { cause: NonNullable<Proposal['probable
     </Card>
   );
 }
-
-const GAIN_ROWS = [
-  ['kp', 'Kp', '%/mm'],
-  ['ki', 'Ki', '%/(mm·s)'],
-  ['kd', 'Kd', '%·s/mm'],
-  ['kv', 'Kv', '%·s/mm'],
-  ['ka', 'Ka', '%·s²/mm'],
-] as const;
 
 export function WhatChanges({ proposal: { current, proposed } }: { proposal: Proposal }) {
   if (!proposed) return null;

@@ -53,6 +53,15 @@ export function Component() {
       <Caution>
         Nothing is sent before a scheduled window, an axis in maintenance and at rest, and a signed checklist.
       </Caution>
+      {proposal.restoring && (
+        <div className="card" role="status" style={{ marginTop: 20, borderColor: 'var(--out)' }}>
+          <h2>Not known what {axisTag} runs with</h2>
+          <p style={{ margin: '6px 0 0' }}>
+            Gains left and were not read back. Those of the running revision are asked for again until the
+            machine reads them back; the axis stays in maintenance until then. Look at the controller itself.
+          </p>
+        </div>
+      )}
       {proposal.noGainsReason && (
         <div className="card" style={{ marginTop: 20, borderColor: 'var(--out)' }}>
           <h2>No gains are proposed</h2>

@@ -27,6 +27,9 @@ export function Component() {
       <div style={{ display: 'flex', alignItems: 'baseline', gap: 18, flexWrap: 'wrap', marginBottom: 18 }}>
         <h1>Proposals</h1>
         <span style={{ flex: 1 }} />
+        <Link to="/proposals/checklists" className="small">
+          Checklists at the machine
+        </Link>
         <SegmentedControl
           size="xs"
           aria-label="Which proposals"
