@@ -17,7 +17,7 @@ import { Axis, type Baseline } from '../fleet/axis.entity.js';
 import { baselineOf } from '../fleet/axes.service.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { DraftingService, type Alteration } from './drafting.service.js';
-import { Proposal, ProposalEvent, type ProposalState } from './proposal.entity.js';
+import { Proposal, type ProposalState } from './proposal.entity.js';
 import { StepRecorder, stateOf } from './step-recorder.js';
 import { STEP, STEPS, type Step } from './steps.js';
 
