@@ -15,7 +15,7 @@ function production(): { record: AxisRecord; gain: number; pole: number } {
  * hold and their slopes), six third-order filters and 28 sums of products, summed every eighth moving sample as the
  * identifier does at this pole, in one loop over the record's arrays.
  */
-function bareFilters(position: Int32Array, output: Int16Array, stride: number): number {
+export function bareFilters(position: Int32Array, output: Int16Array, stride: number): number {
   const sums = new Float64Array(28);
   const g = 0.03;
   const [span, reach, d] = [9, 5, 1];

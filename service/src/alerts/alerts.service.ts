@@ -15,6 +15,7 @@ import { Transactions } from '../database/transactions.js';
 import { tell, type Events } from '../events.js';
 import { Axis } from '../fleet/axis.entity.js';
 import { Proposal } from '../proposals/proposal.entity.js';
+import { AxesAtHand } from '../telemetry/axes-at-hand.js';
 import { AlertRule } from './alert-rule.entity.js';
 import { Alert, AlertEvent } from './alert.entity.js';
 import { AxisLevelsService } from './axis-levels.service.js';
@@ -42,6 +43,7 @@ export class AlertsService implements OnApplicationBootstrap {
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
     private readonly levels: AxisLevelsService,
+    private readonly axes: AxesAtHand,
     private readonly audit: AuditService,
     private readonly emitter: EventEmitter2,
   ) {}
@@ -86,7 +88,7 @@ export class AlertsService implements OnApplicationBootstrap {
           proposal.trial?.verdict ?? 'waiting',
         ]),
       );
-      for (const axis of await this.dataSource.getRepository(Axis).find()) {
+      for (const axis of await this.axes.all()) {
         const levels = this.levels.of(axis, at, trials.get(axis.id) ?? null);
         for (const rule of RULES) await this.lookAt(axis, rule, levels, at, open.get(`${axis.id} ${rule}`));
       }

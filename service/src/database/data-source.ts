@@ -24,6 +24,7 @@ import { RotaOverride } from '../rota/rota-override.entity.js';
 import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
 import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
+import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpoint-parts.js';
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 
 export const ENTITIES = [
@@ -65,9 +66,16 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       db.pragma('synchronous = NORMAL');
       db.pragma('foreign_keys = ON');
       db.pragma('busy_timeout = 5000');
+      // 32 MiB of log before its pages go into the file: a fleet's checkpoint rewrites the same pages every second.
+      db.pragma('wal_autocheckpoint = 8192');
     },
     entities: ENTITIES,
-    migrations: [Fleet1764547200000, People1764547201000, ChangesAtMachines1764637000100],
+    migrations: [
+      Fleet1764547200000,
+      People1764547201000,
+      CheckpointParts1764635000100,
+      ChangesAtMachines1764637000100,
+    ],
     migrationsRun: true,
     synchronize: false,
   };

@@ -1,7 +1,7 @@
 import { BadRequestException, ConflictException, Injectable, NotFoundException } from '@nestjs/common';
 import { EventEmitter2 } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { In, MoreThan, Not, type DataSource } from 'typeorm';
+import { In, Not, type DataSource } from 'typeorm';
 import { Alert } from '../alerts/alert.entity.js';
 import { AuditService } from '../audit/audit.service.js';
 import type { Action } from '../auth/policy.js';
@@ -10,7 +10,6 @@ import { checkPattern, patternFrequency, placeGains, type PolePattern } from '..
 import { Transactions } from '../database/transactions.js';
 import { tell } from '../events.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
-import { PlantEstimateRow } from '../indicators/plant-estimate.entity.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
 import { LIVE_STATES, Proposal } from '../proposals/proposal.entity.js';
 import { IntakeService } from '../telemetry/intake.service.js';
@@ -33,11 +32,21 @@ import { TuningRevision } from './tuning-revision.entity.js';
 /** Points of a drift plot's trail, and how far it reaches back, s. */
 const TRAIL_POINTS = 24;
 const TRAIL_REACH = 30 * 86_400;
+const TRAIL_STEP = TRAIL_REACH / TRAIL_POINTS;
+
+interface PlantPoint {
+  gain: number;
+  pole: number;
+}
+
 /** Order of the fleet: what needs a person first. */
 const WORST_FIRST = ['out-of-tune', 'drifting', 'no-signal', 'in-maintenance', 'in-tune'];
 
 @Injectable()
 export class AxesService {
+  /** Newest estimate of an axis in a stretch of its trail, by axis and stretch; null where there is none. */
+  private readonly trailPoints = new Map<number, Map<number, PlantPoint | null>>();
+
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
@@ -100,9 +109,11 @@ export class AxesService {
       this.dataSource.getRepository(TuningRevision).findBy({ axisId: In(ids) }),
       this.trails(axes),
     ]);
+    const alertsOf = groupBy(alerts, ({ axisId }) => axisId);
+    const tuningOf = new Map(tunings.map((tuning) => [`${tuning.axisId} ${tuning.revision}`, tuning]));
     return axes.map((axis) => {
       const pipeline = this.intake.pipeline(axis.id);
-      const tuning = tunings.find(({ axisId, revision }) => axisId === axis.id && revision === axis.revision);
+      const tuning = tuningOf.get(`${axis.id} ${axis.revision}`);
       const indicators = this.recent.over(axis.id);
       const proposal = proposals.find(({ axisId }) => axisId === axis.id);
       const lastSampleAt = pipeline?.lastSampleAt ?? null;
@@ -143,9 +154,12 @@ export class AxesService {
           ? { until: axis.maintenanceUntil, reason: axis.maintenanceReason, by: axis.maintenanceBy }
           : null,
         trail: trails.get(axis.id) ?? [],
-        openAlerts: alerts
-          .filter(({ axisId }) => axisId === axis.id)
-          .map(({ id, rule, priority, state }) => ({ id, rule, priority, state })),
+        openAlerts: (alertsOf.get(axis.id) ?? []).map(({ id, rule, priority, state }) => ({
+          id,
+          rule,
+          priority,
+          state,
+        })),
         openProposal: proposal ? { id: proposal.id, state: proposal.state } : null,
         lastSampleAt: lastSampleAt === null ? null : new Date(lastSampleAt * 1000),
       };
@@ -156,24 +170,46 @@ export class AxesService {
     return (await this.trails([axis])).get(axis.id) ?? [];
   }
 
-  /** Former estimates over the baseline, thinned evenly to what a drift plot can show. */
+  /**
+   * Former estimates over the baseline: of each of `TRAIL_POINTS` equal stretches of `TRAIL_REACH` the newest, one seek
+   * in the index each. What was found is kept, but for the running stretch.
+   */
   private async trails(axes: Axis[]): Promise<Map<number, RatioPointDto[]>> {
-    const rows = await this.dataSource.getRepository(PlantEstimateRow).find({
-      where: { axisId: In(axes.map(({ id }) => id)), t: MoreThan(Date.now() / 1000 - TRAIL_REACH) },
-      order: { t: 'ASC' },
+    const running = Math.floor(Date.now() / 1000 / TRAIL_STEP);
+    const stretches = Array.from({ length: TRAIL_POINTS }, (_, k) => running - TRAIL_POINTS + 1 + k);
+    const wanted = axes.flatMap(({ id, baseline }) => {
+      if (!baseline) return [];
+      const known = this.trailPoints.get(id);
+      return stretches.filter((k) => !known?.has(k)).map((k) => [id, k] as const);
     });
-    const byAxis = groupBy(rows, ({ axisId }) => axisId);
+    const found = (await this.dataSource.query(
+      `SELECT w."id", w."k", json_extract(e."estimate", '$.gain.value') AS "gain",
+              json_extract(e."estimate", '$.pole.value') AS "pole"
+       FROM (SELECT value ->> 0 AS "id", value ->> 1 AS "k" FROM json_each(?)) w
+       JOIN "plant_estimate_row" e ON e."axisId" = w."id" AND e."t" = (
+         SELECT max("t") FROM "plant_estimate_row"
+         WHERE "axisId" = w."id" AND "t" >= w."k" * ${TRAIL_STEP} AND "t" < (w."k" + 1) * ${TRAIL_STEP})`,
+      [JSON.stringify(wanted)],
+    )) as { id: number; k: number; gain: number; pole: number }[];
+    for (const [id, k] of wanted) {
+      const points = this.trailPoints.get(id) ?? new Map<number, PlantPoint | null>();
+      points.set(k, null);
+      this.trailPoints.set(id, points);
+    }
+    for (const { id, k, gain, pole } of found) this.trailPoints.get(id)!.set(k, { gain, pole });
     const trails = new Map<number, RatioPointDto[]>();
     for (const { id, baseline } of axes) {
-      const points = byAxis.get(id) ?? [];
-      if (!baseline || points.length === 0) continue;
-      const step = Math.max(1, (points.length - 1) / (TRAIL_POINTS - 1));
-      const trail: RatioPointDto[] = [];
-      for (let k = 0; Math.round(k) < points.length && trail.length < TRAIL_POINTS; k += step) {
-        const { gain, pole } = points[Math.round(k)]!.estimate;
-        trail.push({ gainRatio: gain.value / baseline.gain, poleRatio: pole.value / baseline.pole });
-      }
-      trails.set(id, trail);
+      const points = this.trailPoints.get(id);
+      if (!baseline || !points) continue;
+      for (const k of points.keys()) if (k < stretches[0]!) points.delete(k);
+      const trail = stretches.flatMap((k) => {
+        const point = points.get(k);
+        return point
+          ? [{ gainRatio: point.gain / baseline.gain, poleRatio: point.pole / baseline.pole }]
+          : [];
+      });
+      points.delete(running); // it may still get newer ones
+      if (trail.length > 0) trails.set(id, trail);
     }
     return trails;
   }

@@ -6,6 +6,7 @@ import { In, type DataSource } from 'typeorm';
 import { Alert } from '../alerts/alert.entity.js';
 import { tell, type Events } from '../events.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
+import { AxesAtHand } from '../telemetry/axes-at-hand.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { groupBy } from '../group-by.js';
 import { judgeAxis } from './axis-state.js';
@@ -22,6 +23,7 @@ export class AxisStateService {
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly intake: IntakeService,
+    private readonly axes: AxesAtHand,
     private readonly recent: RecentSeconds,
     private readonly emitter: EventEmitter2,
   ) {}
@@ -31,7 +33,8 @@ export class AxisStateService {
     if (this.judging) return;
     this.judging = true;
     try {
-      const axes = await this.dataSource.getRepository(Axis).find({ relations: { site: true } });
+      const axes = await this.axes.all();
+      const counts = new Map<string, number>();
       const standing = groupBy(
         await this.dataSource.getRepository(Alert).find({
           select: { axisId: true, rule: true },
@@ -45,6 +48,7 @@ export class AxisStateService {
           (standing.get(axis.id) ?? []).map(({ rule }) => rule),
           at,
         );
+        counts.set(state, (counts.get(state) ?? 0) + 1);
         if (state === axis.state && reason === axis.stateReason) continue;
         await this.dataSource.getRepository(Axis).update(axis.id, {
           state,
@@ -53,10 +57,8 @@ export class AxisStateService {
         });
         if (state !== axis.state)
           tell(this.emitter, 'axis.state-changed', { axisId: axis.id, siteId: axis.siteId });
-        axis.state = state;
       }
-      for (const state of AXIS_STATES)
-        axesByState.set({ state }, axes.filter((axis) => axis.state === state).length);
+      for (const state of AXIS_STATES) axesByState.set({ state }, counts.get(state) ?? 0);
     } finally {
       this.judging = false;
     }

@@ -59,40 +59,52 @@ export class MoveRecorder {
       state[STARTED] = 1;
       state[LAST_TARGET] = target[from]!;
     }
+    let moving = state[MOVING] === 1;
     let lastTarget = state[LAST_TARGET]!;
+    let lastChangeUs = state[LAST_CHANGE_US]!;
+    let peak = state[PEAK]!;
+    let squares = state[SQUARES]!;
+    let saturated = state[SATURATED]!;
+    let samples = state[SAMPLES]!;
     for (let i = from; i < target.length; i++) {
       const r = target[i]!;
       const us = startUs + i * stepUs;
       if (r !== lastTarget) {
-        if (state[MOVING] === 0) {
-          state[MOVING] = 1;
+        if (!moving) {
+          moving = true;
           state[START_US] = us - stepUs;
           state[START_TARGET] = lastTarget;
-          state.fill(0, PEAK);
+          peak = squares = saturated = samples = 0;
         }
-        state[LAST_CHANGE_US] = us;
+        lastChangeUs = us;
         lastTarget = r;
       }
-      if (state[MOVING] === 0) continue;
+      if (!moving) continue;
       const error = Math.abs(r - position[i]!);
-      if (error > state[PEAK]!) state[PEAK] = error;
-      state[SQUARES]! += error * error;
-      if (Math.abs(output[i]!) >= AT_LIMIT) state[SATURATED]!++;
-      state[SAMPLES]!++;
-      if (us - state[LAST_CHANGE_US]! < STANDING * 1e6) continue;
-      state[MOVING] = 0;
+      if (error > peak) peak = error;
+      squares += error * error;
+      if (Math.abs(output[i]!) >= AT_LIMIT) saturated++;
+      samples++;
+      if (us - lastChangeUs < STANDING * 1e6) continue;
+      moving = false;
       const counts = lastTarget - state[START_TARGET]!;
       if (Math.abs(counts) < SHORTEST) continue;
       close({
         t: state[START_US]! / 1e6,
         distance: counts * this.resolution,
-        duration: (state[LAST_CHANGE_US]! - state[START_US]!) / 1e6,
-        peakError: state[PEAK]! * this.resolution,
-        rmsError: Math.sqrt(state[SQUARES]! / state[SAMPLES]!) * this.resolution,
-        saturatedPct: (100 * state[SATURATED]!) / state[SAMPLES]!,
+        duration: (lastChangeUs - state[START_US]!) / 1e6,
+        peakError: peak * this.resolution,
+        rmsError: Math.sqrt(squares / samples) * this.resolution,
+        saturatedPct: (100 * saturated) / samples,
       });
     }
+    state[MOVING] = moving ? 1 : 0;
     state[LAST_TARGET] = lastTarget;
+    state[LAST_CHANGE_US] = lastChangeUs;
+    state[PEAK] = peak;
+    state[SQUARES] = squares;
+    state[SATURATED] = saturated;
+    state[SAMPLES] = samples;
   }
 
   /** Whether the target stands: no move is under way. */

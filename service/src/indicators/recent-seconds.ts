@@ -12,10 +12,14 @@ export const RECENT = 120;
 /** Stretch over which an axis's present indicators are taken, s. */
 export const INDICATOR_WINDOW = 60;
 
+export type RecentIndicators = Readonly<Indicators & { at: Date; movingSeconds: number }>;
+
 /** The last two minutes of every axis, in memory; after a restart they come back from the table. */
 @Injectable()
 export class RecentSeconds implements OnApplicationBootstrap {
   private readonly byAxis = new Map<number, ClosedSecond[]>();
+  /** Indicators by axis and span, until its next second: several ask for the same at every beat. */
+  private readonly known = new Map<number, Map<number, RecentIndicators>>();
 
   constructor(@InjectDataSource() private readonly dataSource: DataSource) {}
 
@@ -39,10 +43,18 @@ export class RecentSeconds implements OnApplicationBootstrap {
   }
 
   /** Indicators over the last `span` seconds before the axis's newest one; null without any. */
-  over(axisId: number, span = INDICATOR_WINDOW): (Indicators & { at: Date; movingSeconds: number }) | null {
+  over(axisId: number, span = INDICATOR_WINDOW): RecentIndicators | null {
     const seconds = this.of(axisId);
     const newest = seconds.at(-1);
     if (!newest) return null;
+    const bySpan = this.known.get(axisId) ?? new Map<number, RecentIndicators>();
+    this.known.set(axisId, bySpan);
+    let found = bySpan.get(span);
+    if (!found) bySpan.set(span, (found = this.indicators(seconds, newest, span)));
+    return found;
+  }
+
+  private indicators(seconds: readonly ClosedSecond[], newest: ClosedSecond, span: number): RecentIndicators {
     const sums = addUp(seconds.filter(({ t }) => t > newest.t - span));
     return {
       ...indicatorsOf(sums),
@@ -57,5 +69,6 @@ export class RecentSeconds implements OnApplicationBootstrap {
     const newest = kept.at(-1)?.t ?? 0;
     while (kept.length > 0 && kept[0]!.t <= newest - RECENT) kept.shift();
     this.byAxis.set(axisId, kept);
+    this.known.delete(axisId);
   }
 }

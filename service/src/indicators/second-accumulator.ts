@@ -172,8 +172,21 @@ export class SecondAccumulator {
     let peakOutput = state[PEAK_OUTPUT]!;
     let squareOutput = state[SQUARE_OUTPUT]!;
     let crossings = 0;
+    // The tenth changes at whole samples: no division per sample.
     const secondStart = state[SECOND]! * 1e6;
+    let tenth = Math.min(TENTHS - 1, Math.floor((startUs + from * stepUs - secondStart) / 1e5));
+    let tenthEnd = tenthEndsAt(tenth, secondStart - startUs, stepUs, to);
+    let tenthSquares = state[TENTH_SQUARES + tenth]!;
+    let tenthSamples = state[TENTH_SAMPLES + tenth]!;
     for (let i = from; i < to; i++) {
+      if (i >= tenthEnd) {
+        state[TENTH_SQUARES + tenth] = tenthSquares;
+        state[TENTH_SAMPLES + tenth] = tenthSamples;
+        tenth = Math.min(TENTHS - 1, Math.floor((startUs + i * stepUs - secondStart) / 1e5));
+        tenthEnd = tenthEndsAt(tenth, secondStart - startUs, stepUs, to);
+        tenthSquares = state[TENTH_SQUARES + tenth]!;
+        tenthSamples = state[TENTH_SAMPLES + tenth]!;
+      }
       const r = target[i]!;
       const y = position[i]!;
       const u = output[i]!;
@@ -201,10 +214,11 @@ export class SecondAccumulator {
       const sign = high > 0 ? 1 : -1;
       if (sign !== highSign) crossings++;
       highSign = sign;
-      const tenth = Math.min(TENTHS - 1, Math.floor((startUs + i * stepUs - secondStart) / 1e5));
-      state[TENTH_SQUARES + tenth]! += high * high;
-      state[TENTH_SAMPLES + tenth]!++;
+      tenthSquares += high * high;
+      tenthSamples++;
     }
+    state[TENTH_SQUARES + tenth] = tenthSquares;
+    state[TENTH_SAMPLES + tenth] = tenthSamples;
     state[SAMPLES]! += to - from;
     state[MOVING]! += moving;
     state[PEAK_MOVING] = peakMoving;
@@ -249,6 +263,10 @@ export class SecondAccumulator {
     return second;
   }
 }
+
+/** First sample after a tenth of the second that starts `offsetUs` after sample 0; the last tenth takes all up to `to`. */
+const tenthEndsAt = (tenth: number, offsetUs: number, stepUs: number, to: number): number =>
+  tenth === TENTHS - 1 ? to : Math.ceil((offsetUs + (tenth + 1) * 1e5) / stepUs);
 
 /** Median of the mean squares of those tenths that have samples. */
 function medianTenth(state: Float64Array): number {

@@ -1,10 +1,8 @@
 import { Injectable } from '@nestjs/common';
-import { InjectDataSource } from '@nestjs/typeorm';
-import type { DataSource } from 'typeorm';
 import type { AxisState } from '../fleet/axis.entity.js';
-import { Axis } from '../fleet/axis.entity.js';
 import type { Interval, LnCovariance } from '../identification/plant-estimate.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
+import { AxesAtHand } from '../telemetry/axes-at-hand.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 
 /** What changes on a tile from second to second. */
@@ -26,15 +24,13 @@ export interface LiveTile {
 @Injectable()
 export class TileSource {
   constructor(
-    @InjectDataSource() private readonly dataSource: DataSource,
+    private readonly axes: AxesAtHand,
     private readonly intake: IntakeService,
     private readonly recent: RecentSeconds,
   ) {}
 
   async all(): Promise<LiveTile[]> {
-    const axes = await this.dataSource
-      .getRepository(Axis)
-      .find({ select: { id: true, siteId: true, state: true, stateReason: true } });
+    const axes = await this.axes.all();
     return axes.map(({ id, siteId, state, stateReason }) => {
       const indicators = this.recent.over(id);
       const estimate = this.intake.pipeline(id)?.estimate;

@@ -15,6 +15,9 @@ const MOVES_AFTER = 200;
 /** Watches trials: whenever an axis on trial closes a window, the same moves before and after are compared again. */
 @Injectable()
 export class TrialService {
+  /** Axes that closed a window since the last look. */
+  private readonly toCompare = new Set<number>();
+
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly transactions: Transactions,
@@ -22,9 +25,23 @@ export class TrialService {
   ) {}
 
   @OnEvent('window.closed')
-  async compare({ axisId }: Events['window.closed']): Promise<void> {
-    const proposal = await this.dataSource.getRepository(Proposal).findOneBy({ axisId, state: 'on trial' });
-    if (!proposal?.appliedAt) return;
+  note({ axisId }: Events['window.closed']): void {
+    this.toCompare.add(axisId);
+  }
+
+  /** One look at the trials for all windows of a checkpoint: a fleet closes hundreds a second, few are on trial. */
+  @OnEvent('checkpoint.written')
+  async compareNoted(): Promise<void> {
+    if (this.toCompare.size === 0) return;
+    const noted = new Set(this.toCompare);
+    this.toCompare.clear();
+    for (const proposal of await this.dataSource.getRepository(Proposal).findBy({ state: 'on trial' }))
+      if (noted.has(proposal.axisId)) await this.compare(proposal);
+  }
+
+  private async compare(proposal: Proposal): Promise<void> {
+    const { axisId } = proposal;
+    if (!proposal.appliedAt) return;
     const appliedAt = proposal.appliedAt.getTime() / 1000;
     const moves = this.dataSource.getRepository(MoveRecord);
     const [before, after] = await Promise.all([

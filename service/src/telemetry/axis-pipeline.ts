@@ -10,6 +10,7 @@ import type { PlantEstimate } from '../identification/plant-estimate.js';
 import { MoveRecorder, type RecordedMove } from '../indicators/move-recorder.js';
 import { SecondAccumulator, type ClosedSecond } from '../indicators/second-accumulator.js';
 import type { FrameBlock } from './frame-codec.js';
+import { StateImage } from './state-image.js';
 
 /** What the pipeline must know of its axis. */
 export interface AxisFacts {
@@ -57,7 +58,8 @@ const OWN_LENGTH = 5;
 
 /**
  * What the samples of one axis go through: seconds, moves, identification, drift chart. Its whole knowledge is a
- * handful of typed arrays and the chart, so a copy of them is a checkpoint and putting it back continues to the bit.
+ * handful of typed arrays and the chart, so a copy of them is a checkpoint and putting it back continues to the bit;
+ * `image` says which parts of the arrays changed since they were last written.
  */
 export class AxisPipeline {
   readonly seconds: SecondAccumulator;
@@ -76,6 +78,9 @@ export class AxisPipeline {
   /** Whether there is anything to write. */
   touched = false;
 
+  /** The typed arrays against what of them is in the database. */
+  readonly image: StateImage;
+  private judgementChanged = true;
   private readonly own = new Float64Array(OWN_LENGTH);
   private readonly stepUs: number;
 
@@ -87,6 +92,7 @@ export class AxisPipeline {
     const { gain, pole } = baseline ?? UNKNOWN_PLANT;
     this.identifier = new OnlineIdentifier({ gain, pole, sampleTime, resolution });
     this.chart = baseline && createDriftChart(baseline, facts.tolerances);
+    this.image = new StateImage([this.own, this.seconds.state, this.moves.state, this.identifier.state]);
   }
 
   /** Time of the last sample, s since the Unix epoch; null before the first. */
@@ -127,12 +133,8 @@ export class AxisPipeline {
     }
     this.touched = true;
     this.heardAt = Date.now() / 1000;
-    this.seconds.push(target, position, output, startUs, stepUs, from, (second) =>
-      this.closedSeconds.push(second),
-    );
-    this.moves.push(target, position, output, startUs, stepUs, from, (move) => {
-      if (!this.facts.inMaintenance) this.closedMoves.push({ ...move, revision: this.facts.revision });
-    });
+    this.seconds.push(target, position, output, startUs, stepUs, from, this.closeSecond);
+    this.moves.push(target, position, output, startUs, stepUs, from, this.closeMove);
     this.noteStanding(block, from);
     own[LAST_US] = startUs + (target.length - 1) * stepUs;
     if (this.facts.inMaintenance) return; // moves by hand are not production
@@ -140,11 +142,17 @@ export class AxisPipeline {
     this.takeWindows();
   }
 
+  private readonly closeSecond = (second: ClosedSecond): void => void this.closedSeconds.push(second);
+  private readonly closeMove = (move: RecordedMove): void => {
+    if (!this.facts.inMaintenance) this.closedMoves.push({ ...move, revision: this.facts.revision });
+  };
+
   /** A new baseline or tuning: what was learned about drift no longer counts. */
   restartDrift(facts: AxisFacts): void {
     this.facts = facts;
     this.chart = facts.baseline && createDriftChart(facts.baseline, facts.tolerances);
     this.decisions = null;
+    this.judgementChanged = true;
     this.touched = true;
   }
 
@@ -152,6 +160,7 @@ export class AxisPipeline {
     for (let window = this.identifier.takeWindow(); window; window = this.identifier.takeWindow()) {
       const estimate = this.identifier.estimate();
       if (!estimate) continue;
+      this.judgementChanged = true;
       this.estimate = estimate;
       if (this.chart) {
         const [gain, pole] = updateDriftChart(this.chart, window, estimate);
@@ -167,61 +176,61 @@ export class AxisPipeline {
 
   private noteStanding({ target, position, startUs }: FrameBlock, from: number): void {
     const { own, stepUs } = this;
+    let restTarget = own[STANDING_TARGET]!;
+    let restPosition = own[STANDING_POSITION]!;
+    let since = -1;
     for (let i = from; i < target.length; i++) {
-      if (
-        target[i] !== own[STANDING_TARGET] ||
-        Math.abs(position[i]! - own[STANDING_POSITION]!) > STANDING_COUNTS
-      ) {
-        own[STANDING_TARGET] = target[i]!;
-        own[STANDING_POSITION] = position[i]!;
-        own[STANDING_SINCE_US] = startUs + i * stepUs;
+      const r = target[i]!;
+      const y = position[i]!;
+      const off = y - restPosition;
+      if (r !== restTarget || off > STANDING_COUNTS || off < -STANDING_COUNTS) {
+        restTarget = r;
+        restPosition = y;
+        since = i;
       }
     }
+    if (since < 0) return;
+    own[STANDING_TARGET] = restTarget;
+    own[STANDING_POSITION] = restPosition;
+    own[STANDING_SINCE_US] = startUs + since * stepUs;
   }
 
-  /** The pipeline's whole knowledge: a JSON header and the typed arrays, in a fixed order. */
-  save(): Buffer {
-    const header = Buffer.from(
-      JSON.stringify({ chart: this.chart, decisions: this.decisions, estimate: this.estimate }),
-    );
-    const length = Buffer.alloc(4);
-    length.writeUInt32LE(header.byteLength);
-    return Buffer.concat([
-      length,
-      header,
-      ...this.arrays().map((array) => Buffer.from(array.buffer, array.byteOffset, array.byteLength)),
-    ]);
+  /** What is known beside the samples' sums, as JSON; null while it is what was last written. */
+  changedJudgement(): string | null {
+    return this.judgementChanged
+      ? JSON.stringify({ chart: this.chart, decisions: this.decisions, estimate: this.estimate })
+      : null;
+  }
+
+  /** The judgement and all parts of `image` that changed are in the database now. */
+  accept(): void {
+    this.judgementChanged = false;
+  }
+
+  /** A write failed: nothing counts as written any more. */
+  forgetWritten(): void {
+    this.judgementChanged = true;
+    this.image.forget();
   }
 
   /**
    * Puts a saved state back.
    *
+   * @param judgement JSON as `changedJudgement` gave it
+   * @param parts the image's parts, in order
    * @returns false, and changes nothing, when the state was saved by a pipeline of another layout
    */
-  restore(saved: Buffer): boolean {
-    const headerBytes = saved.readUInt32LE(0);
-    const arrays = this.arrays();
-    const expected = arrays.reduce((sum, array) => sum + array.byteLength, 4 + headerBytes);
-    if (saved.byteLength !== expected) return false;
-    const header = JSON.parse(saved.toString('utf8', 4, 4 + headerBytes)) as Pick<
+  restore(judgement: string, parts: readonly Buffer[]): boolean {
+    if (!this.image.restore(parts)) return false;
+    const { chart, decisions, estimate } = JSON.parse(judgement) as Pick<
       AxisPipeline,
       'chart' | 'decisions' | 'estimate'
     >;
-    this.chart = header.chart;
-    this.decisions = header.decisions;
-    this.estimate = header.estimate;
-    let at = 4 + headerBytes;
-    for (const array of arrays) {
-      new Uint8Array(array.buffer, array.byteOffset, array.byteLength).set(
-        saved.subarray(at, at + array.byteLength),
-      );
-      at += array.byteLength;
-    }
+    this.chart = chart;
+    this.decisions = decisions;
+    this.estimate = estimate;
+    this.judgementChanged = false;
     this.heardAt = this.lastSampleAt;
     return true;
-  }
-
-  private arrays(): Float64Array[] {
-    return [this.own, this.seconds.state, this.moves.state, this.identifier.state];
   }
 }

@@ -2,6 +2,7 @@ import type { Database, Statement } from 'better-sqlite3';
 import type { DataSource } from 'typeorm';
 import type { RecordedMove } from '../indicators/move-recorder.js';
 import type { ClosedSecond } from '../indicators/second-accumulator.js';
+import { JUDGEMENT_PART } from './axis-checkpoint.entity.js';
 import type { AxisPipeline, EstimateAfterWindow } from './axis-pipeline.js';
 import type { GatewayProgress } from './intake.service.js';
 
@@ -31,7 +32,7 @@ const COLUMNS = [...SUM_COLUMNS, ...PEAK_COLUMNS];
 /** Adds a second to the row of its stretch: sums add, peaks take the larger. */
 const mergeInto = (table: string): string => `
   INSERT INTO "${table}" ("axisId", "t", ${COLUMNS.map((c) => `"${c}"`).join(', ')})
-  VALUES (@axisId, @t, ${COLUMNS.map((c) => `@${c}`).join(', ')})
+  VALUES (?, ?, ${COLUMNS.map(() => '?').join(', ')})
   ON CONFLICT ("axisId", "t") DO UPDATE SET
     ${SUM_COLUMNS.map((c) => `"${c}" = "${c}" + excluded."${c}"`).join(', ')},
     ${PEAK_COLUMNS.map((c) => `"${c}" = max("${c}", excluded."${c}")`).join(', ')}`;
@@ -64,8 +65,8 @@ export class CheckpointWriter {
       `INSERT OR REPLACE INTO "plant_estimate_row" ("axisId", "t", "estimate", "chart") VALUES (?, ?, ?, ?)`,
     );
     this.state = this.database.prepare(
-      `INSERT INTO "axis_checkpoint" ("axisId", "state") VALUES (?, ?)
-       ON CONFLICT ("axisId") DO UPDATE SET "state" = excluded."state"`,
+      `INSERT INTO "axis_checkpoint" ("axisId", "part", "state") VALUES (?, ?, ?)
+       ON CONFLICT ("axisId", "part") DO UPDATE SET "state" = excluded."state"`,
     );
     this.gateway = this.database.prepare(
       `UPDATE "gateway" SET "epoch" = ?, "durableSequence" = ?, "lastSeenAt" = ? WHERE "id" = ?`,
@@ -81,11 +82,16 @@ export class CheckpointWriter {
     const touched = pipelines.filter((pipeline) => pipeline.touched);
     const moved = gateways.filter((gateway) => gateway.received !== gateway.durable);
     if (touched.length === 0 && moved.length === 0) return [];
-    this.database.transaction(() => {
-      for (const pipeline of touched) this.writeAxis(pipeline);
-      for (const { id, epoch, received, lastSeenAt } of moved)
-        this.gateway.run(epoch, received, lastSeenAt === null ? null : sqliteTime(lastSeenAt), id);
-    })();
+    try {
+      this.database.transaction(() => {
+        for (const pipeline of touched) this.writeAxis(pipeline);
+        for (const { id, epoch, received, lastSeenAt } of moved)
+          this.gateway.run(epoch, received, lastSeenAt === null ? null : sqliteTime(lastSeenAt), id);
+      })();
+    } catch (error) {
+      for (const pipeline of touched) pipeline.forgetWritten();
+      throw error;
+    }
     for (const gateway of moved) gateway.durable = gateway.received;
     return touched.map((pipeline) => {
       const written = {
@@ -98,6 +104,7 @@ export class CheckpointWriter {
       pipeline.closedMoves = [];
       pipeline.closedEstimates = [];
       pipeline.touched = false;
+      pipeline.accept();
       return written;
     });
   }
@@ -105,14 +112,21 @@ export class CheckpointWriter {
   private writeAxis(pipeline: AxisPipeline): void {
     const axisId = pipeline.facts.id;
     for (const second of pipeline.closedSeconds) {
-      this.second.run({ ...second, axisId });
-      this.minute.run({ ...second, axisId, t: second.t - (second.t % 60) });
-      this.hour.run({ ...second, axisId, t: second.t - (second.t % 3600) });
+      const { t } = second;
+      const row: number[] = [axisId, t];
+      for (const column of COLUMNS) row.push(second[column]);
+      this.second.run(row);
+      row[1] = t - (t % 60);
+      this.minute.run(row);
+      row[1] = t - (t % 3600);
+      this.hour.run(row);
     }
     for (const move of pipeline.closedMoves) this.move.run({ ...move, axisId });
     for (const { t, estimate, decisions } of pipeline.closedEstimates)
       this.estimate.run(axisId, t, JSON.stringify(estimate), decisions && JSON.stringify(decisions));
-    this.state.run(axisId, pipeline.save());
+    const judgement = pipeline.changedJudgement();
+    if (judgement !== null) this.state.run(axisId, JUDGEMENT_PART, Buffer.from(judgement));
+    pipeline.image.writeChanged((part, bytes) => this.state.run(axisId, part, bytes));
   }
 }
 

@@ -1,11 +1,12 @@
 import { Injectable, Logger, type OnApplicationBootstrap, type OnApplicationShutdown } from '@nestjs/common';
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { Counter } from 'prom-client';
+import { Counter, Gauge, Histogram } from 'prom-client';
 import type { DataSource } from 'typeorm';
 import { patternFrequency } from '../control/pole-placement.js';
 import { tell, type Events } from '../events.js';
 import { Axis } from '../fleet/axis.entity.js';
+import { groupBy } from '../group-by.js';
 import { Gateway } from '../fleet/gateway.entity.js';
 import { AxisCheckpoint } from './axis-checkpoint.entity.js';
 import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
@@ -33,6 +34,15 @@ const framesTotal = new Counter({
   labelNames: ['outcome'],
 });
 const samplesTotal = new Counter({ name: 'polewright_samples_total', help: 'Samples taken in' });
+const checkpointSeconds = new Histogram({
+  name: 'polewright_checkpoint_seconds',
+  help: 'Time in which a checkpoint is written and nothing is taken in',
+  buckets: [0.01, 0.025, 0.05, 0.1, 0.15, 0.25, 0.5, 1, 2.5],
+});
+const longestCheckpoint = new Gauge({
+  name: 'polewright_checkpoint_longest_seconds',
+  help: 'Longest checkpoint since the service started',
+});
 const gapsTotal = new Counter({
   name: 'polewright_sequence_gaps_total',
   help: 'Gaps in a gateway’s sequence',
@@ -48,6 +58,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
   private writer: CheckpointWriter;
   private timer: NodeJS.Timeout | undefined;
   private failedCheckpoints = 0;
+  private longestCheckpoint = 0;
 
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
@@ -57,9 +68,18 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
   async onApplicationBootstrap(): Promise<void> {
     this.writer = new CheckpointWriter(this.dataSource);
     for (const axis of await this.dataSource.getRepository(Axis).find()) this.addPipeline(axis);
-    for (const { axisId, state } of await this.dataSource.getRepository(AxisCheckpoint).find()) {
+    const saved = await this.dataSource
+      .getRepository(AxisCheckpoint)
+      .find({ order: { axisId: 'ASC', part: 'ASC' } });
+    for (const [axisId, [judgement, ...parts]] of groupBy(saved, (row) => row.axisId)) {
       const pipeline = this.pipelines.get(axisId);
-      if (pipeline && !pipeline.restore(state))
+      if (!pipeline || !judgement) continue;
+      if (
+        !pipeline.restore(
+          judgement.state.toString('utf8'),
+          parts.map(({ state }) => state),
+        )
+      )
         this.log.warn(`The saved state of axis ${axisId} has another layout; its identification starts anew`);
     }
     for (const gateway of await this.dataSource.getRepository(Gateway).find()) this.addGateway(gateway);
@@ -184,7 +204,12 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
 
   private write(): WrittenAxis[] | null {
     try {
+      const from = performance.now();
       const written = this.writer.write([...this.pipelines.values()], [...this.gateways.values()]);
+      const took = (performance.now() - from) / 1000;
+      checkpointSeconds.observe(took);
+      this.longestCheckpoint = Math.max(this.longestCheckpoint, took);
+      longestCheckpoint.set(this.longestCheckpoint);
       this.failedCheckpoints = 0;
       return written;
     } catch (error) {

@@ -1,9 +1,10 @@
 import { Module } from '@nestjs/common';
+import { AxesAtHand } from './axes-at-hand.js';
 import { IntakeService } from './intake.service.js';
 import { TelemetryGateway } from './telemetry.gateway.js';
 
 @Module({
-  providers: [IntakeService, TelemetryGateway],
-  exports: [IntakeService, TelemetryGateway],
+  providers: [AxesAtHand, IntakeService, TelemetryGateway],
+  exports: [AxesAtHand, IntakeService, TelemetryGateway],
 })
 export class TelemetryModule {}

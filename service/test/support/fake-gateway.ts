@@ -1,7 +1,8 @@
 import { io, type Socket } from 'socket.io-client';
 import type { Gains, Structure } from '../../src/control/pole-placement.js';
 import { encodeFrame, type FrameBlock } from '../../src/telemetry/frame-codec.js';
-import { until, type Caller } from './start-service.js';
+import type { Caller } from './start-service.js';
+import { until } from './until.js';
 
 const ACK_MS = 5_000;
 

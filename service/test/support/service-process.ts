@@ -17,16 +17,20 @@ export interface ServiceProcess {
 /** Starts `dist/main.js` over a data folder; `npm test` builds it before. */
 export async function startProcess(dataFolder: string): Promise<ServiceProcess> {
   if (!existsSync(MAIN)) throw new Error('the service is not built: npm run build -w service');
-  const child = spawn(process.execPath, [MAIN], {
-    env: {
-      PATH: process.env.PATH,
-      PORT: '0',
-      DATA_DIR: dataFolder,
-      DEMO: '1',
-      SMTP_URL: 'smtp://127.0.0.1:1',
+  const child = spawn(
+    process.execPath,
+    [...(process.env.PROFILE ? ['--cpu-prof', '--cpu-prof-dir=/tmp/intake-probe/prof'] : []), MAIN],
+    {
+      env: {
+        PATH: process.env.PATH,
+        PORT: '0',
+        DATA_DIR: dataFolder,
+        DEMO: '1',
+        SMTP_URL: 'smtp://127.0.0.1:1',
+      },
+      stdio: ['ignore', 'pipe', 'pipe'],
     },
-    stdio: ['ignore', 'pipe', 'pipe'],
-  });
+  );
   const url = await listening(child);
   const ended = new Promise<number | null>((resolve) => child.once('exit', (code) => resolve(code)));
   const end = (signal: 'SIGKILL' | 'SIGTERM'): Promise<number | null> => {

@@ -14,6 +14,7 @@ import { readSettings } from '../../src/settings.js';
 import { setup } from '../../src/setup.js';
 
 export { DEMO_PASSWORD };
+export { until } from './until.js';
 
 /** Requests with the access token of one person. */
 export type Caller = ReturnType<typeof request.agent>;
@@ -102,19 +103,4 @@ export async function startService(over?: string): Promise<Service> {
       rmSync(folder, { recursive: true, force: true });
     },
   };
-}
-
-/** Looks again and again until the answer is neither null, undefined nor false. */
-export async function until<T>(
-  what: string,
-  look: () => Promise<T | null | undefined | false> | T | null | undefined | false,
-  withinMs = 15_000,
-): Promise<T> {
-  const end = Date.now() + withinMs;
-  for (;;) {
-    const found = await look();
-    if (found !== null && found !== undefined && found !== false) return found;
-    if (Date.now() > end) throw new Error(`waited ${withinMs} ms in vain: ${what}`);
-    await new Promise((resolve) => setTimeout(resolve, 50));
-  }
 }
