@@ -240,7 +240,7 @@ describe('the main job, end to end', () => {
     await page.goto(`${polewright.address}/proposals/${id}`);
     await page.getByRole('heading', { name: /^Retune/ }).waitFor();
     expect(
-      await page.getByRole('button', { name: /review|Approve|Withdraw|Schedule|Apply|Work it out/ }).count(),
+      await page.getByRole('button', { name: /review|Approve|Withdraw|Schedule|Apply|Make version/ }).count(),
     ).toBe(0);
     await page.goto(`${polewright.address}/axes/${axis.id}`);
     await page.getByRole('heading', { name: SATURATED }).waitFor();

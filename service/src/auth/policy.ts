@@ -22,6 +22,7 @@ export const POLICY = {
   'axis.baseline': ENGINEER_AND_UP,
   'machine.register': ENGINEER_AND_UP,
   'proposal.work': ENGINEER_AND_UP,
+  'proposal.discuss': ROLES,
   'proposal.approve': APPROVER,
   'proposal.schedule': ENGINEER_AND_UP,
   'proposal.apply': TECHNICIAN_AND_UP,

@@ -16,7 +16,7 @@ import { Mail } from '../notifications/mail.entity.js';
 import { Invitation } from '../people/invitation.entity.js';
 import { UserRole } from '../people/user-role.entity.js';
 import { User } from '../people/user.entity.js';
-import { Proposal, ProposalEvent } from '../proposals/proposal.entity.js';
+import { Proposal, ProposalEvent, ProposalVersion } from '../proposals/proposal.entity.js';
 import { SiteChecklistItem } from '../proposals/site-checklist.entity.js';
 import { HandoverNote } from '../rota/handover-note.entity.js';
 import { RotaLayer } from '../rota/rota-layer.entity.js';
@@ -26,6 +26,7 @@ import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
 import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpoint-parts.js';
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
+import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
 
 export const ENTITIES = [
   Site,
@@ -44,6 +45,7 @@ export const ENTITIES = [
   AlertEvent,
   Proposal,
   ProposalEvent,
+  ProposalVersion,
   SiteChecklistItem,
   User,
   UserRole,
@@ -75,6 +77,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       People1764547201000,
       CheckpointParts1764635000100,
       ChangesAtMachines1764637000100,
+      ProposalVersions1764637000200,
     ],
     migrationsRun: true,
     synchronize: false,

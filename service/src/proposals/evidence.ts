@@ -1,9 +1,5 @@
-import {
-  expectedMove,
-  recommendGains,
-  type ExpectedMove,
-  type Recommendation,
-} from '../control/recommendation.js';
+import { regionPlants } from '../control/limits.js';
+import { recommendGains, type Recommendation } from '../control/recommendation.js';
 import { sampledMaxSensitivity } from '../control/sampled-margins.js';
 import { simulateMove, type Controller, type Move } from '../control/move.js';
 import { patternFrequency, type Gains, type PolePattern, type Structure } from '../control/pole-placement.js';
@@ -63,11 +59,26 @@ export interface ExpectedTrace {
   output: number[];
 }
 
+/** The move at one corner of the estimate's 95 % region. */
+export interface ExpectedCorner {
+  /** (mm/s)/% */
+  gain: number;
+  /** rad/s */
+  pole: number;
+  /** With the gains of today: doing nothing. */
+  before: ExpectedFigures;
+  after: ExpectedFigures | null;
+}
+
 export interface Expected {
   before: ExpectedFigures & { trace: ExpectedTrace };
   after: (ExpectedFigures & { trace: ExpectedTrace }) | null;
   /** Worst of the estimate and the corners of its 95 % region, with the new gains. */
   worst: ExpectedFigures | null;
+  /** The same for doing nothing; absent from proposals made before it was kept. */
+  worstBefore?: ExpectedFigures;
+  /** Each corner of the 95 % region; absent from proposals made before they were kept. */
+  corners?: ExpectedCorner[];
 }
 
 /** Trace points sent to a page: enough for a chart, few enough to store with the proposal. */
@@ -110,38 +121,63 @@ export function recommend(
   });
 }
 
-/** The axis's own move on the plant as identified, with the gains of today and with the proposed ones. */
+type Tuning = Pick<CurrentTuning, 'gains' | 'structure'>;
+
+/** The axis's own move on the plant as identified and on every corner of its 95 % region, with the gains of today and with the proposed ones. */
 export function expectedOf(
   axis: Axis,
   estimate: PlantEstimate,
-  current: { gains: Gains; structure: Structure },
-  proposed: { gains: Gains; structure: Structure } | null,
+  current: Tuning,
+  proposed: Tuning | null,
 ): Expected {
   const plant = plantOf(estimate);
   const region = { gain: estimate.gain, pole: estimate.pole };
   const controller = controllerOf(axis);
   const move = moveOf(axis);
-  const { before, after } = expectedMove({ plant, region, controller, move }, current, proposed);
-  const sensitivity = ({ gains }: { gains: Gains }): number | null => {
-    const { value } = sampledMaxSensitivity(plant, gains, controller.sampleTime, 0);
-    return Number.isFinite(value) ? value : null;
+  const plants = regionPlants(plant, region);
+  const figures = (at: Plant, { gains, structure }: Tuning): ExpectedFigures => {
+    const moved = simulateMove(at, gains, structure, controller, move, { output: at.bias ?? 0 });
+    const { value } = sampledMaxSensitivity(at, gains, controller.sampleTime, 0);
+    return {
+      peakFollowingError: moved.peakFollowingError,
+      rmsFollowingError: moved.rmsFollowingError,
+      peakOutput: moved.peakOutput,
+      saturatedPct: moved.saturatedPct,
+      maxSensitivity: Number.isFinite(value) ? value : null,
+    };
   };
-  const figures = (moves: ExpectedMove['nominal'], maxSensitivity: number | null): ExpectedFigures => ({
-    peakFollowingError: moves.peakFollowingError,
-    rmsFollowingError: moves.rmsFollowingError,
-    peakOutput: moves.peakOutput,
-    saturatedPct: moves.saturatedPct,
-    maxSensitivity,
-  });
-  const trace = ({ gains, structure }: { gains: Gains; structure: Structure }): ExpectedTrace =>
+  const all = plants.map((at) => ({
+    gain: at.gain,
+    pole: at.pole,
+    before: figures(at, current),
+    after: proposed && figures(at, proposed),
+  }));
+  const [nominal, ...corners] = all;
+  const trace = ({ gains, structure }: Tuning): ExpectedTrace =>
     traceOf(
       simulateMove(plant, gains, structure, controller, move, { output: plant.bias ?? 0 }),
       controller.sampleTime,
     );
   return {
-    before: { ...figures(before.nominal, sensitivity(current)), trace: trace(current) },
-    after: after && proposed && { ...figures(after.nominal, sensitivity(proposed)), trace: trace(proposed) },
-    worst: after && proposed && figures(after.worst, sensitivity(proposed)),
+    before: { ...nominal!.before, trace: trace(current) },
+    after: proposed && { ...nominal!.after!, trace: trace(proposed) },
+    worst: proposed && worstOf(all.map(({ after }) => after!)),
+    worstBefore: worstOf(all.map(({ before }) => before)),
+    corners,
+  };
+}
+
+/** The worst, figure by figure; a loop that is not stable anywhere has no Ms. */
+function worstOf(figures: readonly ExpectedFigures[]): ExpectedFigures {
+  const worst = (name: Exclude<keyof ExpectedFigures, 'maxSensitivity'>): number =>
+    Math.max(...figures.map((at) => at[name]));
+  const sensitivities = figures.flatMap(({ maxSensitivity }) => maxSensitivity ?? []);
+  return {
+    peakFollowingError: worst('peakFollowingError'),
+    rmsFollowingError: worst('rmsFollowingError'),
+    peakOutput: worst('peakOutput'),
+    saturatedPct: worst('saturatedPct'),
+    maxSensitivity: sensitivities.length === figures.length ? Math.max(...sensitivities) : null,
   };
 }
 

@@ -7,6 +7,7 @@ import {
   ManyToOne,
   OneToMany,
   PrimaryGeneratedColumn,
+  Unique,
   type Relation,
 } from 'typeorm';
 import type { Gains, PolePattern, Structure } from '../control/pole-placement.js';
@@ -157,6 +158,40 @@ export class Proposal {
 
   @OneToMany(() => ProposalEvent, (event) => event.proposal)
   events: Relation<ProposalEvent[]>;
+
+  @OneToMany(() => ProposalVersion, (version) => version.proposal)
+  versions: Relation<ProposalVersion[]>;
+}
+
+/** The gains on offer at one version, and who made it: altered by a new version only. */
+@Entity()
+@Unique(['proposalId', 'version'])
+export class ProposalVersion {
+  @PrimaryGeneratedColumn()
+  id: number;
+
+  @Column()
+  proposalId: number;
+
+  @ManyToOne(() => Proposal, (proposal) => proposal.versions, { nullable: false })
+  @JoinColumn({ name: 'proposalId' })
+  proposal: Relation<Proposal>;
+
+  @Column()
+  version: number;
+
+  @Column({ type: 'datetime' })
+  at: Date;
+
+  /** A person's name, or "service". */
+  @Column()
+  by: string;
+
+  @Column({ type: 'simple-json', nullable: true })
+  proposed: Proposed | null;
+
+  @Column({ type: 'text', nullable: true })
+  note: string | null;
 }
 
 /** One step of a proposal's life, and by whom. */

@@ -10,8 +10,17 @@ import {
   Patch,
   Post,
   Query,
+  StreamableFile,
 } from '@nestjs/common';
-import { ApiBearerAuth, ApiCreatedResponse, ApiHeader, ApiOkResponse, ApiTags } from '@nestjs/swagger';
+import type { Readable } from 'node:stream';
+import {
+  ApiBearerAuth,
+  ApiCreatedResponse,
+  ApiHeader,
+  ApiOkResponse,
+  ApiProduces,
+  ApiTags,
+} from '@nestjs/swagger';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { In, LessThan, type DataSource } from 'typeorm';
 import { CurrentUser } from '../auth/current-user.decorator.js';
@@ -25,6 +34,7 @@ import { DraftingService, type Alteration } from './drafting.service.js';
 import {
   AlterProposalDto,
   ApplyDto,
+  CommentDto,
   CreateProposalDto,
   ProposalDto,
   proposalOf,
@@ -36,6 +46,7 @@ import {
   summaryOf,
 } from './dto/proposal.dto.js';
 import { LIVE_STATES, Proposal } from './proposal.entity.js';
+import { proposalReport } from './report/proposal-report.js';
 import { ReviewService } from './review.service.js';
 
 /** Refuses the step with 409 when the proposal has another version by now. */
@@ -101,6 +112,23 @@ export class ProposalsController {
     );
   }
 
+  /** The proposal on two sides of A4. */
+  @Get(':id/report.pdf')
+  @ApiProduces('application/pdf')
+  @ApiOkResponse({ schema: { type: 'string', format: 'binary' } })
+  async report(
+    @Param('id', ParseIntPipe) id: number,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<StreamableFile> {
+    const proposal = await this.review.get(id, user);
+    const checklist = await this.checklists.of(proposal.siteId);
+    // pdfkit's document is a stream of Node's, by its own typings as well.
+    return new StreamableFile(proposalReport(proposal, checklist) as unknown as Readable, {
+      type: 'application/pdf',
+      disposition: `inline; filename="proposal-${id}.pdf"`,
+    });
+  }
+
   @Post()
   @ApiCreatedResponse({ type: ProposalDto })
   async create(
@@ -122,6 +150,18 @@ export class ProposalsController {
     @Headers('if-match') ifMatch?: string,
   ): Promise<ProposalDto> {
     await this.review.alter(id, change as Alteration, ifMatch, user);
+    return this.get(id, user);
+  }
+
+  /** Says something about a proposal. */
+  @Post(':id/comments')
+  @ApiCreatedResponse({ type: ProposalDto })
+  async comment(
+    @Param('id', ParseIntPipe) id: number,
+    @Body() { text }: CommentDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<ProposalDto> {
+    await this.review.comment(id, text, user);
     return this.get(id, user);
   }
 

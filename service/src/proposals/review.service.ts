@@ -19,7 +19,7 @@ import { IntakeService } from '../telemetry/intake.service.js';
 import { DraftingService, type Alteration } from './drafting.service.js';
 import { Proposal, type ProposalState } from './proposal.entity.js';
 import { StepRecorder, stateOf } from './step-recorder.js';
-import { STEP, STEPS, type Step } from './steps.js';
+import { SAID, STEP, STEPS, type Step } from './steps.js';
 
 const PRECONDITION_REQUIRED = 428;
 /** Longest maintenance window, ms. */
@@ -57,11 +57,12 @@ export class ReviewService {
   async get(id: number, user: SignedInUser): Promise<Proposal> {
     const proposal = await this.dataSource.getRepository(Proposal).findOne({
       where: { id },
-      relations: { axis: { machine: true, site: true }, events: true },
+      relations: { axis: { machine: true, site: true }, events: true, versions: true },
     });
     if (!proposal) throw new NotFoundException(`There is no proposal ${id}`);
     requireRole(user, proposal.siteId, 'see', `proposal ${id}`);
     proposal.events.sort((a, b) => a.id - b.id);
+    proposal.versions.sort((a, b) => a.version - b.version);
     return proposal;
   }
 
@@ -112,6 +113,17 @@ export class ReviewService {
         ...(change.note !== undefined && { note: change.note }),
       }),
     );
+  }
+
+  /** Says something about a proposal; it changes neither state nor version, and an approval stays. */
+  async comment(id: number, text: string, user: SignedInUser): Promise<void> {
+    const seen = await this.get(id, user);
+    requireRole(user, seen.siteId, 'proposal.discuss', `proposal ${id}`);
+    await this.transactions.run(async (manager) => {
+      const proposal = await manager.findOneByOrFail(Proposal, { id });
+      await this.steps.note(manager, proposal, SAID, text, user);
+    });
+    this.changed(seen);
   }
 
   async submit(id: number, ifMatch: string | undefined, user: SignedInUser): Promise<void> {

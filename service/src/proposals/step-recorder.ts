@@ -2,7 +2,7 @@ import { Injectable } from '@nestjs/common';
 import type { EntityManager } from 'typeorm';
 import { AuditService } from '../audit/audit.service.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
-import { Proposal, ProposalEvent } from './proposal.entity.js';
+import { Proposal, ProposalEvent, ProposalVersion } from './proposal.entity.js';
 
 /** Writes a step of a proposal's life down twice, in the transaction of the step: on the proposal and in the record. */
 @Injectable()
@@ -30,6 +30,17 @@ export class StepRecorder {
       note,
       version: proposal.version,
     });
+    if (MAKES_VERSION.includes(action)) {
+      const { at, by, version } = event;
+      await manager.save(ProposalVersion, {
+        proposalId: proposal.id,
+        version,
+        at,
+        by,
+        proposed: proposal.proposed,
+        note,
+      });
+    }
     await this.audit.record(manager, {
       user,
       action: `proposal.${action.replaceAll(' ', '-')}`,
@@ -42,6 +53,9 @@ export class StepRecorder {
     return event;
   }
 }
+
+/** Actions that make a version. */
+const MAKES_VERSION = ['drafted', 'newer evidence', 'altered'];
 
 /** What the record keeps of a proposal at each step. */
 export const stateOf = (proposal: Proposal): Record<string, unknown> => ({

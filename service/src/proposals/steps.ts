@@ -36,3 +36,6 @@ export const STEP: Record<Step, { from: readonly ProposalState[]; right: Action;
 
 /** What a roll-back is called on the proposal while the former gains are on their way. */
 export const ASKED_BACK = 'roll-back asked for';
+
+/** What a contribution to the discussion is called on the proposal. */
+export const SAID = 'said';

@@ -596,6 +596,38 @@ export interface paths {
         patch: operations["ProposalsController_alter"];
         trace?: never;
     };
+    "/api/v1/proposals/{id}/report.pdf": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["ProposalsController_report"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/proposals/{id}/comments": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["ProposalsController_comment"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/proposals/{id}/submit": {
         parameters: {
             query?: never;
@@ -1772,12 +1804,25 @@ export interface components {
             /** @description Ms with all delays; null where the loop is not stable */
             maxSensitivity: number | null;
         };
+        ExpectedCornerDto: {
+            /** @description (mm/s)/% */
+            gain: number;
+            /** @description rad/s */
+            pole: number;
+            /** @description Doing nothing */
+            before: components["schemas"]["ExpectedFiguresDto"];
+            after: components["schemas"]["ExpectedFiguresDto"] | null;
+        };
         ExpectedDto: {
             /** @description With the gains of today, on the plant as identified */
             before: components["schemas"]["ExpectedMoveDto"];
             after: components["schemas"]["ExpectedMoveDto"] | null;
             /** @description Worst corner of the 95 % region, with the new gains */
             worst: components["schemas"]["ExpectedFiguresDto"] | null;
+            /** @description The same for doing nothing */
+            worstBefore?: components["schemas"]["ExpectedFiguresDto"];
+            /** @description Each corner of the 95 % region */
+            corners?: components["schemas"]["ExpectedCornerDto"][];
         };
         BoundDto: {
             /** @enum {string} */
@@ -1835,6 +1880,15 @@ export interface components {
             note: string | null;
             version: number;
         };
+        ProposalVersionDto: {
+            version: number;
+            /** Format: date-time */
+            at: string;
+            /** @description A person’s name, or "service" */
+            by: string;
+            proposed: components["schemas"]["ProposedDto"] | null;
+            note: string | null;
+        };
         ChecklistItemDto: {
             key: string;
             text: string;
@@ -1882,6 +1936,8 @@ export interface components {
             restoring: boolean;
             /** @description Oldest first */
             events: components["schemas"]["ProposalEventDto"][];
+            /** @description Oldest first */
+            versions: components["schemas"]["ProposalVersionDto"][];
             /** @description What apply must confirm */
             checklist: components["schemas"]["ChecklistItemDto"][];
             /** @description What this person may do now */
@@ -1909,6 +1965,9 @@ export interface components {
             gains?: components["schemas"]["GainsDto"];
             feedForward?: boolean;
             note?: string;
+        };
+        CommentDto: {
+            text: string;
         };
         ReasonDto: {
             reason: string;
@@ -3431,6 +3490,52 @@ export interface operations {
         };
         responses: {
             200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProposalDto"];
+                };
+            };
+        };
+    };
+    ProposalsController_report: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/pdf": string;
+                };
+            };
+        };
+    };
+    ProposalsController_comment: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["CommentDto"];
+            };
+        };
+        responses: {
+            201: {
                 headers: {
                     [name: string]: unknown;
                 };

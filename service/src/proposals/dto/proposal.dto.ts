@@ -1,5 +1,5 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
-import { Type } from 'class-transformer';
+import { Transform, Type } from 'class-transformer';
 import {
   IsBoolean,
   IsDate,
@@ -186,6 +186,20 @@ class ExpectedMoveDto extends ExpectedFiguresDto {
   trace: ExpectedTraceDto;
 }
 
+class ExpectedCornerDto {
+  @ApiProperty({ description: '(mm/s)/%' })
+  gain: number;
+
+  @ApiProperty({ description: 'rad/s' })
+  pole: number;
+
+  @ApiProperty({ description: 'Doing nothing' })
+  before: ExpectedFiguresDto;
+
+  @ApiProperty({ type: ExpectedFiguresDto, nullable: true })
+  after: ExpectedFiguresDto | null;
+}
+
 class ExpectedDto {
   @ApiProperty({ description: 'With the gains of today, on the plant as identified' })
   before: ExpectedMoveDto;
@@ -199,6 +213,12 @@ class ExpectedDto {
     description: 'Worst corner of the 95 % region, with the new gains',
   })
   worst: ExpectedFiguresDto | null;
+
+  @ApiPropertyOptional({ description: 'The same for doing nothing' })
+  worstBefore?: ExpectedFiguresDto;
+
+  @ApiPropertyOptional({ type: [ExpectedCornerDto], description: 'Each corner of the 95 % region' })
+  corners?: ExpectedCornerDto[];
 }
 
 class ComparedDto {
@@ -261,6 +281,32 @@ class ProposalEventDto {
 
   @ApiProperty()
   version: number;
+}
+
+class ProposalVersionDto {
+  @ApiProperty()
+  version: number;
+
+  @ApiProperty()
+  at: Date;
+
+  @ApiProperty({ description: 'A person’s name, or "service"' })
+  by: string;
+
+  @ApiProperty({ type: ProposedDto, nullable: true })
+  proposed: ProposedDto | null;
+
+  @NullableText()
+  note: string | null;
+}
+
+export class CommentDto {
+  @ApiProperty({ maxLength: 2000 })
+  @IsString()
+  @Transform(({ value }: { value: unknown }) => (typeof value === 'string' ? value.trim() : value))
+  @IsNotEmpty()
+  @MaxLength(2000)
+  text: string;
 }
 
 class NamedPersonDto {
@@ -383,6 +429,9 @@ export class ProposalDto extends ProposalSummaryDto {
   @ApiProperty({ type: [ProposalEventDto], description: 'Oldest first' })
   events: ProposalEventDto[];
 
+  @ApiProperty({ type: [ProposalVersionDto], description: 'Oldest first' })
+  versions: ProposalVersionDto[];
+
   @ApiProperty({ type: [ChecklistItemDto], description: 'What apply must confirm' })
   checklist: readonly ChecklistItemDto[];
 
@@ -462,6 +511,13 @@ export function proposalOf(
     rollingBack: proposal.rollingBack,
     restoring: proposal.restoring,
     events: proposal.events.map(({ at, by, action, note, version }) => ({ at, by, action, note, version })),
+    versions: proposal.versions.map(({ version, at, by, proposed, note }) => ({
+      version,
+      at,
+      by,
+      proposed: proposed && (withLambda(proposed) as ProposedDto),
+      note,
+    })),
     checklist,
     ...possibilities,
   };

@@ -3,6 +3,7 @@ import { MoveChart } from '../../charts/move-chart';
 import { Card } from '../../components/card';
 import { LambdaRuler, rulerText } from '../../components/lambda-ruler';
 import { Quantity, significant } from '../../components/quantity';
+import { ScrollX } from '../../components/scroll-x';
 import { SiteTime } from '../../components/site-time';
 import { GAIN_ROWS } from './gain-rows';
 import classes from './proposal-page.module.css';
@@ -147,7 +148,7 @@ const FIGURES = [
 
 export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: Proposal }) {
   if (!expected) return null;
-  const { before, after, worst } = expected;
+  const { before, after, worst, worstBefore, corners } = expected;
   const series = (figure: 'error' | 'output') => [
     { label: 'today', time: before.trace.time, values: before.trace[figure], dashed: true },
     ...(after ? [{ label: 'proposed', time: after.trace.time, values: after.trace[figure] }] : []),
@@ -182,8 +183,9 @@ export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: P
             <tr>
               <th>On that move</th>
               <th>do nothing</th>
+              {worstBefore && <th>at worst</th>}
               <th>proposed</th>
-              <th>worst corner</th>
+              <th>at worst</th>
             </tr>
           </thead>
           <tbody>
@@ -194,6 +196,7 @@ export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: P
                 <tr key={name}>
                   <td>{label}</td>
                   <td>{cell(before[name])}</td>
+                  {worstBefore && <td>{cell(worstBefore[name])}</td>}
                   <td>
                     <b style={{ fontWeight: 600 }}>{cell(after?.[name])}</b>
                   </td>
@@ -204,7 +207,53 @@ export function WhatToExpect({ proposal: { expected, evidence } }: { proposal: P
           </tbody>
         </table>
       </div>
+      <p className="soft small" style={{ margin: '8px 0 0' }}>
+        At worst: the worst of the estimate and the corners of its 95 % region.{' '}
+        {before.peakFollowingError <= evidence.tolerances.followingError
+          ? 'Doing nothing keeps the following error within tolerance on this move.'
+          : 'Doing nothing leaves the following error beyond tolerance on this move.'}
+      </p>
+      {corners && corners.length > 0 && <Corners corners={corners} />}
     </Card>
+  );
+}
+
+type Corners = NonNullable<NonNullable<Proposal['expected']>['corners']>;
+
+/** The same move wherever the plant may truly be. */
+function Corners({ corners }: { corners: Corners }) {
+  return (
+    <details style={{ marginTop: 8 }}>
+      <summary className="small">Every corner of the 95 % region</summary>
+      <ScrollX label="Corners of the region">
+        <table className="plain-table">
+          <thead>
+            <tr>
+              <th>K, (mm/s)/%</th>
+              <th>α, rad/s</th>
+              <th>peak error, mm: nothing</th>
+              <th>proposed</th>
+              <th>saturated, %: nothing</th>
+              <th>proposed</th>
+              <th>Ms proposed</th>
+            </tr>
+          </thead>
+          <tbody>
+            {corners.map(({ gain, pole, before, after }) => (
+              <tr key={`${gain} ${pole}`}>
+                <td>{significant(gain, 4)}</td>
+                <td>{significant(pole, 4)}</td>
+                <td>{before.peakFollowingError.toFixed(3)}</td>
+                <td>{after?.peakFollowingError.toFixed(3) ?? '–'}</td>
+                <td>{before.saturatedPct.toFixed(1)}</td>
+                <td>{after?.saturatedPct.toFixed(1) ?? '–'}</td>
+                <td>{after?.maxSensitivity?.toFixed(2) ?? '–'}</td>
+              </tr>
+            ))}
+          </tbody>
+        </table>
+      </ScrollX>
+    </details>
   );
 }
 

@@ -1,18 +1,21 @@
-import { useQuery } from '@tanstack/react-query';
+import { Button } from '@mantine/core';
+import { useMutation, useQuery } from '@tanstack/react-query';
 import { Link, useParams } from 'react-router-dom';
 import { Caution } from '../../components/caution';
 import { ErrorState, Waiting } from '../../components/notices';
 import { SiteTime } from '../../components/site-time';
-import { Alteration } from './alteration';
+import { Discussion, Versions } from './discussion';
+import { ProposalBench } from './proposal-bench';
 import { ProposalActions } from './proposal-actions';
 import { ProbableCause, Record, Trial, WhatBinds, WhatChanges, WhatToExpect, Why } from './proposal-cards';
 import classes from './proposal-page.module.css';
 import { ProposalSteps } from './proposal-steps';
-import { proposalQuery } from './proposals-api';
+import { proposalQuery, saveReport } from './proposals-api';
 
 export function Component() {
   const id = Number(useParams().id);
   const { data: proposal, error, isPending, refetch } = useQuery(proposalQuery(id));
+  const report = useMutation({ mutationFn: saveReport });
   if (error && !proposal)
     return <ErrorState error={error} what={`Proposal ${id}`} onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[70, 60, 420]} />;
@@ -47,6 +50,14 @@ export function Component() {
           {alteredBy && ` by ${alteredBy.name}`}
         </span>
         <span style={{ flex: 1 }} />
+        <Button
+          variant="default"
+          className="no-print"
+          loading={report.isPending}
+          onClick={() => report.mutate(id)}
+        >
+          PDF
+        </Button>
         <ProposalActions proposal={proposal} />
       </div>
       <ProposalSteps proposal={proposal} />
@@ -80,10 +91,12 @@ export function Component() {
           {proposal.binding && <WhatBinds binding={proposal.binding} />}
         </div>
         <div className={classes.column}>
-          {proposal.actions.includes('alter') && <Alteration key={version} proposal={proposal} />}
+          <Discussion proposal={proposal} />
+          <Versions proposal={proposal} />
           <Record proposal={proposal} />
         </div>
       </div>
+      {proposal.actions.includes('alter') && <ProposalBench proposal={proposal} />}
     </>
   );
 }

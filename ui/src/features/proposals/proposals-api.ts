@@ -1,5 +1,6 @@
 import { queryOptions } from '@tanstack/react-query';
 import { answer, client, type Schemas } from '../../api/client';
+import { saveFile } from '../../api/download';
 import { queryClient } from '../../api/query-client';
 
 export type Proposal = Schemas['ProposalDto'];
@@ -71,4 +72,12 @@ export async function alter({ id, version }: Proposal, body: Schemas['AlterPropo
   );
   queryClient.setQueryData(['proposal', id], proposal);
   return proposal;
+}
+
+/** The proposal on paper. */
+export async function saveReport(id: number): Promise<void> {
+  const pdf = await answer(
+    client.GET('/api/v1/proposals/{id}/report.pdf', { params: { path: { id } }, parseAs: 'blob' }),
+  );
+  saveFile(pdf as unknown as Blob, `proposal-${id}.pdf`);
 }
