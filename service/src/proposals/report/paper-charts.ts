@@ -45,8 +45,12 @@ export function drawLines(
   const reach = [Math.min(...ys) * 1.05, Math.max(...ys) * 1.05] as const;
   const px = (v: number): number => left + (width * (v - span[0])) / (span[1] - span[0] || 1);
   const py = (v: number): number => top + height - (height * (v - reach[0])) / (reach[1] - reach[0] || 1);
-  paper.fontSize(LABEL).fillColor(SOFT).text(`${title}, ${unit}`, box.x, box.y, { lineBreak: false });
-  const yStep = niceStep(reach[1] - reach[0], 4);
+  paper
+    .font('regular')
+    .fontSize(LABEL)
+    .fillColor(SOFT)
+    .text(`${title}, ${unit}`, box.x, box.y, { lineBreak: false });
+  const yStep = niceStep(reach[1] - reach[0], 6);
   for (let v = Math.ceil(reach[0] / yStep) * yStep; v <= reach[1]; v += yStep) {
     paper
       .lineWidth(0.4)
@@ -118,7 +122,7 @@ export function drawDrift(
     .rect(px(1 / g), py(p), px(g) - px(1 / g), py(1 / p) - py(p))
     .stroke();
   paper.circle(px(drift.gainRatio), py(drift.poleRatio), 3.2).fillColor(INK).fill();
-  paper.fontSize(LABEL).fillColor(SOFT);
+  paper.font('regular').fontSize(LABEL).fillColor(SOFT);
   paper.text('K / K at baseline', left, box.y + side + 4, { width: side, align: 'center', lineBreak: false });
   paper.save().rotate(-90, { origin: [box.x + 12, box.y + side] });
   paper.text('α / α at baseline', box.x + 12, box.y + side, {
@@ -155,15 +159,16 @@ export function drawRuler(
       .rect(px(ruler.allowed.low), bar - 3, px(ruler.allowed.high) - px(ruler.allowed.low), 6)
       .fillColor('#8F9AA5')
       .fill();
-  const ends: number[] = [];
-  paper.fontSize(LABEL);
-  for (const { name, lambda } of [...ruler.limits].sort((a, b) => a.lambda - b.lambda)) {
+  // From right to left, so that no tick runs through the name of another.
+  const starts: number[] = [];
+  paper.font('regular').fontSize(LABEL);
+  for (const { name, lambda } of [...ruler.limits].sort((a, b) => b.lambda - a.lambda)) {
     const text = `${name} ${lambda.toPrecision(3)}`;
     const width = paper.widthOfString(text) + 8;
     const start = Math.min(px(lambda), box.x + box.width - width);
-    let row = ends.findIndex((end) => end <= start);
-    if (row < 0) row = ends.length;
-    ends[row] = start + width;
+    let row = starts.findIndex((next) => start + width <= next);
+    if (row < 0) row = starts.length;
+    starts[row] = start;
     const y = bar - 14 - row * 10;
     paper
       .lineWidth(0.8)

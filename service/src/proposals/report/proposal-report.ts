@@ -120,8 +120,9 @@ abstract class Side {
       .font(bold ? 'bold' : 'regular')
       .fontSize(9.5)
       .fillColor(soft ? SOFT : INK);
-    const height = Math.min(most, this.paper.heightOfString(text, { width }));
-    this.paper.text(text, x, this.y, { width, height: height + 0.5, ellipsis: true });
+    const unbroken = text.replaceAll(' %', '\u00a0%');
+    const height = Math.min(most, this.paper.heightOfString(unbroken, { width }));
+    this.paper.text(unbroken, x, this.y, { width, height: height + 0.5, ellipsis: true });
     this.y += height + 4;
   }
 
@@ -333,7 +334,7 @@ class SecondSide extends Side {
       this.paragraph(binding.reason, 28);
       drawRuler(
         paper,
-        { x: MARGIN, y: this.y, width: INNER, height: 78 },
+        { x: MARGIN, y: this.y, width: INNER, height: 66 },
         {
           allowed: binding.allowed,
           lambda: binding.lambda,
@@ -342,7 +343,7 @@ class SecondSide extends Side {
           ),
         },
       );
-      this.y += 80;
+      this.y += 70;
       if (binding.waysOut.length > 0) this.paragraph(`Other ways: ${binding.waysOut.join('; ')}.`, 28);
     }
     if (trial) {
