@@ -48,6 +48,12 @@ export default async function bench(): Promise<BenchRecord[]> {
       'ms',
       'holds the beats of messages (100 ms), checkpoint (1 s) and page (0.5 s)',
     ),
+    plain(
+      'longest checkpoint',
+      service.longestCheckpointMs,
+      'ms',
+      'since the start: it holds the first one, which writes every part of every axis',
+    ),
     plain('most that the load itself was late', service.lateMs, 'ms'),
   ];
   for (const axes of SCALE) {

@@ -1,6 +1,7 @@
 import { NestFactory } from '@nestjs/core';
 import type { NestExpressApplication } from '@nestjs/platform-express';
 import { AppModule } from './app.module.js';
+import { damageOf } from './database/damage.js';
 import { InvitationService } from './people/invitation.service.js';
 import { readSettings, SettingsError, type Settings } from './settings.js';
 import { setup } from './setup.js';
@@ -8,6 +9,7 @@ import { setup } from './setup.js';
 /** Exit codes that `npm start` turns into plain words. */
 const BAD_SETTINGS = 2;
 const PORT_TAKEN = 3;
+const BAD_DATABASE = 4;
 
 function settingsOrExit(): Settings {
   try {
@@ -20,6 +22,11 @@ function settingsOrExit(): Settings {
 }
 
 const settings = settingsOrExit();
+const damage = damageOf(settings.DATABASE, settings.DATA_DIR);
+if (damage !== null) {
+  console.error(damage);
+  process.exit(BAD_DATABASE);
+}
 const app = await NestFactory.create<NestExpressApplication>(AppModule.with(settings), {
   logger: ['error', 'warn', 'log'],
 });

@@ -2,6 +2,7 @@ import { Global, Module } from '@nestjs/common';
 import { ConfigService } from '@nestjs/config';
 import { TypeOrmModule } from '@nestjs/typeorm';
 import type { Settings } from '../settings.js';
+import { BackupService } from './backup.service.js';
 import { dataSourceOptions } from './data-source.js';
 import { Transactions } from './transactions.js';
 
@@ -14,7 +15,7 @@ import { Transactions } from './transactions.js';
         dataSourceOptions(config.get('DATABASE', { infer: true })),
     }),
   ],
-  providers: [Transactions],
+  providers: [Transactions, BackupService],
   exports: [Transactions],
 })
 export class DatabaseModule {}

@@ -1,0 +1,85 @@
+import Database from 'better-sqlite3';
+import type { DataSource } from 'typeorm';
+import { afterAll, beforeAll, beforeEach, expect, test } from 'vitest';
+import { ESTIMATES_WHOLE, KEPT, RetentionService } from '../../src/indicators/retention.service.js';
+
+const NOW = 1_764_600_000;
+const HOUR = 3_600;
+
+let database: Database.Database;
+let retention: RetentionService;
+
+beforeAll(() => {
+  database = new Database(':memory:');
+  database.exec(`CREATE TABLE "axis" ("id" integer PRIMARY KEY)`);
+  for (const table of Object.keys(KEPT))
+    database.exec(
+      `CREATE TABLE "${table}" ("axisId" integer, "t" real, PRIMARY KEY ("axisId", "t")) WITHOUT ROWID`,
+    );
+  database.exec(`INSERT INTO "axis" VALUES (3), (9)`);
+});
+afterAll(() => database.close());
+
+beforeEach(() => {
+  for (const table of Object.keys(KEPT)) database.exec(`DELETE FROM "${table}"`);
+  retention = new RetentionService({ driver: { databaseConnection: database } } as unknown as DataSource);
+});
+
+const put = (table: string, axisId: number, times: number[]): void => {
+  const insert = database.prepare(`INSERT INTO "${table}" VALUES (?, ?)`);
+  for (const t of times) insert.run(axisId, t);
+};
+const left = (table: string, axisId: number): number[] =>
+  database
+    .prepare(`SELECT "t" FROM "${table}" WHERE "axisId" = ? ORDER BY "t"`)
+    .pluck()
+    .all(axisId) as number[];
+const steps = (count: number, now = NOW): void => {
+  for (let k = 0; k < count; k++) retention.step(now);
+};
+
+test.each(Object.entries(KEPT))('%s: rows go when they are older than %d s, on every axis', (table, kept) => {
+  // The last of its hour, so that thinning has no part in it.
+  const old = [NOW - kept - 2 * HOUR, NOW - kept - 1];
+  const young = [NOW - kept, NOW - kept + HOUR, NOW - 1];
+  for (const axisId of [3, 9]) put(table, axisId, [...old, ...young]);
+  steps(3);
+  for (const axisId of [3, 9]) expect(left(table, axisId)).toEqual(young);
+});
+
+test('a backlog goes in steps of 500 rows, the oldest first', () => {
+  put(
+    'indicator_second',
+    3,
+    Array.from({ length: 1_200 }, (_, k) => NOW - 50_000 + k),
+  );
+  steps(1);
+  expect(left('indicator_second', 3)).toHaveLength(700);
+  expect(left('indicator_second', 3)[0]).toBe(NOW - 50_000 + 500);
+  steps(6); // every third step finds no further axis and starts again
+  expect(left('indicator_second', 3)).toEqual([]);
+});
+
+test('of estimates older than a day the last of each hour stays; younger ones all stay', () => {
+  const day = Math.floor((NOW - ESTIMATES_WHOLE) / HOUR) * HOUR;
+  const old = [-7_200, -7_199.5, -3_700, -3_600, -1_800.25, -0.5].map((dt) => day + dt);
+  const young = [0, 1.5, 2, 3_600, 3_601].map((dt) => day + dt);
+  for (const axisId of [3, 9]) put('plant_estimate_row', axisId, [...old, ...young]);
+  // Three years in steps of ten days, two axes and a turn.
+  steps(3 * 112);
+  for (const axisId of [3, 9])
+    expect(left('plant_estimate_row', axisId)).toEqual([day - 3_700, day - 0.5, ...young]);
+  // An hour later the next hour is thinned too.
+  steps(3, NOW + HOUR);
+  expect(left('plant_estimate_row', 3)).toEqual([day - 3_700, day - 0.5, day + 2, day + 3_600, day + 3_601]);
+});
+
+test('inside somebody else’s transaction nothing is deleted', () => {
+  put('indicator_second', 3, [1]);
+  database.exec('BEGIN');
+  steps(3);
+  database.exec('COMMIT');
+  expect(left('indicator_second', 3)).toEqual([1]);
+  steps(3);
+  expect(left('indicator_second', 3)).toEqual([]);
+});
