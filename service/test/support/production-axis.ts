@@ -19,6 +19,9 @@ const STAND = 0.4;
 export class ProductionAxis {
   /** Times the commissioned mass. */
   load = 1;
+  /** Times the viscous drag, and times the actuating force, of the machine as it was commissioned. */
+  drag = 1;
+  strength = 1;
   gains: Gains;
   private readonly viscous: number;
   private readonly force: number;
@@ -106,7 +109,7 @@ export class ProductionAxis {
   private advance(u: number, T: number): void {
     const h = T / SUBSTEPS;
     for (let s = 0; s < SUBSTEPS; s++) {
-      const push = this.force * u - this.viscous * this.v;
+      const push = this.strength * this.force * u - this.drag * this.viscous * this.v;
       if (this.v === 0 && Math.abs(push) <= this.friction) continue;
       const way = this.v !== 0 ? Math.sign(this.v) : Math.sign(push);
       const next = this.v + (h * (push - this.friction * way)) / this.load;
