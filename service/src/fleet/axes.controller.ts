@@ -3,6 +3,7 @@ import {
   Body,
   Controller,
   Get,
+  Header,
   HttpCode,
   Param,
   ParseIntPipe,
@@ -10,7 +11,7 @@ import {
   Post,
   Query,
 } from '@nestjs/common';
-import { ApiBearerAuth, ApiCreatedResponse, ApiOkResponse, ApiTags } from '@nestjs/swagger';
+import { ApiBearerAuth, ApiCreatedResponse, ApiOkResponse, ApiProduces, ApiTags } from '@nestjs/swagger';
 import { CurrentUser } from '../auth/current-user.decorator.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
@@ -39,6 +40,7 @@ import {
 } from './dto/history.dto.js';
 import { SiteQuery } from './dto/site.dto.js';
 import { HistoryService } from './history.service.js';
+import { tuningsCsv } from './tunings-csv.js';
 import { stripPoint } from './strip-point.js';
 
 @ApiTags('fleet')
@@ -143,6 +145,18 @@ export class AxesController {
     @CurrentUser() user: SignedInUser,
   ): Promise<Page<IndicatorPointDto>> {
     return this.history.indicators(await this.axes.get(id, user), query);
+  }
+
+  /** Every tuning revision as CSV. */
+  @Get(':id/tunings.csv')
+  @ApiProduces('text/csv')
+  @ApiOkResponse({ schema: { type: 'string' } })
+  @Header('Content-Type', 'text/csv; charset=utf-8')
+  async tuningsAsCsv(
+    @Param('id', ParseIntPipe) id: number,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<string> {
+    return tuningsCsv(await this.history.tunings(await this.axes.get(id, user)));
   }
 
   @Get(':id/tunings')

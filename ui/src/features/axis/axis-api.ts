@@ -1,5 +1,6 @@
 import { queryOptions } from '@tanstack/react-query';
 import { answer, client, type Schemas } from '../../api/client';
+import { saveFile } from '../../api/download';
 import type { Axis } from '../fleet/fleet-api';
 
 export const axisQuery = (id: number) =>
@@ -63,3 +64,20 @@ export const startProposal = (axisId: number) =>
 
 export const confirmBaseline = (id: number) =>
   answer(client.POST('/api/v1/axes/{id}/baseline', { params: { path: { id } }, body: { confirm: true } }));
+
+export type Tuning = Schemas['TuningRevisionDto'];
+
+/** The gains of a former revision as a new proposal: they take the same way as any others. */
+export const proposeAgain = (axisId: number, { revision, structure, feedForward, gains }: Tuning) =>
+  answer(
+    client.POST('/api/v1/proposals', {
+      body: { axisId, structure, feedForward, gains, note: `As revision ${revision}` },
+    }),
+  );
+
+export async function saveTuningsCsv({ id, tag }: { id: number; tag: string }): Promise<void> {
+  const csv = await answer(
+    client.GET('/api/v1/axes/{id}/tunings.csv', { params: { path: { id } }, parseAs: 'blob' }),
+  );
+  saveFile(csv as unknown as Blob, `${tag} tunings.csv`);
+}
