@@ -9,6 +9,7 @@ import { fileURLToPath } from 'node:url';
 import { AlertsModule } from './alerts/alerts.module.js';
 import { AuditModule } from './audit/audit.module.js';
 import { AuthModule } from './auth/auth.module.js';
+import { CapturesModule } from './captures/captures.module.js';
 import { DatabaseModule } from './database/database.module.js';
 import { DemoModule } from './demo/demo.module.js';
 import { DesignModule } from './design/design.module.js';
@@ -57,6 +58,7 @@ export class AppModule {
         IndicatorsModule,
         TelemetryModule,
         AlertsModule,
+        CapturesModule,
         ProposalsModule,
         RotaModule,
         NotificationsModule,

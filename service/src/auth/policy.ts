@@ -20,6 +20,7 @@ export const POLICY = {
   'axis.register': ENGINEER_AND_UP,
   'axis.change': ENGINEER_AND_UP,
   'axis.baseline': ENGINEER_AND_UP,
+  'capture.take': TECHNICIAN_AND_UP,
   'machine.register': ENGINEER_AND_UP,
   'proposal.work': ENGINEER_AND_UP,
   'proposal.discuss': ROLES,

@@ -4,6 +4,7 @@ import { AlertRule } from '../alerts/alert-rule.entity.js';
 import { Alert, AlertEvent } from '../alerts/alert.entity.js';
 import { AuditEntry } from '../audit/audit-entry.entity.js';
 import { RefreshToken } from '../auth/refresh-token.entity.js';
+import { Capture } from '../captures/capture.entity.js';
 import { Axis } from '../fleet/axis.entity.js';
 import { Gateway } from '../fleet/gateway.entity.js';
 import { Machine } from '../fleet/machine.entity.js';
@@ -24,6 +25,7 @@ import { RotaOverride } from '../rota/rota-override.entity.js';
 import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
 import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
+import { Captures1764634000000 } from './migrations/1764634000000-captures.js';
 import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpoint-parts.js';
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
@@ -56,6 +58,7 @@ export const ENTITIES = [
   RotaOverride,
   HandoverNote,
   Mail,
+  Capture,
 ];
 
 /** The one SQLite file: write-ahead log, foreign keys on, schema by migrations only. */
@@ -75,6 +78,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
     migrations: [
       Fleet1764547200000,
       People1764547201000,
+      Captures1764634000000,
       CheckpointParts1764635000100,
       ChangesAtMachines1764637000100,
       ProposalVersions1764637000200,

@@ -365,19 +365,25 @@ export class AxesService {
       throw new ConflictException(
         'There is no usable estimate of this axis yet; let it make some production moves',
       );
+    return this.takeBaseline(axis, estimate, user);
+  }
+
+  /** Makes an estimate the baseline of an axis on which the person may do so; drift counts from it anew. */
+  async takeBaseline(axis: Axis, estimate: PlantEstimate, user: SignedInUser, note?: string): Promise<Axis> {
     await this.transactions.run(async (manager) => {
-      await manager.update(Axis, id, { baseline: baselineOf(estimate), baselineAt: new Date() });
+      await manager.update(Axis, axis.id, { baseline: baselineOf(estimate), baselineAt: new Date() });
       await this.audit.record(manager, {
         user,
         action: 'axis.baseline-confirmed',
-        subject: { type: 'axis', id },
+        subject: { type: 'axis', id: axis.id },
         siteId: axis.siteId,
+        ...(note && { note }),
         before: axis.baseline && { ...axis.baseline },
         after: { ...baselineOf(estimate) },
       });
     });
     this.changed(axis);
-    return this.get(id, user);
+    return this.get(axis.id, user);
   }
 
   private changed({ id, siteId }: Axis): void {

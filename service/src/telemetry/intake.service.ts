@@ -12,6 +12,7 @@ import { AxisCheckpoint } from './axis-checkpoint.entity.js';
 import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
 import { CheckpointWriter, type WrittenAxis } from './checkpoint-writer.js';
 import { decodeFrame, FrameError } from './frame-codec.js';
+import { SampleRecorder } from './sample-recorder.js';
 
 /** How far a gateway has got; in memory it runs ahead of what is durable. */
 export interface GatewayProgress {
@@ -63,6 +64,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
     private readonly emitter: EventEmitter2,
+    private readonly recorder: SampleRecorder,
   ) {}
 
   async onApplicationBootstrap(): Promise<void> {
@@ -167,6 +169,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
         const block = frame.blocks[b]!;
         const pipeline = pipelines[b]!;
         pipeline.push(block);
+        this.recorder.push(pipeline.facts.id, block);
         samples += block.target.length;
         if (this.traced.has(pipeline.facts.id))
           tell(this.emitter, 'samples.received', { axisId: pipeline.facts.id, block });

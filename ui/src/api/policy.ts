@@ -11,6 +11,7 @@ const POLICY = {
   'alert.shelve': TECHNICIAN_AND_UP,
   'axis.maintenance': TECHNICIAN_AND_UP,
   'axis.baseline': ENGINEER_AND_UP,
+  'capture.take': TECHNICIAN_AND_UP,
   'proposal.work': ENGINEER_AND_UP,
   'checklist.change': ['administrator'],
   'rota.change': ['administrator'],

@@ -580,6 +580,134 @@ export interface paths {
         patch: operations["AlertRulesController_change"];
         trace?: never;
     };
+    "/api/v1/captures": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CapturesController_list"];
+        put?: never;
+        post: operations["CapturesController_upload"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CapturesController_get"];
+        put?: never;
+        post?: never;
+        delete: operations["CapturesController_remove"];
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}/trace": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CapturesController_trace"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}/trace.csv": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CapturesController_traceCsv"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}/result.csv": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CapturesController_resultCsv"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}/cancel": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["CapturesController_cancel"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/captures/{id}/baseline": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["CapturesController_baseline"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/axes/{id}/captures": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["CapturesController_record"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/proposals": {
         parameters: {
             query?: never;
@@ -1658,6 +1786,96 @@ export interface components {
             /** @enum {string} */
             priority?: "high" | "medium" | "low";
             mailAfter?: number;
+        };
+        UploadCaptureDto: {
+            /** Format: binary */
+            file: string;
+            /** @description The axis that it was taken from */
+            axisId?: number;
+            /** @description The site it belongs to, without an axis; the person’s first where not given */
+            siteId?: number;
+            /** @description JSON: { time, target?, position, output, units? } */
+            mapping: string;
+        };
+        CaptureIdDto: {
+            id: number;
+        };
+        IdentificationDto: {
+            /** @description K, (mm/s)/%; null when it cannot be said */
+            gain: components["schemas"]["IntervalDto"] | null;
+            /** @description α, rad/s */
+            pole: components["schemas"]["IntervalDto"] | null;
+            gainForward?: components["schemas"]["IntervalDto"];
+            gainReverse?: components["schemas"]["IntervalDto"];
+            /** @description f, % */
+            coulomb: components["schemas"]["IntervalDto"] | null;
+            /** @description b, % */
+            bias: components["schemas"]["IntervalDto"] | null;
+            /** @description τ, s */
+            deadTime: number | null;
+            /** @description 100·(1 − ‖v − v̂‖/‖v − v̄‖) of the simulated velocity */
+            fitPct: number | null;
+            /** @description s */
+            movingSeconds: number;
+            /** @enum {string} */
+            verdict: "usable" | "doubtful" | "unidentifiable";
+            remarks: string[];
+        };
+        CaptureDto: {
+            id: number;
+            siteId: number;
+            axisId: number | null;
+            axisTag: string | null;
+            timeZone: string;
+            /** @enum {string} */
+            source: "upload" | "on demand" | "alert";
+            /** @description The alert it was kept around */
+            alertId: number | null;
+            /** Format: date-time */
+            createdAt: string;
+            /** @description null: kept by the service */
+            createdBy: string | null;
+            fileName: string;
+            /** @enum {string} */
+            status: "queued" | "running" | "done" | "failed";
+            /** @description Its samples are still coming in */
+            recording: boolean;
+            /** @description Why it failed */
+            problem?: string;
+            samples: number | null;
+            /** @description s */
+            sampleTime: number | null;
+            /** @description s */
+            duration: number | null;
+            identification?: components["schemas"]["IdentificationDto"];
+        };
+        CapturePageDto: {
+            items: components["schemas"]["CaptureDto"][];
+            nextCursor: string | null;
+        };
+        CaptureTraceDto: {
+            /** @description s */
+            time: number[];
+            /** @description mm */
+            target: (number | null)[];
+            /** @description mm */
+            position: (number | null)[];
+            /** @description % */
+            output: (number | null)[];
+            /** @description Measured, mm/s */
+            velocity: (number | null)[];
+            /** @description Of the identified plant, mm/s */
+            simulatedVelocity: (number | null)[];
+            /** @description Measured less simulated position, mm */
+            residual: (number | null)[];
+        };
+        CaptureBaselineDto: {
+            /** @description The axis, where the capture names none */
+            axisId?: number;
+        };
+        RecordCaptureDto: {
+            /** @description s */
+            seconds: number;
         };
         AlternativeCauseDto: {
             /** @enum {string} */
@@ -3434,6 +3652,227 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["AlertRuleDto"];
+                };
+            };
+        };
+    };
+    CapturesController_list: {
+        parameters: {
+            query?: {
+                limit?: number;
+                /** @description From the former answer’s nextCursor */
+                cursor?: string;
+                axisId?: number;
+            };
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CapturePageDto"];
+                };
+            };
+        };
+    };
+    CapturesController_upload: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "multipart/form-data": components["schemas"]["UploadCaptureDto"];
+            };
+        };
+        responses: {
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CaptureIdDto"];
+                };
+            };
+        };
+    };
+    CapturesController_get: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CaptureDto"];
+                };
+            };
+        };
+    };
+    CapturesController_remove: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            204: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    CapturesController_trace: {
+        parameters: {
+            query?: {
+                points?: number;
+            };
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CaptureTraceDto"];
+                };
+            };
+        };
+    };
+    CapturesController_traceCsv: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/csv": string;
+                };
+            };
+        };
+    };
+    CapturesController_resultCsv: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/csv": string;
+                };
+            };
+        };
+    };
+    CapturesController_cancel: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CaptureDto"];
+                };
+            };
+        };
+    };
+    CapturesController_baseline: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["CaptureBaselineDto"];
+            };
+        };
+        responses: {
+            204: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    CapturesController_record: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["RecordCaptureDto"];
+            };
+        };
+        responses: {
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["CaptureIdDto"];
                 };
             };
         };
