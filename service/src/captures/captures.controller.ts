@@ -20,6 +20,7 @@ import {
   ApiBody,
   ApiConsumes,
   ApiCreatedResponse,
+  ApiExtraModels,
   ApiNoContentResponse,
   ApiOkResponse,
   ApiProduces,
@@ -53,6 +54,7 @@ import { thinnedIndices, TRACE_COLUMNS, type CaptureTrace } from './trace-file.j
 const CSV = 'text/csv';
 
 @ApiTags('Captures')
+@ApiExtraModels(CaptureMappingDto)
 @ApiBearerAuth()
 @Controller()
 export class CapturesController {

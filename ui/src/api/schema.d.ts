@@ -1787,6 +1787,30 @@ export interface components {
             priority?: "high" | "medium" | "low";
             mailAfter?: number;
         };
+        UnitsDto: {
+            /**
+             * @default s
+             * @enum {string}
+             */
+            time?: "s" | "ms" | "us";
+            /**
+             * @default mm
+             * @enum {string}
+             */
+            position?: "mm" | "um" | "m" | "in";
+            /**
+             * @default percent
+             * @enum {string}
+             */
+            output?: "percent" | "fraction" | "volts10";
+        };
+        CaptureMappingDto: {
+            time: string;
+            target?: string;
+            position: string;
+            output: string;
+            units?: components["schemas"]["UnitsDto"];
+        };
         UploadCaptureDto: {
             /** Format: binary */
             file: string;

@@ -20,6 +20,7 @@ export function Layout() {
     { to: '/alerts', label: 'Alerts', count: summary?.unacknowledgedAlerts ?? 0 },
     { to: '/proposals', label: 'Proposals', count: summary?.openProposals ?? 0 },
     { to: '/rota', label: 'Rota', count: 0 },
+    { to: '/captures', label: 'Captures', count: 0 },
     ...(administrator ? [{ to: '/admin/people', label: 'People', count: 0 }] : []),
     { to: '/admin/mail', label: 'Mail', count: 0 },
     ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record', count: 0 }] : []),

@@ -30,6 +30,8 @@ export const router = createBrowserRouter([
                     lazy: () => import('../features/proposals/checklist-page'),
                   },
                   { path: '/proposals/:id', lazy: () => import('../features/proposals/proposal-page') },
+                  { path: '/captures', lazy: () => import('../features/captures/captures-page') },
+                  { path: '/captures/:id', lazy: () => import('../features/captures/capture-page') },
                   { path: '/rota', lazy: () => import('../features/rota/rota-page') },
                   { path: '/admin/people', lazy: () => import('../features/people/people-page') },
                   { path: '/admin/mail', lazy: () => import('../features/mail/mail-page') },

@@ -4,6 +4,7 @@ import { roundMarks, TableView, useChartWidth, useReading } from './chart-frame'
 export interface Series {
   label: string;
   time: readonly number[];
+  /** NaN where there is nothing: a hole in the line. */
   values: readonly number[];
   /** Before dashed, after solid, everywhere. */
   dashed?: boolean;
@@ -40,18 +41,24 @@ export function MoveChart({
 }) {
   const describedBy = useId();
   const { ref, width } = useChartWidth();
-  const values = series.flatMap((one) => [...one.values]);
+  const values = series.flatMap((one) => one.values.filter((v) => !Number.isNaN(v)));
   const largest = Math.max(1e-9, limit?.value ?? 0, ...values.map(Math.abs)) * 1.1;
   const low = Math.min(0, ...values) < 0 || limit ? -largest : 0;
   const span = Math.max(1e-9, ...series.map(({ time }) => time.at(-1) ?? 0));
   const x = (t: number): number => LEFT + ((width - LEFT - RIGHT) * t) / span;
   const y = (v: number): number => TOP + (height - TOP - BOTTOM) * (1 - (v - low) / (largest - low));
   const path = ({ time, values: v }: Series): string =>
-    time.map((t, i) => `${i ? 'L' : 'M'}${x(t).toFixed(1)} ${y(v[i]!).toFixed(1)}`).join('');
+    time
+      .map((t, i) =>
+        Number.isNaN(v[i]!)
+          ? ''
+          : `${i && !Number.isNaN(v[i - 1]!) ? 'L' : 'M'}${x(t).toFixed(1)} ${y(v[i]!).toFixed(1)}`,
+      )
+      .join('');
   const read = (one: Series, t: number): string => {
     const i = one.time.findIndex((time) => time >= t);
     const value = one.values[i < 0 ? one.values.length - 1 : i] ?? 0;
-    return value.toFixed(digits + 1).replace('-', '−');
+    return Number.isNaN(value) ? 'none' : value.toFixed(digits + 1).replace('-', '−');
   };
   const { at, reading } = useReading({
     count: PLACES,

@@ -17,6 +17,7 @@ import { StateWord } from '../../components/state-glyph';
 import { STATE_TINT } from '../../components/states';
 import type { Axis } from '../fleet/fleet-api';
 import { AxisActions } from './axis-actions';
+import { AxisCaptures } from './axis-captures';
 import { axisQuery, estimatesQuery, SPANS, type Span } from './axis-api';
 import classes from './axis-page.module.css';
 import { LambdaCard } from './lambda-card';
@@ -99,6 +100,7 @@ function AxisView({ axis }: { axis: Axis }) {
           </div>
           <WhatHappened axis={axis} />
           <Tunings axis={axis} />
+          <AxisCaptures axis={axis} />
         </div>
         <div className={classes.present}>
           <PlantCard axis={axis} tile={tile} />
