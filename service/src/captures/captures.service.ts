@@ -188,5 +188,10 @@ export class CapturesService {
 /** The last part of a name without control signs, at most 120 long. */
 function shownName(name: string): string {
   const last = name.split(/[/\\]/).at(-1) ?? '';
-  return last.replace(/\p{Cc}/gu, '').trim().slice(0, 120) || 'capture.csv';
+  return (
+    last
+      .replace(/\p{Cc}/gu, '')
+      .trim()
+      .slice(0, 120) || 'capture.csv'
+  );
 }
