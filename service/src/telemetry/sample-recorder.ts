@@ -35,6 +35,8 @@ export class SampleRecorder {
       output: output.slice(),
     };
     const past = this.kept.get(axisId) ?? [];
+    // A clock that went back, or a time from the future before: what is older says nothing about now.
+    if (past.length > 0 && past.at(-1)!.startUs >= startUs) past.length = 0;
     past.push(block);
     while (past[0]!.startUs < startUs - KEPT_SECONDS * 1e6) past.shift();
     this.kept.set(axisId, past);

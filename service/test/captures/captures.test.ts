@@ -361,4 +361,12 @@ test('samples around an alert and on demand are kept with what was before', asyn
     21, 22, 23, 24, 25, 26, 27, 28, 29, 30, 31, 32, 33, 34, 35,
   ]);
   expect((await demand).map(({ startUs }) => startUs / 1e6)).toEqual([31, 32]);
+  // A block from the future does not keep the past for ever.
+  push(1e6);
+  for (let second = 41; second <= 80; second++) push(second);
+  const later = recorder.record(7, 60, 1, 60);
+  push(81);
+  expect((await later).map(({ startUs }) => startUs / 1e6)).toEqual([
+    69, 70, 71, 72, 73, 74, 75, 76, 77, 78, 79, 80, 81,
+  ]);
 });

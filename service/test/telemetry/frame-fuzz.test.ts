@@ -6,6 +6,7 @@ import type { Axis } from '../../src/fleet/axis.entity.js';
 import type { Gateway } from '../../src/fleet/gateway.entity.js';
 import { encodeFrame, type FrameBlock } from '../../src/telemetry/frame-codec.js';
 import { IntakeService } from '../../src/telemetry/intake.service.js';
+import { SampleRecorder } from '../../src/telemetry/sample-recorder.js';
 import { randomSource } from '../identification/test-axis.js';
 
 const MESSAGES = 100_000;
@@ -35,7 +36,7 @@ async function outcomes(): Promise<Map<string, number>> {
 }
 
 test('100 000 spoilt messages: each is taken or refused by name and counted, and a neighbour sees nothing of them', async () => {
-  const intake = new IntakeService({} as DataSource, new EventEmitter2());
+  const intake = new IntakeService({} as DataSource, new EventEmitter2(), new SampleRecorder());
   const random = randomSource(5);
   const below = (n: number): number => Math.floor(n * random());
   const block = (axisIndex: number, sequence: number): FrameBlock => ({
@@ -63,7 +64,7 @@ test('100 000 spoilt messages: each is taken or refused by name and counted, and
   const hostile = intake.progress(gateway(1));
   const neighbour = intake.progress(gateway(2));
   // The same frames to an intake of its own, without the hostile gateway.
-  const alone = new IntakeService({} as DataSource, new EventEmitter2());
+  const alone = new IntakeService({} as DataSource, new EventEmitter2(), new SampleRecorder());
   alone.pipelineFor(axis(3));
   const undisturbed = alone.progress(gateway(2));
 
