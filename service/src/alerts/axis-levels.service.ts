@@ -47,7 +47,8 @@ export class AxisLevelsService {
       outputActivity: minute?.outputActivity ?? null,
       dominantHz: minute?.dominantHz ?? null,
       silence,
-      trialWorse: trialVerdict === null ? null : trialVerdict === 'worse' ? 1 : 0,
+      // Without a trial nothing is worse: what one raised clears when it ends.
+      trialWorse: trialVerdict === 'worse' ? 1 : 0,
       tolerances: axis.tolerances,
       cause: cause?.sentence ?? null,
       adviceInspect: cause?.advice === 'inspect first',

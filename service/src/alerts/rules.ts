@@ -50,8 +50,8 @@ export interface AxisLevels {
   dominantHz: number | null;
   /** s since the last sample arrived */
   silence: number | null;
-  /** 1 when the trial's verdict is "worse", else 0; null without a trial */
-  trialWorse: number | null;
+  /** 1 while there is a trial whose verdict is "worse", else 0 */
+  trialWorse: number;
   tolerances: { followingError: number; saturatedPct: number };
   /** What the evidence looks like, in a sentence; null when nothing is decided */
   cause: string | null;
