@@ -103,3 +103,18 @@ export class Capture {
   @Column({ type: 'simple-json', nullable: true })
   result: CaptureResult | null;
 }
+
+/** A capture as it begins: waiting, its samples not yet on disk, nothing known of them. */
+export const newCapture = (
+  of: Pick<Capture, 'siteId' | 'axisId' | 'source' | 'alertId' | 'createdById' | 'fileName' | 'mapping'>,
+) => ({
+  ...of,
+  createdAt: new Date(),
+  status: 'queued' as const,
+  problem: null,
+  recorded: false,
+  samples: null,
+  sampleTime: null,
+  duration: null,
+  result: null,
+});

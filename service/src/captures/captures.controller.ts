@@ -27,13 +27,14 @@ import {
   ApiTags,
 } from '@nestjs/swagger';
 import { plainToInstance } from 'class-transformer';
-import { validate, type ValidationError } from 'class-validator';
+import { validate } from 'class-validator';
 import type { Response } from 'express';
 import { rm } from 'node:fs/promises';
 import { Readable } from 'node:stream';
 import { CurrentUser } from '../auth/current-user.decorator.js';
 import type { SignedInUser } from '../auth/signed-in-user.js';
 import { pageOf } from '../page.js';
+import { fieldProblems } from '../problem.filter.js';
 import type { Capture } from './capture.entity.js';
 import { CapturesService } from './captures.service.js';
 import {
@@ -203,20 +204,8 @@ async function mappingOf(json: string): Promise<CaptureMappingDto> {
     throw new BadRequestException({ errors: [{ path: 'mapping', message: 'must be an object' }] });
   const mapping = plainToInstance(CaptureMappingDto, value);
   const errors = await validate(mapping, { whitelist: true, forbidNonWhitelisted: true });
-  if (errors.length > 0)
-    throw new BadRequestException({ errors: errors.flatMap((error) => said(error, 'mapping')) });
+  if (errors.length > 0) throw new BadRequestException({ errors: fieldProblems(errors, 'mapping') });
   return mapping;
-}
-
-function said(
-  { property, constraints, children = [] }: ValidationError,
-  above: string,
-): { path: string; message: string }[] {
-  const path = `${above}.${property}`;
-  return [
-    ...Object.values(constraints ?? {}).map((message) => ({ path, message })),
-    ...children.flatMap((child) => said(child, path)),
-  ];
 }
 
 function captureDto(capture: Capture): CaptureDto {

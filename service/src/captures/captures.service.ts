@@ -10,7 +10,7 @@ import type { Axis } from '../fleet/axis.entity.js';
 import { AxesService } from '../fleet/axes.service.js';
 import { CaptureFiles } from './capture-files.js';
 import { CaptureQueue } from './capture-queue.service.js';
-import { Capture, type CaptureMapping } from './capture.entity.js';
+import { Capture, newCapture, type CaptureMapping } from './capture.entity.js';
 import { mappedColumns, readHead } from './csv-record.js';
 import { CaptureProblem } from './sample-grid.js';
 import { readTrace, type CaptureTrace } from './trace-file.js';
@@ -46,23 +46,18 @@ export class CapturesService {
       const siteId = axis?.siteId ?? this.siteFor(user, to.siteId);
       mappedColumns(await readHead(uploaded), mapping);
       const capture = await this.transactions.run(async (manager) => {
-        const saved = await manager.save(Capture, {
-          siteId,
-          axisId: axis?.id ?? null,
-          source: 'upload' as const,
-          alertId: null,
-          createdAt: new Date(),
-          createdById: user.id,
-          fileName: shownName(fileName),
-          status: 'queued' as const,
-          problem: null,
-          mapping,
-          recorded: false,
-          samples: null,
-          sampleTime: null,
-          duration: null,
-          result: null,
-        });
+        const saved = await manager.save(
+          Capture,
+          newCapture({
+            siteId,
+            axisId: axis?.id ?? null,
+            source: 'upload',
+            alertId: null,
+            createdById: user.id,
+            fileName: shownName(fileName),
+            mapping,
+          }),
+        );
         await this.audit.record(manager, {
           user,
           action: 'capture.uploaded',

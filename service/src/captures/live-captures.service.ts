@@ -12,7 +12,7 @@ import { AxesService } from '../fleet/axes.service.js';
 import { SampleRecorder, type KeptBlock } from '../telemetry/sample-recorder.js';
 import { CaptureFiles } from './capture-files.js';
 import { CaptureQueue } from './capture-queue.service.js';
-import { Capture } from './capture.entity.js';
+import { Capture, newCapture } from './capture.entity.js';
 import { recordedFile } from './recorded-samples.js';
 
 /** Kept around an alert, s. */
@@ -64,23 +64,18 @@ export class LiveCaptures {
     alertId: number | null,
   ): Promise<Capture> {
     return this.transactions.run(async (manager) => {
-      const capture = await manager.save(Capture, {
-        siteId: axis.siteId,
-        axisId: axis.id,
-        source,
-        alertId,
-        createdAt: new Date(),
-        createdById: user?.id ?? null,
-        fileName: alertId === null ? axis.tag : `${axis.tag}, around alert ${alertId}`,
-        status: 'queued' as const,
-        problem: null,
-        mapping: null,
-        recorded: false,
-        samples: null,
-        sampleTime: null,
-        duration: null,
-        result: null,
-      });
+      const capture = await manager.save(
+        Capture,
+        newCapture({
+          siteId: axis.siteId,
+          axisId: axis.id,
+          source,
+          alertId,
+          createdById: user?.id ?? null,
+          fileName: alertId === null ? axis.tag : `${axis.tag}, around alert ${alertId}`,
+          mapping: null,
+        }),
+      );
       if (user)
         await this.audit.record(manager, {
           user,
