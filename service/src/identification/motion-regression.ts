@@ -54,6 +54,40 @@ export function motionModel(
   directional: boolean,
   heldDelay: number | null,
 ): MotionModel {
+  if (heldDelay) return buildModel(forward, reverse, directional, heldDelay);
+  const key =
+    Number(forward) + 2 * Number(reverse) + 4 * Number(directional) + 8 * Number(heldDelay === null);
+  return (KNOWN_MODELS[key] ??= buildModel(forward, reverse, directional, heldDelay));
+}
+
+/** Share of samples a direction needs to count as present. */
+const DIRECTION_SHARE = 0.08;
+
+/** The model for samples of which so many go forward and in reverse; a direction with too few counts as absent. */
+export function modelFor(
+  forward: number,
+  reverse: number,
+  samples: number,
+  directional: boolean,
+  heldDelay: number | null,
+): MotionModel {
+  return motionModel(
+    forward >= DIRECTION_SHARE * samples,
+    reverse >= DIRECTION_SHARE * samples,
+    directional,
+    heldDelay,
+  );
+}
+
+/** The models without a held delay of their own, by what sets them apart. */
+const KNOWN_MODELS: MotionModel[] = [];
+
+function buildModel(
+  forward: boolean,
+  reverse: boolean,
+  directional: boolean,
+  heldDelay: number | null,
+): MotionModel {
   const both = forward && reverse;
   const split = directional && both;
   let p = 1;
@@ -77,19 +111,26 @@ export function motionModel(
   return { parameters: p, map, directional: split, forward, reverse, delayIndex, heldDelay: heldDelay ?? 0 };
 }
 
-/** Normal equations of a model: mᵀ·A·m (p×p) and mᵀ·r from packed sums that start at `offset`. */
-export function normalEquations(
+/** mᵀ·A of one block on its way to mᵀ·A·m. */
+let half = new Float64Array(FULL_PARAMETERS * 8);
+
+/**
+ * Adds weight·mᵀ·A·m (p×p) to `matrix` and weight·mᵀ·r to `vector`, from packed sums that start at `offset`.
+ */
+export function addNormalEquations(
   { parameters: p, map }: Pick<MotionModel, 'parameters' | 'map'>,
   sums: Float64Array,
   offset: number,
-): { matrix: Float64Array; vector: Float64Array } {
-  const half = new Float64Array(FULL_PARAMETERS * p);
-  const matrix = new Float64Array(p * p);
-  const vector = new Float64Array(p);
+  weight: number,
+  matrix: Float64Array,
+  vector: Float64Array,
+): void {
+  if (half.length < FULL_PARAMETERS * p) half = new Float64Array(FULL_PARAMETERS * p);
+  half.fill(0);
   // Most entries of a map are zero.
   for (let j = 0; j < FULL_PARAMETERS; j++)
     for (let c = 0; c < p; c++) {
-      const m = map[j * p + c]!;
+      const m = weight * map[j * p + c]!;
       if (m === 0) continue;
       for (let i = 0; i < FULL_PARAMETERS; i++)
         half[i * p + c]! += m * sums[offset + PLACE[i * COLUMNS + j]!]!;
@@ -101,7 +142,6 @@ export function normalEquations(
       if (m === 0) continue;
       for (let d = 0; d < p; d++) matrix[c * p + d]! += m * half[i * p + d]!;
     }
-  return { matrix, vector };
 }
 
 /** Least squares over weighted blocks with the covariance of its estimate. */
@@ -118,6 +158,30 @@ export interface BlockFit {
 /** Blocks whose pooled score spread counts beside each block's own, in units of blocks. */
 const POOLED_SCORE_BLOCKS = 12;
 
+/** Room for the matrices of one fit at a time: typed arrays of this size cost more to allocate than to fill. */
+let room = roomFor(8);
+
+function roomFor(parameters: number) {
+  const square = (): Float64Array => new Float64Array(parameters * parameters);
+  return {
+    parameters,
+    a: square(),
+    a2: square(),
+    inverse: square(),
+    inverse2: square(),
+    scores: square(),
+    product: square(),
+    r: new Float64Array(parameters),
+    r2: new Float64Array(parameters),
+    score: new Float64Array(parameters),
+  };
+}
+
+const total = new Float64Array(PRODUCT_SUMS);
+const total2 = new Float64Array(PRODUCT_SUMS);
+const full = new Float64Array(FULL_PARAMETERS);
+const left = new Float64Array(FULL_PARAMETERS);
+
 /**
  * Weighted least squares over blocks, θ = A⁻¹Σ w r, with the sandwich covariance A⁻¹GA⁻¹,
  * G = Σ w²·g·gᵀ from the scores g = r_b − A_b·θ of whole blocks (batch means): autocorrelation inside a
@@ -133,54 +197,41 @@ export function fitBlocks(
   model: MotionModel,
   sums: Float64Array,
   offsets: readonly number[],
-  weights: readonly number[],
+  weights: ArrayLike<number>,
   mapOf?: (block: number) => Float64Array,
 ): BlockFit | null {
   const p = model.parameters;
+  if (p > room.parameters) room = roomFor(p);
+  const { a, a2, r, r2, scores, product, score } = room;
   const maps = mapOf && offsets.map((_, b) => mapOf(b));
-  const a = new Float64Array(p * p);
-  const a2 = new Float64Array(p * p);
-  const r = new Float64Array(p);
-  let wSum = 0;
-  let w2Sum = 0;
+  a.fill(0);
+  a2.fill(0);
+  r.fill(0);
   if (maps) {
     for (let b = 0; b < offsets.length; b++) {
-      const part = normalEquations({ parameters: p, map: maps[b]! }, sums, offsets[b]!);
+      const own = { parameters: p, map: maps[b]! };
       const w = weights[b]!;
-      for (let i = 0; i < p * p; i++) {
-        a[i]! += w * part.matrix[i]!;
-        a2[i]! += w * w * part.matrix[i]!;
-      }
-      for (let i = 0; i < p; i++) r[i]! += w * part.vector[i]!;
+      addNormalEquations(own, sums, offsets[b]!, w, a, r);
+      addNormalEquations(own, sums, offsets[b]!, w * w, a2, r2);
     }
   } else {
     // One map for all blocks: add the sums first, map once.
-    const total = weightedTotal(sums, offsets, weights);
-    const total2 = weightedTotal(
-      sums,
-      offsets,
-      weights.map((w) => w * w),
-    );
-    const part = normalEquations(model, total, 0);
-    a.set(part.matrix);
-    r.set(part.vector);
-    a2.set(normalEquations(model, total2, 0).matrix);
+    addNormalEquations(model, weightedTotal(sums, offsets, weights, 1, total), 0, 1, a, r);
+    addNormalEquations(model, weightedTotal(sums, offsets, weights, 2, total2), 0, 1, a2, r2);
   }
-  for (const w of weights) {
-    wSum += w;
-    w2Sum += w * w;
-  }
-  const inverse = invertPositive(a, p);
-  const inverse2 = invertPositive(a2, p);
+  const inverse = invertPositive(a, p, room.inverse);
+  const inverse2 = invertPositive(a2, p, room.inverse2);
   if (!inverse || !inverse2) return null;
   const theta = new Float64Array(p);
   for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) theta[i]! += inverse[i * p + j]! * r[j]!;
 
-  const g = new Float64Array(p * p);
-  const score = new Float64Array(p);
-  const full = new Float64Array(FULL_PARAMETERS);
-  const left = new Float64Array(FULL_PARAMETERS);
+  scores.fill(0);
+  let wSum = 0;
+  let w2Sum = 0;
   for (let b = 0; b < offsets.length; b++) {
+    const w = weights[b]!;
+    wSum += w;
+    w2Sum += w * w;
     const map = maps ? maps[b]! : model.map;
     if (b === 0 || maps)
       for (let i = 0; i < FULL_PARAMETERS; i++) {
@@ -201,7 +252,6 @@ export function fitBlocks(
       }
       left[i] = s + sums[n++]!;
     }
-    const w = weights[b]!;
     for (let c = 0; c < p; c++) {
       let s = 0;
       for (let i = 0; i < FULL_PARAMETERS; i++) s += map[i * p + c]! * left[i]!;
@@ -209,34 +259,36 @@ export function fitBlocks(
     }
     for (let i = 0; i < p; i++) {
       const si = score[i]!;
-      for (let j = 0; j < p; j++) g[i * p + j]! += si * score[j]!;
+      for (let j = 0; j < p; j++) scores[i * p + j]! += si * score[j]!;
     }
   }
   const effectiveBlocks = (wSum * wSum) / w2Sum;
   const correction = effectiveBlocks / Math.max(effectiveBlocks - p, effectiveBlocks / 2);
   let trace = 0;
-  for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) trace += inverse2[i * p + j]! * g[j * p + i]!;
+  for (let i = 0; i < p; i++) for (let j = 0; j < p; j++) trace += inverse2[i * p + j]! * scores[j * p + i]!;
   const spread = (trace / p) * correction;
-  const total = effectiveBlocks + POOLED_SCORE_BLOCKS;
+  const parts = effectiveBlocks + POOLED_SCORE_BLOCKS;
   for (let i = 0; i < p * p; i++)
-    g[i] = (effectiveBlocks * correction * g[i]! + POOLED_SCORE_BLOCKS * spread * a2[i]!) / total;
-  const covariance = multiply(multiply(inverse, g, p), inverse, p);
+    scores[i] = (effectiveBlocks * correction * scores[i]! + POOLED_SCORE_BLOCKS * spread * a2[i]!) / parts;
+  const covariance = multiply(multiply(inverse, scores, p, product), inverse, p);
   return { model, theta, covariance, effectiveBlocks, inflation: spread };
 }
 
-/** Σ w·sums of blocks. */
+/** Σ w·sums of blocks (`power` 1) or Σ w²·sums (`power` 2), into `into`. */
 export function weightedTotal(
   sums: Float64Array,
   offsets: readonly number[],
-  weights: readonly number[],
+  weights: ArrayLike<number>,
+  power: 1 | 2,
+  into: Float64Array,
 ): Float64Array {
-  const total = new Float64Array(PRODUCT_SUMS);
+  into.fill(0);
   for (let b = 0; b < offsets.length; b++) {
-    const w = weights[b]!;
+    const w = power === 1 ? weights[b]! : weights[b]! * weights[b]!;
     const from = offsets[b]!;
-    for (let i = 0; i < PRODUCT_SUMS; i++) total[i]! += w * sums[from + i]!;
+    for (let i = 0; i < PRODUCT_SUMS; i++) into[i]! += w * sums[from + i]!;
   }
-  return total;
+  return into;
 }
 
 /**
@@ -245,6 +297,9 @@ export function weightedTotal(
  * @param sums packed sums of products; @returns null when the regressors cannot be told apart.
  */
 export function solveSums(model: MotionModel, sums: Float64Array, offset: number): Float64Array | null {
-  const { matrix, vector } = normalEquations(model, sums, offset);
-  return solvePositive(matrix, vector, model.parameters);
+  const { a, r } = room;
+  a.fill(0);
+  r.fill(0);
+  addNormalEquations(model, sums, offset, 1, a, r);
+  return solvePositive(a, r, model.parameters);
 }

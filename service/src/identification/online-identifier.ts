@@ -7,7 +7,14 @@ import {
   restartFilters,
   type FilterPlan,
 } from './motion-filter.js';
-import { fitBlocks, motionModel, solveSums, weightedTotal, type MotionModel } from './motion-regression.js';
+import {
+  PRODUCT_SUMS,
+  fitBlocks,
+  modelFor,
+  solveSums,
+  weightedTotal,
+  type MotionModel,
+} from './motion-regression.js';
 import { plantFigures, plantValues, type PlantValues } from './plant-figures.js';
 import type { PlantEstimate, PlantPrior, WindowEstimate } from './plant-estimate.js';
 import {
@@ -18,18 +25,20 @@ import {
   lnCovariance,
   type PooledFit,
 } from './describe-plant.js';
+import { CHANGING, CutSides, contradiction, type ChangingFigure, type SideFit } from './plant-change.js';
 
 /** Blocks that the state remembers. */
 const RING = 48;
 /** Weight of a block against the next newer one: 0.96 a second of motion, a memory of about 25 s. */
 const FORGETTING = 0.96;
+/** Weights of a full memory, oldest first. */
+const FADED = Float64Array.from({ length: RING }, (_, i) => FORGETTING ** (RING - 1 - i));
+const EQUAL = new Float64Array(RING).fill(1);
 /** Motion that closes a window, s. */
 const WINDOW_MOTION = 3;
 /** Stream time after which a window with `WINDOW_LEAST_MOTION` closes, s. */
 const WINDOW_PATIENCE = 30;
 const WINDOW_LEAST_MOTION = 1.5;
-/** Share of samples a direction needs to count as present. */
-const DIRECTION_SHARE = 0.08;
 /**
  * Cuts at which a change is looked for, in blocks from the newest: all of the newest window's, and one in every window
  * before, since a window closes about every three blocks.
@@ -45,8 +54,6 @@ const CHANGED = 36;
 const NEWEST = 5;
 /** How many times the spread of all blocks exceeds that of the newest in a mixture; 0.3 … 12 seen without, above 10⁴ with. */
 const MIXED = 200;
-/** What fits of one unchanged plant may differ by beside their own errors (common practice, no source). */
-const MODEL_ERROR = { lnGain: 0.01, lnPole: 0.02, coulomb: 0.08, bias: 0.08 } as const;
 /**
  * The start of motion and the velocity's sign are known to a fraction of a sample only: standard deviations of ln K,
  * ln α and of f and b in % of output (measured on simulated axes with noise near zero).
@@ -142,12 +149,7 @@ export class OnlineIdentifier {
     return s;
   }
 
-  private fit(
-    offsets: readonly number[],
-    weights: readonly number[],
-    directional: boolean,
-    held: number | null,
-  ) {
+  private fit(offsets: readonly number[], weights: Float64Array, directional: boolean, held: number | null) {
     const fit = fitBlocks(this.modelOf(offsets, directional, held), this.state, offsets, weights);
     const figures = fit && plantFigures(fit, this.plan.sampleTime);
     return fit && figures ? { fit, figures } : null;
@@ -155,27 +157,36 @@ export class OnlineIdentifier {
 
   private modelOf(offsets: readonly number[], directional: boolean, held: number | null): MotionModel {
     const learned = this.sum(offsets, BLOCK.learned);
-    return motionModel(
-      this.sum(offsets, BLOCK.forward) >= DIRECTION_SHARE * learned,
-      this.sum(offsets, BLOCK.reverse) >= DIRECTION_SHARE * learned,
+    return modelFor(
+      this.sum(offsets, BLOCK.forward),
+      this.sum(offsets, BLOCK.reverse),
+      learned,
       directional,
       held,
     );
   }
 
-  /** The plant by direction, without its covariance. */
-  private valuesOf(offsets: readonly number[], weights: readonly number[]): PlantValues | null {
-    const model = this.modelOf(offsets, true, null);
-    const theta = solveSums(model, weightedTotal(this.state, offsets, weights), 0);
-    return theta && plantValues(model, theta, this.plan.sampleTime);
+  /**
+   * The plant now, without its covariance, which costs most and is worked out only where the choice of gains by
+   * direction hangs on it.
+   */
+  private plantNow(): PlantValues | null {
+    const offsets = this.blockOffsets();
+    const weights = FADED.subarray(RING - offsets.length);
+    const total = weightedTotal(this.state, offsets, weights, 1, new Float64Array(PRODUCT_SUMS));
+    const values = (directional: boolean): PlantValues | null => {
+      const model = this.modelOf(offsets, directional, null);
+      const theta = solveSums(model, total, 0);
+      return theta && plantValues(model, theta, this.plan.sampleTime);
+    };
+    const split = values(true);
+    return split && directionsMayDiffer(split) ? (this.pooled()?.figures ?? null) : values(false);
   }
 
   private pooled(): PooledFit | null {
     const offsets = this.blockOffsets();
-    const weights = offsets.map((_, i) => FORGETTING ** (offsets.length - 1 - i));
-    // A covariance costs most: the split is fitted in full only where its gains differ at all.
-    const values = this.valuesOf(offsets, weights);
-    const split = values && directionsMayDiffer(values) ? this.fit(offsets, weights, true, null) : null;
+    const weights = FADED.subarray(RING - offsets.length);
+    const split = this.fit(offsets, weights, true, null);
     const chosen =
       split?.fit.model.directional && directionsDiffer(split.fit, split.figures)
         ? split
@@ -199,9 +210,8 @@ export class OnlineIdentifier {
   private windowEstimate(offsets: readonly number[]): WindowEstimate | null {
     const { state } = this;
     const shift = state[STATE.delayShift]!;
-    const weights = offsets.map(() => 1);
-    const single = this.fit(offsets, weights, false, shift);
-    const split = this.fit(offsets, weights, true, shift);
+    const single = this.fit(offsets, EQUAL, false, shift);
+    const split = this.fit(offsets, EQUAL, true, shift);
     const directional = split?.fit.model.directional ? split : null;
     const chosen =
       directional && directionsDiffer(directional.fit, directional.figures) ? directional : single;
@@ -238,41 +248,47 @@ export class OnlineIdentifier {
     const closes = motion >= WINDOW_MOTION || (elapsed >= WINDOW_PATIENCE && motion >= WINDOW_LEAST_MOTION);
     // Between windows the estimate hardly moves; until there is one, every block may bring it.
     if (!closes && state[STATE.simReady] !== 0) return;
-    let pooled = this.pooled();
     if (closes) {
       state[STATE.windowOpen] = open + 1;
-      if (this.forgetWhatChanged(pooled)) pooled = this.pooled();
+      this.forgetWhatChanged();
     }
-    if (pooled) this.refresh(pooled);
+    const plant = this.plantNow();
+    if (plant && !this.moveDelay(plant)) this.simulateWith(plant);
   }
 
-  /** Puts the pooled estimate to use: velocity simulation, held delay, and the delay line's dead time. */
-  private refresh({ fit, figures, movingSeconds }: PooledFit): void {
+  /** Moves the delay line to the dead time found, and starts over with it, where it is surely another. */
+  private moveDelay({ delayShift }: PlantValues): boolean {
     const { state, plan } = this;
-    const T = plan.sampleTime;
-    const shift = figures.delayShift;
+    const held = state[STATE.deadTime]!;
+    const least = 0.4 * plan.sampleTime;
+    const moved = Math.min(Math.max(held + delayShift, 0), plan.longestDelay);
+    if (Math.abs(moved - held) <= least || this.movingSeconds(this.blockOffsets()) < DELAY_MOTION)
+      return false;
+    const pooled = this.pooled();
+    if (!pooled) return false;
+    const { fit, figures } = pooled;
     const se = Math.sqrt(covarianceOf(fit, figures.gradients.delayShift, figures.gradients.delayShift));
-    const moved = Math.min(Math.max(state[STATE.deadTime]! + shift, 0), plan.longestDelay);
-    if (
-      movingSeconds >= DELAY_MOTION &&
-      Math.abs(moved - state[STATE.deadTime]!) > Math.max(0.4 * T, 4 * se)
-    ) {
-      // Sums of the old dead time do not fit the new one: start over with it.
-      state[STATE.deadTime] = moved;
-      state[STATE.delayShift] = 0;
-      state[STATE.blockCount] = 0;
-      restartFilters(state, plan);
-      return;
-    }
+    if (Math.abs(moved - held) <= 4 * se) return false;
+    // Sums of the old dead time do not fit the new one.
+    state[STATE.deadTime] = moved;
+    state[STATE.delayShift] = 0;
+    state[STATE.blockCount] = 0;
+    restartFilters(state, plan);
+    return true;
+  }
+
+  /** Puts the plant to use: velocity simulation and the delay that windows hold. */
+  private simulateWith({ lnPole, gainForward, gainReverse, coulomb, bias, delayShift }: PlantValues): void {
+    const { state } = this;
+    const T = this.plan.sampleTime;
     // More than a sample is no remainder but a pool that does not fit together.
-    state[STATE.delayShift] = Math.min(Math.max(shift, -T), T);
-    const alpha = Math.exp(figures.lnPole);
-    const a = Math.exp(-alpha * T);
+    state[STATE.delayShift] = Math.min(Math.max(delayShift, -T), T);
+    const a = Math.exp(-Math.exp(lnPole) * T);
     state[STATE.simA] = a;
-    state[STATE.simForward] = figures.gainForward * (1 - a);
-    state[STATE.simReverse] = figures.gainReverse * (1 - a);
-    state[STATE.simFrictionForward] = figures.gainForward * (1 - a) * (figures.coulomb + figures.bias);
-    state[STATE.simFrictionReverse] = figures.gainReverse * (1 - a) * (figures.coulomb - figures.bias);
+    state[STATE.simForward] = gainForward * (1 - a);
+    state[STATE.simReverse] = gainReverse * (1 - a);
+    state[STATE.simFrictionForward] = gainForward * (1 - a) * (coulomb + bias);
+    state[STATE.simFrictionReverse] = gainReverse * (1 - a) * (coulomb - bias);
     state[STATE.simReady] = 1;
   }
 
@@ -281,10 +297,8 @@ export class OnlineIdentifier {
    * largest of the squared differences of ln K, ln α, f and b in units of their variance (a Wald statistic for one
    * change at an unknown place). Beyond `CHANGED` the blocks before the cut are forgotten, and the estimate counts as
    * unsettled until a later window finds nothing.
-   *
-   * @returns whether blocks were forgotten
    */
-  private forgetWhatChanged(pooled: PooledFit | null): boolean {
+  private forgetWhatChanged(): void {
     const { state } = this;
     const offsets = this.blockOffsets();
     const sides = new CutSides(this.state, offsets, this.plan.sampleTime);
@@ -307,43 +321,33 @@ export class OnlineIdentifier {
         }
       }
     }
-    if (cut === 0 && this.newestFitBetter(offsets, pooled)) cut = offsets.length - NEWEST;
+    if (cut === 0 && this.newestFitBetter(offsets, sides)) cut = offsets.length - NEWEST;
     state[STATE.unsettled] = cut > 0 ? 1 : 0;
-    if (cut === 0) return false;
+    if (cut === 0) return;
     state[STATE.blockCount] = offsets.length - cut;
     // What was simulated with the former plant says nothing about the fit of the new one.
     for (const o of offsets.slice(cut))
       for (const sum of [BLOCK.simulated, BLOCK.velocity, BLOCK.velocitySquare, BLOCK.residualSquare])
         state[o + sum] = 0;
-    return true;
   }
 
   /**
    * Whether the newest blocks agree among themselves far better than all of them do: after a slow change the older
    * ones are themselves a mixture, too uncertain to contradict anything.
    */
-  private newestFitBetter(offsets: readonly number[], pooled: PooledFit | null): boolean {
-    if (!pooled || offsets.length < NEWEST + LEAST_SIDE) return false;
-    const newest = offsets.slice(-NEWEST);
-    const inflation = this.fit(
-      newest,
-      newest.map(() => 1),
-      true,
-      0,
-    )?.fit.inflation;
-    return inflation !== undefined && pooled.fit.inflation > MIXED * inflation;
+  private newestFitBetter(offsets: readonly number[], sides: CutSides): boolean {
+    const older = offsets.length - NEWEST;
+    if (older < LEAST_SIDE || sides.agree(older)) return false;
+    const all = this.pooled()?.fit.inflation;
+    const newest = this.fit(offsets.slice(-NEWEST), EQUAL, true, 0)?.fit.inflation;
+    return all !== undefined && newest !== undefined && all > MIXED * newest;
   }
 
   /** A side of a cut, for `contradiction`. */
   private sideFit(offsets: readonly number[]): SideFit | null {
     // The dead time is held where the delay line has it: its pooled remainder is what a change upsets first. Gains by
     // direction in any case: one for both would take a difference between directions for noise.
-    const side = this.fit(
-      offsets,
-      offsets.map(() => 1),
-      true,
-      0,
-    );
+    const side = this.fit(offsets, EQUAL, true, 0);
     if (!side) return null;
     const { fit, figures } = side;
     const variance = (name: ChangingFigure): number => {
@@ -351,77 +355,5 @@ export class OnlineIdentifier {
       return Math.max(0, covarianceOf(fit, g, g));
     };
     return CHANGING.map((name) => ({ value: figures[name], variance: variance(name) }));
-  }
-}
-
-const CHANGING = ['lnGain', 'lnPole', 'coulomb', 'bias'] as const;
-type ChangingFigure = (typeof CHANGING)[number];
-type SideFit = { readonly value: number; readonly variance: number }[];
-
-/** The largest squared difference between two sides in units of its variance. */
-function contradiction(before: SideFit | null, after: SideFit | null): number {
-  if (!before || !after) return 0;
-  let most = 0;
-  CHANGING.forEach((name, i) => {
-    const difference = after[i]!.value - before[i]!.value;
-    const variance = before[i]!.variance + after[i]!.variance + MODEL_ERROR[name] ** 2;
-    most = Math.max(most, difference ** 2 / variance);
-  });
-  return most;
-}
-
-/**
- * Estimates of both sides of every cut from running totals of the blocks, without their variances: cheap enough to
- * ask first whether a cut can contradict at all.
- */
-class CutSides {
-  private readonly totals: Float64Array;
-  private readonly known = new Map<number, PlantValues | null>();
-  private readonly blocks: number;
-  private readonly sums = new Float64Array(BLOCK.length);
-
-  constructor(
-    state: Float64Array,
-    offsets: readonly number[],
-    private readonly sampleTime: number,
-  ) {
-    this.blocks = offsets.length;
-    this.totals = new Float64Array((offsets.length + 1) * BLOCK.length);
-    offsets.forEach((offset, b) => {
-      const at = b * BLOCK.length;
-      for (let i = 0; i < BLOCK.length; i++)
-        this.totals[at + BLOCK.length + i] = this.totals[at + i]! + state[offset + i]!;
-    });
-  }
-
-  /** What `contradiction` of blocks 0 … end−1 against start … cannot exceed: the differences over the model's own error. */
-  mostPossible(end: number, start: number): number {
-    const before = this.side(0, end);
-    const after = this.side(start, this.blocks);
-    if (!before || !after) return 0;
-    let most = 0;
-    for (const name of CHANGING)
-      most = Math.max(most, ((after[name] - before[name]) / MODEL_ERROR[name]) ** 2);
-    return most;
-  }
-
-  private side(from: number, to: number): PlantValues | null {
-    const key = from * RING * 2 + to;
-    const known = this.known.get(key);
-    if (known !== undefined) return known;
-    const { sums, totals } = this;
-    for (let i = 0; i < BLOCK.length; i++)
-      sums[i] = totals[to * BLOCK.length + i]! - totals[from * BLOCK.length + i]!;
-    const learned = sums[BLOCK.learned]!;
-    const model = motionModel(
-      sums[BLOCK.forward]! >= DIRECTION_SHARE * learned,
-      sums[BLOCK.reverse]! >= DIRECTION_SHARE * learned,
-      true,
-      0,
-    );
-    const theta = solveSums(model, sums, 0);
-    const values = theta && plantValues(model, theta, this.sampleTime);
-    this.known.set(key, values);
-    return values;
   }
 }

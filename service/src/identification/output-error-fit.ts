@@ -3,7 +3,7 @@ import {
   fitBlocks,
   FULL_PARAMETERS,
   motionModel,
-  normalEquations,
+  addNormalEquations,
   PRODUCT_SUMS,
   type BlockFit,
   type MotionModel,
@@ -346,9 +346,7 @@ function evaluate(
     );
     square += sums[offset + PRODUCT_SUMS - 1]!;
     if (!map || free.gainTrend >= 0) map = mapAt(free, plant, along);
-    const part = normalEquations({ parameters: p, map }, sums, offset);
-    for (let c = 0; c < p * p; c++) matrix[c]! += part.matrix[c]!;
-    for (let c = 0; c < p; c++) vector[c]! += part.vector[c]!;
+    addNormalEquations({ parameters: p, map }, sums, offset, 1, matrix, vector);
   });
   const delta = solve(matrix, vector, p, free.linear);
   if (!delta) return null;

@@ -10,32 +10,38 @@ export function packedIndex(p: number, row: number, column: number): number {
   return row * p - (row * (row - 1)) / 2 + (column - row);
 }
 
-/** Cholesky's factor L of the matrix scaled to unit diagonal, and the scale; null as `invertPositive` says. */
-function factor(
-  a: Float64Array,
-  p: number,
-  tolerance: number,
-): { l: Float64Array; scale: Float64Array } | null {
-  const scale = new Float64Array(p);
+/**
+ * Room for one factor at a time, its scale and a right side: a typed array of this size costs more to allocate than to
+ * fill. Nothing here calls back, so nobody sees it half-used.
+ */
+let room = roomFor(8);
+
+function roomFor(p: number): { p: number; l: Float64Array; scale: Float64Array; x: Float64Array } {
+  return { p, l: new Float64Array(p * p), scale: new Float64Array(p), x: new Float64Array(p) };
+}
+
+/** Cholesky's factor L of the matrix scaled to unit diagonal, and the scale, into `room`; false as `invertPositive` says. */
+function factor(a: Float64Array, p: number, tolerance: number): boolean {
+  if (p > room.p) room = roomFor(p);
+  const { l, scale } = room;
   for (let i = 0; i < p; i++) {
     const d = a[i * p + i]!;
-    if (!(d > 0)) return null;
+    if (!(d > 0)) return false;
     scale[i] = 1 / Math.sqrt(d);
   }
-  const l = new Float64Array(p * p);
   for (let i = 0; i < p; i++) {
     for (let j = 0; j <= i; j++) {
       let s = a[i * p + j]! * scale[i]! * scale[j]!;
       for (let k = 0; k < j; k++) s -= l[i * p + k]! * l[j * p + k]!;
       if (i === j) {
-        if (!(s > tolerance)) return null;
+        if (!(s > tolerance)) return false;
         l[i * p + i] = Math.sqrt(s);
       } else {
         l[i * p + j] = s / l[j * p + j]!;
       }
     }
   }
-  return { l, scale };
+  return true;
 }
 
 /** L·Lᵀ·x = x in place. */
@@ -57,15 +63,18 @@ function substitute(l: Float64Array, x: Float64Array, p: number): void {
  * diagonal.
  *
  * @param a p×p, row-major; left unchanged.
+ * @param inverse where it goes, p×p.
  * @returns the inverse, or null when a pivot of the scaled matrix falls below `tolerance`: the columns are
  * then too nearly dependent to tell apart.
  */
-export function invertPositive(a: Float64Array, p: number, tolerance = 1e-10): Float64Array | null {
-  const factored = factor(a, p, tolerance);
-  if (!factored) return null;
-  const { l, scale } = factored;
-  const inverse = new Float64Array(p * p);
-  const x = new Float64Array(p);
+export function invertPositive(
+  a: Float64Array,
+  p: number,
+  inverse: Float64Array = new Float64Array(p * p),
+  tolerance = 1e-10,
+): Float64Array | null {
+  if (!factor(a, p, tolerance)) return null;
+  const { l, scale, x } = room;
   for (let c = 0; c < p; c++) {
     x.fill(0);
     x[c] = 1;
@@ -82,10 +91,10 @@ export function solvePositive(
   p: number,
   tolerance = 1e-10,
 ): Float64Array | null {
-  const factored = factor(a, p, tolerance);
-  if (!factored) return null;
-  const { l, scale } = factored;
-  const x = b.map((value, i) => value * scale[i]!);
+  if (!factor(a, p, tolerance)) return null;
+  const { l, scale } = room;
+  const x = new Float64Array(p);
+  for (let i = 0; i < p; i++) x[i] = b[i]! * scale[i]!;
   substitute(l, x, p);
   for (let i = 0; i < p; i++) x[i]! *= scale[i]!;
   return x;
@@ -107,13 +116,18 @@ export function quadraticForm(
   return s;
 }
 
-/** A·B of two p×p matrices. */
-export function multiply(a: Float64Array, b: Float64Array, p: number): Float64Array {
-  const c = new Float64Array(p * p);
+/** A·B of two p×p matrices, into `product`. */
+export function multiply(
+  a: Float64Array,
+  b: Float64Array,
+  p: number,
+  product: Float64Array = new Float64Array(p * p),
+): Float64Array {
   for (let i = 0; i < p; i++)
-    for (let k = 0; k < p; k++) {
-      const f = a[i * p + k]!;
-      for (let j = 0; j < p; j++) c[i * p + j]! += f * b[k * p + j]!;
+    for (let j = 0; j < p; j++) {
+      let s = 0;
+      for (let k = 0; k < p; k++) s += a[i * p + k]! * b[k * p + j]!;
+      product[i * p + j] = s;
     }
-  return c;
+  return product;
 }

@@ -21,7 +21,7 @@ function stream(
 
 describe('identification from a stream', () => {
   test.each([1, 0.75])(
-    'after a minute of production the 95 %% intervals of K and α cover the truth nine times in ten (K⁻ = %f K⁺)',
+    'after a minute of production intervals of K and α cover the truth nine times in ten (K⁻ = %f K⁺)',
     (ratio) => {
       const axes = 60;
       let gainCovered = 0;
