@@ -8,9 +8,10 @@ import type { Interval, PlantEstimate } from './plant-estimate.js';
  *   load M up        ( 0, −1,  0)      viscous drag B up    (−1, +1,  0)
  *   force g down     (−1,  0, +1)      dry friction F up    ( 0,  0, +1)
  *
- * while an offset moves b alone and a fault of one direction of travel moves K⁺/K⁻. Each cause is fitted by
- * generalised least squares in the metric of the estimate's covariance; the misfit left over, weighed
- * against the other causes', gives the confidence. (Directions: common practice, no source.)
+ * while an offset moves b alone and a fault of one direction of travel moves K⁺/K⁻, and what friction and offset
+ * take of that direction's force. Each cause is fitted by generalised least squares in the metric of the estimate's
+ * covariance; the misfit left over, weighed against the other causes', gives the confidence. (Directions: common
+ * practice, no source.)
  */
 export type CauseName =
   'load' | 'viscous drag' | 'actuating force' | 'dry friction' | 'offset' | 'one direction' | 'unclear';
@@ -51,6 +52,9 @@ const STRANGER_MISFIT = 12;
 const LEAST_CONFIDENCE = 0.6;
 /** Squared distance from the baseline below which nothing has changed that could be explained. */
 const LEAST_CHANGE = 9;
+
+/** By how much a cause moves ln K, ln α, ln f, b and ln(K⁺/K⁻); nothing where not given. */
+type Signature = Partial<Record<'gain' | 'pole' | 'coulomb' | 'bias' | 'ratio', number>>;
 
 interface Candidate {
   readonly name: CauseName;
@@ -104,29 +108,45 @@ export function probableCause(evidence: CauseEvidence): Cause {
 
   const metric = invert(covariance);
   const distance = form(metric, x, x);
-  const along = (name: CauseName, parts: Record<string, number>): Candidate => {
-    const direction = x.map(() => 0);
-    for (const [axis, size] of Object.entries(parts)) {
-      const i = axisOf[axis];
-      if (i !== undefined) direction[i] = size;
-    }
-    const length = form(metric, direction, direction);
-    if (length === 0) return { name, misfit: distance, amount: 0 };
-    const amount = form(metric, direction, x) / length;
-    return { name, misfit: distance - amount * amount * length, amount };
+  const baselineF = coulombBaseline ?? 0;
+  const baselineB = biasBaseline ?? 0;
+  const forwardGain = baseline.gainForward ?? baseline.gain;
+  const reverseGain = baseline.gainReverse ?? baseline.gain;
+  const oneDirection = (lnForward: number, lnReverse: number): Signature => {
+    // f ± b = c±/β±: what resists one way weighs more where that way's force has fallen.
+    const resistForward = (baselineF + baselineB) * Math.exp(-lnForward);
+    const resistReverse = (baselineF - baselineB) * Math.exp(-lnReverse);
+    const mean = (forwardGain * Math.exp(lnForward) + reverseGain * Math.exp(lnReverse)) / 2;
+    return {
+      gain: Math.log((2 * mean) / (forwardGain + reverseGain)),
+      coulomb:
+        baselineF > 0 ? Math.log(Math.max((resistForward + resistReverse) / (2 * baselineF), 0.05)) : 0,
+      bias: (resistForward - resistReverse) / 2 - baselineB,
+      ratio: lnForward - lnReverse,
+    };
+  };
+  const fitted = (name: CauseName, signature: (amount: number) => Signature): Candidate => {
+    const vector = (amount: number): number[] => {
+      const expected = x.map(() => 0);
+      for (const [axis, size] of Object.entries(signature(amount))) {
+        const i = axisOf[axis];
+        if (i !== undefined) expected[i] = size;
+      }
+      return expected;
+    };
+    return { name, ...fitAmount(x, metric, vector) };
   };
   const candidates: Candidate[] = [
-    along('load', { pole: -1 }),
-    along('viscous drag', { gain: -1, pole: 1 }),
+    fitted('load', (a) => ({ pole: -a })),
+    fitted('viscous drag', (a) => ({ gain: -a, pole: a })),
     // f = F/g and b = o/g rise when the force per output falls.
-    along('actuating force', { gain: 1, coulomb: -1, bias: -(biasBaseline ?? 0) }),
+    fitted('actuating force', (a) => ({ gain: a, coulomb: -a, bias: baselineB * Math.expm1(-a) })),
   ];
-  if (axisOf.coulomb !== undefined) candidates.push(along('dry friction', { coulomb: 1 }));
-  if (axisOf.bias !== undefined) candidates.push(along('offset', { bias: 1 }));
-  // One direction's gain moves the mean by half of what it moves the ratio, with the sign of that direction.
-  const forwardLoss = along('one direction', { gain: 0.5, ratio: 1 });
-  const reverseLoss = along('one direction', { gain: -0.5, ratio: 1 });
-  candidates.push(forwardLoss.misfit <= reverseLoss.misfit ? forwardLoss : reverseLoss);
+  if (axisOf.coulomb !== undefined) candidates.push(fitted('dry friction', (a) => ({ coulomb: a })));
+  if (axisOf.bias !== undefined) candidates.push(fitted('offset', (a) => ({ bias: a })));
+  const forwardChange = fitted('one direction', (a) => oneDirection(a, 0));
+  const reverseChange = fitted('one direction', (a) => oneDirection(0, a));
+  candidates.push(forwardChange.misfit <= reverseChange.misfit ? forwardChange : reverseChange);
 
   const degrees = x.length - 1;
   const best = Math.min(STRANGER_MISFIT + degrees, ...candidates.map((c) => c.misfit));
@@ -197,6 +217,31 @@ function unclearSentence(
   const pct = (ln: number): string =>
     `${ln >= 0 ? '+' : '−'}${Math.abs(100 * (Math.exp(ln) - 1)).toFixed(0)} %`;
   return `Gain ${pct(lnGain)} and pole ${pct(lnPole)} do not point to one cause; ${ranked[0]!.name} and ${ranked[1]!.name} come nearest. Inspect first.`;
+}
+
+/** Amount of a cause that explains x best in the metric, by Gauss–Newton from nothing changed, and what it leaves. */
+function fitAmount(
+  x: readonly number[],
+  metric: readonly (readonly number[])[],
+  expected: (amount: number) => number[],
+): { amount: number; misfit: number } {
+  const left = (amount: number): number[] => expected(amount).map((value, i) => x[i]! - value);
+  const STEP = 1e-4;
+  let amount = 0;
+  let misfit = form(metric, x, x);
+  for (let iteration = 0; iteration < 20; iteration++) {
+    const above = expected(amount + STEP);
+    const slope = expected(amount - STEP).map((value, i) => (above[i]! - value) / (2 * STEP));
+    const length = form(metric, slope, slope);
+    if (!(length > 0)) break;
+    let step = form(metric, slope, left(amount)) / length;
+    const misfitAt = (to: number): number => form(metric, left(to), left(to));
+    while (Math.abs(step) > 1e-6 && !(misfitAt(amount + step) < misfit)) step /= 2;
+    if (Math.abs(step) <= 1e-6) break;
+    amount += step;
+    misfit = misfitAt(amount);
+  }
+  return { amount, misfit };
 }
 
 function deviationOf(i: Interval): number {

@@ -3,26 +3,28 @@ import { OnlineIdentifier } from '../../src/identification/online-identifier.js'
 import { probableCause, type CauseName } from '../../src/identification/probable-cause.js';
 import { randomAxis, TestAxis, type AxisPhysics } from './test-axis.js';
 
+type Fault = (physics: AxisPhysics) => AxisPhysics;
+const eachOf = (factors: readonly number[], name: CauseName, fault: (f: number) => Fault) =>
+  factors.map((factor): [string, CauseName, Fault] => [`${name} × ${factor}`, name, fault(factor)]);
+const FACTORS = [0.4, 0.7, 0.85, 1.15, 1.3, 1.6];
+
 /** One physical quantity at a time, from slight to gross. */
-const FAULTS: [CauseName, (p: AxisPhysics) => AxisPhysics][] = [
-  ...[1.3, 1.6, 0.7].map((f): [CauseName, (p: AxisPhysics) => AxisPhysics] => [
-    'load',
-    (p) => ({ ...p, mass: p.mass * f }),
-  ]),
-  ...[1.3, 1.6].map((f): [CauseName, (p: AxisPhysics) => AxisPhysics] => [
-    'viscous drag',
-    (p) => ({ ...p, viscous: p.viscous * f }),
-  ]),
-  ...[0.6, 0.7, 0.8].map((f): [CauseName, (p: AxisPhysics) => AxisPhysics] => [
-    'actuating force',
-    (p) => ({ ...p, forceForward: p.forceForward * f, forceReverse: p.forceReverse * f }),
-  ]),
-  ...[2, 3].map((f): [CauseName, (p: AxisPhysics) => AxisPhysics] => [
-    'dry friction',
-    (p) => ({ ...p, coulomb: p.coulomb * f, stiction: p.stiction * f }),
-  ]),
-  ['offset', (p) => ({ ...p, offset: p.offset + 0.03 * p.forceForward * 100 * 0.5 })],
-  ['one direction', (p) => ({ ...p, forceReverse: p.forceReverse * 0.75 })],
+const FAULTS: [string, CauseName, Fault][] = [
+  ...eachOf(FACTORS, 'load', (f) => (p) => ({ ...p, mass: p.mass * f })),
+  ...eachOf(FACTORS, 'viscous drag', (f) => (p) => ({ ...p, viscous: p.viscous * f })),
+  ...eachOf(FACTORS, 'actuating force', (f) => (p) => ({
+    ...p,
+    forceForward: p.forceForward * f,
+    forceReverse: p.forceReverse * f,
+  })),
+  ...eachOf(FACTORS, 'one direction', (f) => (p) => ({ ...p, forceReverse: p.forceReverse * f })),
+  // Friction of a few tenths of a per cent of output less or more is within what a baseline may be off.
+  ...eachOf([0.4, 1.6, 3], 'dry friction', (f) => (p) => ({
+    ...p,
+    coulomb: p.coulomb * f,
+    stiction: p.stiction * f,
+  })),
+  ...eachOf([-3, 1.5, 6], 'offset', (pct) => (p) => ({ ...p, offset: p.offset + pct * p.forceForward })),
 ];
 
 test('the right cause is named in nine cases of ten, a wrong one in hardly any', () => {
@@ -30,9 +32,9 @@ test('the right cause is named in nine cases of ten, a wrong one in hardly any',
   let unclear = 0;
   const wrong: string[] = [];
   let cases = 0;
-  for (const [name, change] of FAULTS)
-    for (let seed = 1; seed <= 6; seed++) {
-      const { setup, gain, pole, coulomb, bias } = randomAxis(seed + 40, { dwell: 0.4 });
+  for (const [fault, [what, name, change]] of FAULTS.entries())
+    for (const seed of [0, 1, 2].map((i) => 41 + ((3 * fault + i) % 10))) {
+      const { setup, gain, pole, coulomb, bias } = randomAxis(seed, { dwell: 0.4 });
       const axis = new TestAxis(setup);
       axis.physics = change(axis.physics);
       const identifier = new OnlineIdentifier({
@@ -53,12 +55,12 @@ test('the right cause is named in nine cases of ten, a wrong one in hardly any',
       cases++;
       if (cause.name === name) right++;
       else if (cause.name === 'unclear') unclear++;
-      else wrong.push(`${name} taken for ${cause.name}, seed ${seed}`);
+      else wrong.push(`${what} taken for ${cause.name}, seed ${seed}`);
       // Only a change of load is answered by a retune.
       expect(cause.advice).toBe(cause.name === 'load' ? 'retune' : 'inspect first');
     }
-  expect({ share: right / cases >= 0.9, right, unclear, cases, wrong }).toMatchObject({ share: true });
-  expect(wrong.length).toBeLessThanOrEqual(0.05 * cases);
+  expect({ share: right >= 0.9 * cases, right, unclear, cases, wrong }).toMatchObject({ share: true });
+  expect(wrong.length).toBeLessThanOrEqual(0.02 * cases);
 });
 
 test('supply pressure down 30 % is named although the baseline of α is 2 % off', () => {
