@@ -10,7 +10,7 @@ import { CaptureProblem, gridOf, type GriddedRecord, type Rows } from './sample-
 /** Bytes that are looked at to find out what a file is. */
 const HEAD = 65_536;
 /** Rows that are read: 50 minutes at 1 kHz, and bounded memory whatever the file. */
-export const MOST_ROWS = 3_000_000;
+const MOST_ROWS = 3_000_000;
 
 const DELIMITERS = [',', ';', '\t'] as const;
 const TIME = { s: 1, ms: 1e-3, us: 1e-6 } as const;
@@ -96,7 +96,11 @@ export function mappedColumns(head: FileHead, mapping: CaptureMapping): Record<s
  *
  * @throws CaptureProblem naming row and column of what cannot be used
  */
-export async function readCsvRecord(path: string, mapping: CaptureMapping): Promise<GriddedRecord> {
+export async function readCsvRecord(
+  path: string,
+  mapping: CaptureMapping,
+  mostRows = MOST_ROWS,
+): Promise<GriddedRecord> {
   const head = await readHead(path);
   const at = mappedColumns(head, mapping);
   const { units = {} } = mapping;
@@ -141,9 +145,9 @@ export async function readCsvRecord(path: string, mapping: CaptureMapping): Prom
       throw new CaptureProblem(
         `row ${line} has ${row.length} columns, the header has ${head.columns.length}`,
       );
-    if (rows.length === MOST_ROWS)
+    if (rows.length === mostRows)
       throw new CaptureProblem(
-        `the file has more than ${MOST_ROWS.toLocaleString('en-GB')} rows: cut it into shorter captures`,
+        `the file has more than ${mostRows.toLocaleString('en-GB')} rows: cut it into shorter captures`,
       );
     const time = cell(row, 'time', line) * timeUnit;
     if (Number.isNaN(time)) throw new CaptureProblem(`row ${line} has no time`);

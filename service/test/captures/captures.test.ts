@@ -1,16 +1,20 @@
-import { existsSync, readdirSync, readFileSync, writeFileSync } from 'node:fs';
+import { once } from 'node:events';
+import { existsSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
+import { request as httpRequest, type ClientRequest } from 'node:http';
 import { join } from 'node:path';
 import { ConfigService } from '@nestjs/config';
+import request from 'supertest';
 import { gzipSync } from 'node:zlib';
 import { afterAll, beforeAll, describe, expect, test } from 'vitest';
 import { CaptureQueue } from '../../src/captures/capture-queue.service.js';
 import { Capture } from '../../src/captures/capture.entity.js';
+import { readCsvRecord } from '../../src/captures/csv-record.js';
 import type { CaptureDto } from '../../src/captures/dto/capture.dto.js';
 import { Axis } from '../../src/fleet/axis.entity.js';
 import type { ProblemDto } from '../../src/problem.filter.js';
 import { SampleRecorder } from '../../src/telemetry/sample-recorder.js';
 import { randomAxis, TestAxis } from '../identification/test-axis.js';
-import { startService, until, type Service } from '../support/start-service.js';
+import { DEMO_PASSWORD, startService, until, type Service } from '../support/start-service.js';
 
 const TRACE = readFileSync(new URL('../references/traces/o8_delayed.csv', import.meta.url));
 const MAPPING = { time: 'time_s', target: 'target_mm', position: 'position_mm', output: 'output_pct' };
@@ -239,6 +243,67 @@ describe('a file that cannot be used', () => {
       gain: null,
       remarks: ['the axis never moves in this record', 'the output never changes'],
     });
+  });
+});
+
+describe('a large upload', () => {
+  /** Begins the upload of a file and sends so many megabytes of it. */
+  async function begin(megabytes: number): Promise<{ sending: ClientRequest; answer: Promise<number> }> {
+    const { body } = await request(service.url)
+      .post('/api/v1/auth/sign-in')
+      .send({ email: 'technician@tarnwick.example', password: DEMO_PASSWORD })
+      .expect(200);
+    const sending = httpRequest(`${service.url}/api/v1/captures`, {
+      method: 'POST',
+      headers: {
+        authorization: `Bearer ${(body as { accessToken: string }).accessToken}`,
+        'content-type': 'multipart/form-data; boundary=edge',
+      },
+    });
+    const answer = new Promise<number>((done) => {
+      sending.on('response', (response) => done(response.statusCode!));
+      sending.on('error', () => done(0));
+    });
+    sending.write(
+      `--edge\r\nContent-Disposition: form-data; name="mapping"\r\n\r\n${JSON.stringify(SHORT)}\r\n` +
+        '--edge\r\nContent-Disposition: form-data; name="file"; filename="long.csv"\r\n\r\nt,y,u\r\n',
+    );
+    const megabyte = Buffer.alloc(1 << 20, '0.001,2.5,10.25\r\n');
+    for (let sent = 0; sent < megabytes && !sending.destroyed; sent++)
+      if (!sending.write(megabyte))
+        await Promise.race([once(sending, 'drain').catch(() => undefined), answer]);
+    return { sending, answer };
+  }
+  const incoming = (): string[] => readdirSync(join(folder, 'incoming'));
+
+  test('of more than 200 MB is refused with 413; nothing is stored', async () => {
+    const before = stored();
+    const { sending, answer } = await begin(201);
+    sending.end('\r\n--edge--\r\n');
+    expect(await answer).toBe(413);
+    await until('the upload is gone', () => incoming().length === 0);
+    expect(stored()).toBe(before);
+  });
+
+  test('whose connection breaks leaves nothing', async () => {
+    const before = stored();
+    const { sending } = await begin(2);
+    await until('it is coming in', () => incoming().length > 0);
+    sending.destroy();
+    await until('the upload is gone', () => incoming().length === 0);
+    expect(stored()).toBe(before);
+  });
+
+  test('of more rows than are read is refused at the first row too many', async () => {
+    const path = join(folder, 'incoming', 'rows.csv');
+    writeFileSync(path, simulated());
+    try {
+      await expect(readCsvRecord(path, SHORT, 1000)).rejects.toThrow(
+        'the file has more than 1,000 rows: cut it into shorter captures',
+      );
+    } finally {
+      rmSync(path);
+    }
   });
 });
 
