@@ -136,6 +136,19 @@ export class CapturesController {
     return new StreamableFile(Readable.from(traceLines(trace)));
   }
 
+  /** The same as JSON: one array for each column, null where there is no sample. */
+  @Get('captures/:id/trace.json')
+  @ApiOkResponse({ type: CaptureTraceDto })
+  async traceJson(
+    @CurrentUser() user: SignedInUser,
+    @Param('id', ParseIntPipe) id: number,
+    @Res({ passthrough: true }) response: Response,
+  ): Promise<StreamableFile> {
+    const trace = await this.captures.trace(id, user);
+    download(response, 'application/json', `capture-${id}-trace.json`);
+    return new StreamableFile(Readable.from(traceJsonParts(trace)));
+  }
+
   /** What was identified, one quantity a row. */
   @Get('captures/:id/result.csv')
   @ApiProduces(CSV)
@@ -251,16 +264,35 @@ function download(response: Response, type: string, name: string): void {
   response.set({ 'Content-Type': type, 'Content-Disposition': `attachment; filename="${name}"` });
 }
 
-/** Lines of a trace, some thousands at a time. */
+/** Samples of a trace that are written at a time. */
+const PART = 5000;
+const timeOf = (sample: number, sampleTime: number): number => Number((sample * sampleTime).toFixed(7));
+
 function* traceLines({ sampleTime, length, columns }: CaptureTrace): Generator<string> {
   yield `time_s,target_mm,position_mm,output_pct,velocity_mm_s,simulated_velocity_mm_s,position_residual_mm\r\n`;
   const cell = (value: number): string => (Number.isNaN(value) ? '' : String(value));
-  for (let from = 0; from < length; from += 5000) {
+  for (let from = 0; from < length; from += PART) {
     let lines = '';
-    for (let i = from; i < Math.min(length, from + 5000); i++)
-      lines += `${Number((i * sampleTime).toFixed(7))},${TRACE_COLUMNS.map((name) => cell(columns[name][i]!)).join(',')}\r\n`;
+    for (let i = from; i < Math.min(length, from + PART); i++)
+      lines += `${timeOf(i, sampleTime)},${TRACE_COLUMNS.map((name) => cell(columns[name][i]!)).join(',')}\r\n`;
     yield lines;
   }
+}
+
+function* traceJsonParts({ sampleTime, length, columns }: CaptureTrace): Generator<string> {
+  const all = [
+    { name: 'time', at: (i: number) => timeOf(i, sampleTime) },
+    ...TRACE_COLUMNS.map((name) => ({ name, at: (i: number) => columns[name][i]! })),
+  ];
+  for (const [column, { name, at }] of all.entries()) {
+    yield `${column === 0 ? '{' : '],'}${JSON.stringify(name)}:[`;
+    for (let from = 0; from < length; from += PART) {
+      const values = Array.from({ length: Math.min(PART, length - from) }, (_, i) => at(from + i));
+      // JSON.stringify writes NaN as null.
+      yield `${from === 0 ? '' : ','}${JSON.stringify(values).slice(1, -1)}`;
+    }
+  }
+  yield ']}';
 }
 
 function resultLines({ identification }: CaptureDto): string {

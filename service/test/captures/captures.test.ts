@@ -100,6 +100,10 @@ describe('an uploaded capture', () => {
     expect(csv[6]!.split(',').slice(0, 4).map(Number)).toEqual(
       fifth.map((value) => expect.closeTo(value, 4) as unknown),
     );
+    const { body: json } = await caller.get(`/api/v1/captures/${id}/trace.json`).expect(200);
+    const samples = json as Record<string, (number | null)[]>;
+    expect(Object.values(samples).map(({ length }) => length)).toEqual(Array(7).fill(20_000));
+    expect([samples.time![5], samples.position![5]]).toEqual([0.005, Number(csv[6]!.split(',')[2])]);
     const result = (await caller.get(`/api/v1/captures/${id}/result.csv`).expect(200)).text;
     expect(result).toContain(`gain,${gain!.value},${gain!.low},${gain!.high},(mm/s)/%`);
     // The upload itself is gone; the trace stays.
@@ -274,24 +278,25 @@ describe('a large upload', () => {
         await Promise.race([once(sending, 'drain').catch(() => undefined), answer]);
     return { sending, answer };
   }
+  const kept = (): Promise<number> => service.dataSource.getRepository(Capture).count();
   const incoming = (): string[] => readdirSync(join(folder, 'incoming'));
 
   test('of more than 200 MB is refused with 413; nothing is stored', async () => {
-    const before = stored();
+    const before = await kept();
     const { sending, answer } = await begin(201);
     sending.end('\r\n--edge--\r\n');
     expect(await answer).toBe(413);
     await until('the upload is gone', () => incoming().length === 0);
-    expect(stored()).toBe(before);
+    expect(await kept()).toBe(before);
   });
 
   test('whose connection breaks leaves nothing', async () => {
-    const before = stored();
+    const before = await kept();
     const { sending } = await begin(2);
     await until('it is coming in', () => incoming().length > 0);
     sending.destroy();
     await until('the upload is gone', () => incoming().length === 0);
-    expect(stored()).toBe(before);
+    expect(await kept()).toBe(before);
   });
 
   test('of more rows than are read is refused at the first row too many', async () => {
@@ -316,7 +321,7 @@ describe('who may what', () => {
     const { id } = body as { id: number };
     await ended(id);
     const stranger = await service.as('only-kiln');
-    for (const path of ['', '/trace', '/trace.csv', '/result.csv'])
+    for (const path of ['', '/trace', '/trace.csv', '/trace.json', '/result.csv'])
       await stranger.get(`/api/v1/captures/${id}${path}`).expect(404);
     await stranger.post(`/api/v1/captures/${id}/baseline`).send({}).expect(404);
     const { body: list } = await stranger.get('/api/v1/captures').expect(200);

@@ -42,11 +42,15 @@ export function MoveChart({
   const describedBy = useId();
   const { ref, width } = useChartWidth();
   const values = series.flatMap((one) => one.values.filter((v) => !Number.isNaN(v)));
-  const largest = Math.max(1e-9, limit?.value ?? 0, ...values.map(Math.abs)) * 1.1;
-  const low = Math.min(0, ...values) < 0 || limit ? -largest : 0;
+  const most = Math.max(0, ...values, limit?.value ?? 0);
+  const least = Math.min(0, ...values, -(limit?.value ?? 0));
+  const largest = Math.max(1e-9, most, -least);
+  // Of an end that zero nearly reaches only the other is named.
+  const ends = [most, least].filter((end) => Math.abs(end) > 0.15 * largest);
+  const [high, low] = [1.1 * Math.max(most, 1e-9), 1.1 * least];
   const span = Math.max(1e-9, ...series.map(({ time }) => time.at(-1) ?? 0));
   const x = (t: number): number => LEFT + ((width - LEFT - RIGHT) * t) / span;
-  const y = (v: number): number => TOP + (height - TOP - BOTTOM) * (1 - (v - low) / (largest - low));
+  const y = (v: number): number => TOP + (height - TOP - BOTTOM) * (1 - (v - low) / (high - low));
   const path = ({ time, values: v }: Series): string =>
     time
       .map((t, i) =>
@@ -93,7 +97,7 @@ export function MoveChart({
             </text>
           </>
         )}
-        {[largest / 1.1, 0, ...(low < 0 ? [-largest / 1.1] : [])].map((v) => (
+        {[0, ...ends].map((v) => (
           <text key={v} x={LEFT - 6} y={y(v) + 4} textAnchor="end" fontSize="12" fill="var(--soft)">
             {v === 0 ? '0' : v.toFixed(largest >= 10 ? 0 : digits).replace('-', '−')}
           </text>

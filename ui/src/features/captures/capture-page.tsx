@@ -153,8 +153,8 @@ function Actions({ capture }: { capture: Capture }) {
     onSuccess: () => navigate('/captures'),
   });
   const save = useMutation({
-    mutationFn: (file: 'trace' | 'result') =>
-      download(`/api/v1/captures/${capture.id}/${file}.csv`, `capture-${capture.id}-${file}.csv`),
+    mutationFn: (file: 'trace.csv' | 'trace.json' | 'result.csv') =>
+      download(`/api/v1/captures/${capture.id}/${file}`, `capture-${capture.id}-${file}`),
   });
   const { identification } = capture;
   return (
@@ -164,10 +164,13 @@ function Actions({ capture }: { capture: Capture }) {
           Make this the baseline …
         </Button>
       )}
-      <Button size="xs" variant="default" onClick={() => save.mutate('trace')}>
+      <Button size="xs" variant="default" onClick={() => save.mutate('trace.csv')}>
         Trace as CSV
       </Button>
-      <Button size="xs" variant="default" onClick={() => save.mutate('result')}>
+      <Button size="xs" variant="default" onClick={() => save.mutate('trace.json')}>
+        Trace as JSON
+      </Button>
+      <Button size="xs" variant="default" onClick={() => save.mutate('result.csv')}>
         Result as CSV
       </Button>
       <Button
