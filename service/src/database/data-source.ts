@@ -19,9 +19,11 @@ import { UserRole } from '../people/user-role.entity.js';
 import { User } from '../people/user.entity.js';
 import { Proposal, ProposalEvent, ProposalVersion } from '../proposals/proposal.entity.js';
 import { SiteChecklistItem } from '../proposals/site-checklist.entity.js';
+import { CalendarFeed } from '../rota/calendar-feed.entity.js';
 import { HandoverNote } from '../rota/handover-note.entity.js';
 import { RotaLayer } from '../rota/rota-layer.entity.js';
 import { RotaOverride } from '../rota/rota-override.entity.js';
+import { RotaSwap } from '../rota/rota-swap.entity.js';
 import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
 import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
@@ -29,6 +31,7 @@ import { Captures1764634000000 } from './migrations/1764634000000-captures.js';
 import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpoint-parts.js';
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
+import { RotaLayers1764738000100 } from './migrations/1764738000100-rota-layers.js';
 
 export const ENTITIES = [
   Site,
@@ -56,6 +59,8 @@ export const ENTITIES = [
   AuditEntry,
   RotaLayer,
   RotaOverride,
+  RotaSwap,
+  CalendarFeed,
   HandoverNote,
   Mail,
   Capture,
@@ -82,6 +87,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       CheckpointParts1764635000100,
       ChangesAtMachines1764637000100,
       ProposalVersions1764637000200,
+      RotaLayers1764738000100,
     ],
     migrationsRun: true,
     synchronize: false,

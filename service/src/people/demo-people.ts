@@ -72,7 +72,14 @@ export async function seedDemoRota(
   for (const [index, siteId] of siteIds.entries()) {
     const first = index % members.length;
     const memberIds = [...members.slice(first), ...members.slice(0, first)];
-    await manager.insert(RotaLayer, { siteId, memberIds, handOverTime: '06:00', rotationDays: 7, startDate });
+    await manager.insert(RotaLayer, {
+      siteId,
+      name: 'Week by week',
+      memberIds,
+      handOverTime: '06:00',
+      rotationDays: 7,
+      startDate,
+    });
     for (const { daysAgo, by, text } of NOTES)
       await manager.insert(HandoverNote, {
         siteId,

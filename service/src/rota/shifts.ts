@@ -16,6 +16,21 @@ export interface Rotation {
   startDate: string;
 }
 
+/** When a layer holds. */
+export interface LayerTimes {
+  /** ISO 8601: Monday is 1, Sunday is 7; all seven for every day. */
+  weekdays: number[];
+  /** HH:mm on the site's clock; null for the whole day. */
+  hours: { from: string; to: string } | null;
+}
+
+/** A rotation that holds at certain times. */
+export interface Layer extends Rotation, LayerTimes {
+  name: string;
+  /** YYYY-MM-DD: its last turn ends at hand-over on this day; null while it goes on. */
+  endDate: string | null;
+}
+
 export interface Override {
   userId: number;
   from: Date;
@@ -29,6 +44,8 @@ export interface Shift {
   userId: number;
   /** Somebody stands in: not by the rotation. */
   override: boolean;
+  /** Name of the layer; null by an override. */
+  layer: string | null;
 }
 
 export interface Gap {
@@ -66,37 +83,99 @@ export function rotationShifts(rotation: Rotation, zone: string, from: Date, to:
     const shift = { from: begin(turn), to: begin(turn + 1) };
     if (shift.from >= to) return shifts;
     const userId = memberIds[turn % memberIds.length];
-    if (shift.to > from && userId !== undefined) shifts.push({ ...shift, userId, override: false });
+    if (shift.to > from && userId !== undefined)
+      shifts.push({ ...shift, userId, override: false, layer: null });
     if (userId === undefined) return shifts;
   }
 }
 
+/** ms */
+const DAY = 24 * 3_600_000;
+
 /**
- * Who is on call between two instants, in order: the rotation with overrides put over it. Shifts at the ends are whole.
+ * When a layer holds, as stretches that touch the time from `from` to `to`: by days of the week, by hours of the day
+ * (over midnight where they end no later than they begin; the day is the one on which they begin), or always.
+ */
+function stretchesOf({ weekdays, hours }: LayerTimes, zone: string, { from, to }: Gap): Gap[] {
+  if (!hours && weekdays.length === 7) return [{ from: new Date(-MAX_DATE), to: new Date(MAX_DATE) }];
+  const begin = hours?.from ?? '00:00';
+  const end = hours?.to ?? '00:00';
+  const first = dayjs(from.getTime() - 2 * DAY)
+    .tz(zone)
+    .format('YYYY-MM-DD');
+  const stretches: Gap[] = [];
+  for (let date = first; ; date = addDays(date, 1)) {
+    const start = localInstant(date, begin, zone);
+    if (start >= to) return stretches;
+    // ISO 8601: Monday is 1, Sunday is 7.
+    if (!weekdays.includes(dayjs.utc(date).day() || 7)) continue;
+    const stop = localInstant(end <= begin ? addDays(date, 1) : date, end, zone);
+    const last = stretches.at(-1);
+    if (last && last.to >= start) last.to = stop;
+    else if (stop > start) stretches.push({ from: start, to: stop });
+  }
+}
+
+/** The last instant that a Date can hold, ms (ECMA-262, Time Values). */
+const MAX_DATE = 8.64e15;
+
+/** A layer's turns that touch a stretch of time, cut to the days and hours in which the layer holds. */
+function layerShifts(layer: Layer, zone: string, span: Gap): Shift[] {
+  const end = layer.endDate ? localInstant(layer.endDate, layer.handOverTime, zone) : new Date(MAX_DATE);
+  return rotationShifts(layer, zone, span.from, span.to).flatMap((turn) =>
+    stretchesOf(layer, zone, turn).flatMap((stretch) => {
+      const from = later(turn.from, stretch.from);
+      const to = earlier(earlier(turn.to, stretch.to), end);
+      return from < to ? [{ ...turn, from, to, layer: layer.name }] : [];
+    }),
+  );
+}
+
+/** Lays a shift over others: it takes their time where they overlap. */
+function layOver(shifts: readonly Shift[], over: Shift): Shift[] {
+  return [
+    ...shifts.flatMap((shift) => [
+      ...(shift.from < over.from ? [{ ...shift, to: earlier(shift.to, over.from) }] : []),
+      ...(shift.to > over.to ? [{ ...shift, from: later(shift.from, over.to) }] : []),
+    ]),
+    over,
+  ];
+}
+
+const touches = (a: Gap, b: Gap): boolean => a.to > b.from && a.from < b.to;
+
+/**
+ * Who is on call between two instants, in order: the layers, a later one over an earlier one, and overrides over all.
+ * Shifts at the ends are whole: they say when somebody came on call, and when they hand over in fact.
  *
  * @param overrides in the order in which they were made: where they overlap, the later counts
- * @param available whether somebody can be on call; the turn of one who cannot is a gap, their override is not looked at
+ * @param available whether somebody can be on call; the turn of one who cannot leaves what lies under it, their override
+ *   is not looked at
  */
 export function shiftsBetween(
-  rotation: Rotation | null,
+  layers: readonly Layer[],
   overrides: readonly Override[],
   zone: string,
-  { from, to }: Gap,
+  span: Gap,
   available: (userId: number) => boolean = () => true,
 ): Shift[] {
-  let shifts = rotation
-    ? rotationShifts(rotation, zone, from, to).filter(({ userId }) => available(userId))
-    : [];
-  for (const override of overrides) {
-    if (override.to <= from || override.from >= to || !available(override.userId)) continue;
-    shifts = shifts.flatMap((shift) => [
-      ...(shift.from < override.from ? [{ ...shift, to: earlier(shift.to, override.from) }] : []),
-      ...(shift.to > override.to ? [{ ...shift, from: later(shift.from, override.to) }] : []),
-    ]);
-    shifts.push({ from: override.from, to: override.to, userId: override.userId, override: true });
-  }
-  return shifts
-    .filter((shift) => shift.to > from && shift.from < to)
+  const covering = overrides
+    .filter(({ userId }) => available(userId))
+    .map(({ from, to, userId }): Shift => ({ from, to, userId, override: true, layer: null }));
+  // What touches the span reaches further; only with everything over that whole reach is its end the true one.
+  const touching = [...layers.flatMap((layer) => layerShifts(layer, zone, span)), ...covering].filter(
+    (shift) => touches(shift, span),
+  );
+  const reach = {
+    from: touching.reduce((at, { from }) => earlier(at, from), span.from),
+    to: touching.reduce((at, { to }) => later(at, to), span.to),
+  };
+  return [
+    ...layers.flatMap((layer) => layerShifts(layer, zone, reach)).filter(({ userId }) => available(userId)),
+    ...covering.filter((shift) => touches(shift, reach)),
+  ]
+    .reduce<Shift[]>(layOver, [])
+    .filter((shift) => touches(shift, span))
     .sort((a, b) => a.from.getTime() - b.from.getTime());
 }
 

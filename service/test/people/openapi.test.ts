@@ -15,6 +15,7 @@ const OPEN = [
   'post /api/v1/auth/password-reset',
   'get /api/v1/invitations/{token}',
   'post /api/v1/invitations/{token}/accept',
+  'get /api/v1/calendar/{token}.ics',
 ];
 
 test('the OpenAPI document names the shape of every answer and which operations ask for a token', async () => {

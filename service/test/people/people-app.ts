@@ -11,40 +11,20 @@ import { mkdtempSync, rmSync } from 'node:fs';
 import { tmpdir } from 'node:os';
 import { join } from 'node:path';
 import request from 'supertest';
-import { DataSource, type MigrationInterface, type QueryRunner } from 'typeorm';
-import { AuditEntry } from '../../src/audit/audit-entry.entity.js';
+import { DataSource } from 'typeorm';
 import { AuditModule } from '../../src/audit/audit.module.js';
 import { AuthModule } from '../../src/auth/auth.module.js';
-import { RefreshToken } from '../../src/auth/refresh-token.entity.js';
-import { People1764547201000 } from '../../src/database/migrations/1764547201000-people.js';
+import { dataSourceOptions } from '../../src/database/data-source.js';
 import { Transactions } from '../../src/database/transactions.js';
 import { Site } from '../../src/fleet/site.entity.js';
-import { Mail } from '../../src/notifications/mail.entity.js';
 import { NotificationsModule } from '../../src/notifications/notifications.module.js';
 import { DEMO_PASSWORD, seedDemoPeople, seedDemoRota } from '../../src/people/demo-people.js';
-import { Invitation } from '../../src/people/invitation.entity.js';
 import { PeopleModule } from '../../src/people/people.module.js';
 import { UserRole } from '../../src/people/user-role.entity.js';
 import { User } from '../../src/people/user.entity.js';
-import { HandoverNote } from '../../src/rota/handover-note.entity.js';
-import { RotaLayer } from '../../src/rota/rota-layer.entity.js';
 import { RotaModule } from '../../src/rota/rota.module.js';
-import { RotaOverride } from '../../src/rota/rota-override.entity.js';
 import type { Settings } from '../../src/settings.js';
 import { setup } from '../../src/setup.js';
-
-/** The table of the fleet's migration that people's tables refer to. */
-class Sites1764547200000 implements MigrationInterface {
-  name = 'Sites1764547200000';
-  up(runner: QueryRunner): Promise<unknown> {
-    return runner.query(
-      `CREATE TABLE "site" ("id" integer PRIMARY KEY AUTOINCREMENT NOT NULL, "name" varchar NOT NULL, "timeZone" varchar NOT NULL, "createdAt" datetime NOT NULL DEFAULT (datetime('now')), CONSTRAINT "UQ_9669a09fcc0eb6d2794a658f648" UNIQUE ("name"))`,
-    );
-  }
-  down(runner: QueryRunner): Promise<unknown> {
-    return runner.query('DROP TABLE "site"');
-  }
-}
 
 @Global()
 @Module({ providers: [Transactions], exports: [Transactions] })
@@ -92,26 +72,7 @@ export async function startPeople(
       // Without it a test decides itself when the outbox is worked.
       ...(schedule ? [ScheduleModule.forRoot()] : []),
       ThrottlerModule.forRoot({ throttlers: [{ ttl: 60_000, limit: 1_200 }] }),
-      TypeOrmModule.forRoot({
-        type: 'better-sqlite3',
-        database: settings.DATABASE,
-        enableWAL: true,
-        prepareDatabase: (db: import('better-sqlite3').Database) => void db.pragma('foreign_keys = ON'),
-        entities: [
-          Site,
-          User,
-          UserRole,
-          Invitation,
-          RefreshToken,
-          AuditEntry,
-          RotaLayer,
-          RotaOverride,
-          HandoverNote,
-          Mail,
-        ],
-        migrations: [Sites1764547200000, People1764547201000],
-        migrationsRun: true,
-      }),
+      TypeOrmModule.forRoot(dataSourceOptions(settings.DATABASE)),
       TransactionsModule,
       AuditModule,
       AuthModule,

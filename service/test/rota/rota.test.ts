@@ -11,6 +11,12 @@ let hall: number;
 let yard: number;
 const idOf = async (start: string): Promise<number> =>
   (await people.dataSource.getRepository(User).findOneByOrFail({ email: `${start}@tarnwick.example` })).id;
+/** A body of one layer. */
+const oneLayer = (layer: object) => ({
+  layers: [
+    { name: 'Week by week', handOverTime: '06:00', rotationDays: 7, startDate: '2026-01-05', ...layer },
+  ],
+});
 const inHours = (hours: number) =>
   new Date(Math.floor(Date.now() / 1000) * 1000 + hours * HOUR).toISOString();
 
@@ -27,11 +33,11 @@ describe('the rota of a site', () => {
     expect(body).toMatchObject({
       siteId: yard,
       timeZone: 'America/New_York',
-      layer: { handOverTime: '06:00', rotationDays: 7 },
+      layers: [{ handOverTime: '06:00', rotationDays: 7, endDate: null, hours: null }],
       overrides: [],
       gaps: [],
     });
-    expect(body.layer.members.map(({ name }: { name: string }) => name)).toEqual([
+    expect(body.layers[0].members.map(({ name }: { name: string }) => name)).toEqual([
       'Wren Castellow',
       'Saskia Thornby',
       'Idris Pellworth',
@@ -64,9 +70,11 @@ describe('the rota of a site', () => {
     const set = (members: unknown, changed: object = {}) =>
       admin
         .put(`/api/v1/rota/${hall}`)
-        .send({ members, handOverTime: '18:00', rotationDays: 1, startDate: '2026-01-01', ...changed });
+        .send(
+          oneLayer({ members, handOverTime: '18:00', rotationDays: 1, startDate: '2026-01-01', ...changed }),
+        );
     const { body } = await set([technician, engineer]).expect(200);
-    expect(body.layer.members.map(({ userId }: { userId: number }) => userId)).toEqual([
+    expect(body.layers[0].members.map(({ userId }: { userId: number }) => userId)).toEqual([
       technician,
       engineer,
     ]);
@@ -84,14 +92,14 @@ describe('the rota of a site', () => {
     const { body: audit } = await admin.get(`/api/v1/audit?subjectType=rota&subjectId=${hall}`).expect(200);
     expect(audit.items[0]).toMatchObject({
       action: 'rota.changed',
-      before: { handOverTime: '06:00', rotationDays: 7 },
-      after: { handOverTime: '18:00', rotationDays: 1, memberIds: [technician, engineer] },
+      before: [{ handOverTime: '06:00', rotationDays: 7 }],
+      after: [{ handOverTime: '18:00', rotationDays: 1, memberIds: [technician, engineer] }],
     });
   });
 
   it('is changed by nobody else, and does not exist for people of other sites', async () => {
     const [technician] = await Promise.all(['technician'].map(idOf));
-    const body = { members: [technician], handOverTime: '06:00', rotationDays: 7, startDate: '2026-01-01' };
+    const body = oneLayer({ members: [technician] });
     for (const who of ['viewer', 'technician', 'engineer', 'approver'])
       await (await people.as(who)).put(`/api/v1/rota/${hall}`).send(body).expect(403);
     await addPerson(people, 'halladmin', [{ siteId: hall, role: 'administrator' }]);
@@ -107,7 +115,7 @@ describe('the rota of a site', () => {
     const rota = people.app.get(RotaService);
     const gone = await addPerson(people, 'gone', [{ siteId: yard, role: 'technician' }]);
     const admin = await people.as('admin');
-    const set = { members: [gone.id], handOverTime: '06:00', rotationDays: 7, startDate: '2026-01-05' };
+    const set = oneLayer({ members: [gone.id] });
     await admin.put(`/api/v1/rota/${yard}`).send(set).expect(200);
     expect(await rota.onCall(yard, new Date())).toMatchObject({ userId: gone.id, email: gone.email });
     await admin.patch(`/api/v1/people/${gone.id}`).send({ disabled: true }).expect(200);
@@ -119,7 +127,7 @@ describe('the rota of a site', () => {
       siteId: yard,
       userId: null,
     });
-    expect(body.layer.members).toEqual([{ userId: gone.id, name: 'gone' }]);
+    expect(body.layers[0].members).toEqual([{ userId: gone.id, name: 'gone' }]);
     await admin
       .patch(`/api/v1/people/${gone.id}`)
       .send({ disabled: false, roles: [{ siteId: yard, role: 'viewer' }] })
@@ -132,12 +140,7 @@ describe('the rota of a site', () => {
     const admin = await people.as('admin');
     await admin
       .put(`/api/v1/rota/${hall}`)
-      .send({
-        members: [technician, engineer],
-        handOverTime: '06:00',
-        rotationDays: 1,
-        startDate: '2027-03-01',
-      })
+      .send(oneLayer({ members: [technician, engineer], rotationDays: 1, startDate: '2027-03-01' }))
       .expect(200);
     const rota = people.app.get(RotaService);
     // Clocks in London go forward on 28 March 2027.
@@ -156,7 +159,7 @@ describe('standing in', () => {
     const admin = await people.as('admin');
     await admin
       .put(`/api/v1/rota/${hall}`)
-      .send({ members: [technician], handOverTime: '06:00', rotationDays: 7, startDate: '2026-01-05' })
+      .send(oneLayer({ members: [technician] }))
       .expect(200);
     const add = async (who: string, userId: number | undefined, from: string, to: string) =>
       (await people.as(who))

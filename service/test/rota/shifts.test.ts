@@ -5,6 +5,7 @@ import {
   localInstant,
   rotationShifts,
   shiftsBetween,
+  type Layer,
   type Override,
   type Rotation,
   type Shift,
@@ -18,6 +19,14 @@ const daily = (members: number[], startDate = '2026-01-01', handOverTime = '06:0
   handOverTime,
   rotationDays: 1,
   startDate,
+});
+const layer = (rotation: Rotation, times: Partial<Layer> = {}): Layer => ({
+  ...rotation,
+  name: 'Rotation',
+  endDate: null,
+  weekdays: [1, 2, 3, 4, 5, 6, 7],
+  hours: null,
+  ...times,
 });
 const written = (shifts: Shift[]) =>
   shifts.map(
@@ -142,6 +151,103 @@ describe('rotation', () => {
   });
 });
 
+describe('layers', () => {
+  const zone = 'Europe/London';
+  const base = layer({ ...daily([7]), rotationDays: 7, startDate: '2026-03-02' }, { name: 'All hours' });
+  const office = layer(daily([1, 2], '2026-03-02', '00:00'), {
+    name: 'Office hours',
+    weekdays: [1, 2, 3, 4, 5],
+    hours: { from: '08:00', to: '17:00' },
+  });
+
+  it('a later one takes its days and hours from an earlier one, which holds again afterwards', () => {
+    const span = { from: at('2026-03-05T12:00Z'), to: at('2026-03-07T00:00Z') }; // Thursday to Friday
+    const shifts = shiftsBetween([base, office], [], zone, span);
+    expect(written(shifts)).toEqual([
+      '2 03-05T08:00 03-05T17:00',
+      '7 03-05T17:00 03-06T08:00',
+      '1 03-06T08:00 03-06T17:00',
+      '7 03-06T17:00 03-09T06:00',
+    ]);
+    expect(shifts.map((shift) => shift.layer)).toEqual([
+      'Office hours',
+      'All hours',
+      'Office hours',
+      'All hours',
+    ]);
+    // The other way round the base covers all.
+    expect(written(shiftsBetween([office, base], [], zone, span))).toEqual(['7 03-02T06:00 03-09T06:00']);
+  });
+
+  it('a shift says when it hands over in fact, though what follows lies outside the time asked for', () => {
+    const now = { from: at('2026-03-05T20:00Z'), to: at('2026-03-05T20:00:00.001Z') };
+    const late = { userId: 9, from: at('2026-03-06T02:00Z'), to: at('2026-03-06T03:00Z') };
+    expect(written(shiftsBetween([base, office], [], zone, now))).toEqual(['7 03-05T17:00 03-06T08:00']);
+    expect(written(shiftsBetween([base, office], [late], zone, now))).toEqual(['7 03-05T17:00 03-06T02:00']);
+  });
+
+  it('keeps its hours on the clock over a change of the clocks, in both directions and two zones', () => {
+    const night = layer(daily([1], '2026-01-01', '12:00'), { hours: { from: '22:00', to: '06:00' } });
+    const hours = (where: string, date: string): number[] => {
+      const noon = localInstant(date, '12:00', where);
+      return shiftsBetween([night], [], where, { from: noon, to: new Date(noon.getTime() + DAY) })
+        .filter(({ from }) => from >= noon)
+        .map(({ from, to }) => (to.getTime() - from.getTime()) / HOUR);
+    };
+    expect(hours('Europe/London', '2026-03-27')).toEqual([8]);
+    expect(hours('Europe/London', '2026-03-28')).toEqual([7]);
+    expect(hours('Europe/London', '2026-10-24')).toEqual([9]);
+    expect(hours('America/New_York', '2026-03-07')).toEqual([7]);
+    expect(hours('America/New_York', '2026-10-31')).toEqual([9]);
+  });
+
+  it('ends with its last day, and leaves what lies under it where its person cannot be on call', () => {
+    const span = { from: at('2026-03-05T12:00Z'), to: at('2026-03-06T12:00Z') };
+    const ended = { ...office, endDate: '2026-03-06' };
+    expect(shiftsBetween([base, ended], [], zone, span).map(({ userId }) => userId)).toEqual([2, 7]);
+    expect(
+      shiftsBetween([base, office], [], zone, span, (id) => id !== 1).map(({ userId }) => userId),
+    ).toEqual([2, 7]);
+  });
+
+  it('at every instant the last layer that holds counts, by the wall clock of Intl', () => {
+    const times = fc.record({
+      weekdays: fc.uniqueArray(fc.integer({ min: 1, max: 7 }), { minLength: 1 }),
+      from: fc.integer({ min: 0, max: 23 }),
+      to: fc.integer({ min: 0, max: 23 }),
+    });
+    const clockHour = (hour: number): string => `${String(hour).padStart(2, '0')}:00`;
+    fc.assert(
+      fc.property(
+        times,
+        fc.constantFrom('Asia/Kolkata', 'America/New_York'),
+        ({ weekdays, from, to }, where) => {
+          const upper = layer(daily([2], '2025-12-01', '00:00'), {
+            weekdays,
+            hours: { from: clockHour(from), to: clockHour(to) },
+          });
+          const span = { from: at('2026-06-01T00:00Z'), to: at('2026-06-09T00:00Z') };
+          const under = layer(daily([1], '2025-12-01'));
+          const shifts = shiftsBetween([under, upper], [], where, span);
+          for (let t = span.from.getTime(); t < span.to.getTime(); t += 3 * HOUR) {
+            const on = shifts.filter((shift) => shift.from.getTime() <= t && t < shift.to.getTime());
+            const [day, clock] = wallClock(new Date(t), where).split(' ') as [string, string];
+            const today = new Date(`${day}T00:00Z`).getUTCDay() || 7;
+            const hour = Number(clock.slice(0, 2));
+            const held =
+              from < to
+                ? weekdays.includes(today) && hour >= from && hour < to
+                : (weekdays.includes(today) && hour >= from) ||
+                  (weekdays.includes(today === 1 ? 7 : today - 1) && hour < to);
+            expect(on.map(({ userId }) => userId)).toEqual([held ? 2 : 1]);
+          }
+        },
+      ),
+      { numRuns: 40 },
+    );
+  });
+});
+
 describe('overrides', () => {
   const week = { from: at('2026-01-05T00:00Z'), to: at('2026-01-07T00:00Z') };
   const override = (userId: number, from: string, to: string): Override => ({
@@ -152,7 +258,7 @@ describe('overrides', () => {
 
   it('cut the turns that they cover and leave the rest', () => {
     const shifts = shiftsBetween(
-      daily([7, 8]),
+      [layer(daily([7, 8]))],
       [override(3, '2026-01-05T12:00Z', '2026-01-06T08:00Z')],
       'UTC',
       week,
@@ -167,10 +273,15 @@ describe('overrides', () => {
   });
 
   it('split a turn in two', () => {
-    const shifts = shiftsBetween(daily([7]), [override(3, '2026-01-05T12:00Z', '2026-01-05T14:00Z')], 'UTC', {
-      from: at('2026-01-05T07:00Z'),
-      to: at('2026-01-05T20:00Z'),
-    });
+    const shifts = shiftsBetween(
+      [layer(daily([7]))],
+      [override(3, '2026-01-05T12:00Z', '2026-01-05T14:00Z')],
+      'UTC',
+      {
+        from: at('2026-01-05T07:00Z'),
+        to: at('2026-01-05T20:00Z'),
+      },
+    );
     expect(written(shifts)).toEqual([
       '7 01-05T06:00 01-05T12:00',
       '3 01-05T12:00 01-05T14:00',
@@ -182,14 +293,14 @@ describe('overrides', () => {
     const first = override(3, '2026-01-05T06:00Z', '2026-01-05T18:00Z');
     const second = override(4, '2026-01-05T12:00Z', '2026-01-05T14:00Z');
     const who = (overrides: Override[]) =>
-      shiftsBetween(null, overrides, 'UTC', week).map(({ userId }) => userId);
+      shiftsBetween([], overrides, 'UTC', week).map(({ userId }) => userId);
     expect(who([first, second])).toEqual([3, 4, 3]);
     expect(who([second, first])).toEqual([3]);
   });
 
   it('of somebody who cannot be on call are not looked at, and their turns are gaps', () => {
     const overrides = [override(3, '2026-01-05T12:00Z', '2026-01-05T14:00Z')];
-    const shifts = shiftsBetween(daily([7, 8]), overrides, 'UTC', week, (id) => id === 8);
+    const shifts = shiftsBetween([layer(daily([7, 8]))], overrides, 'UTC', week, (id) => id === 8);
     expect(shifts.map(({ userId }) => userId)).toEqual([8, 8]);
     expect(gapsBetween(shifts, week)).toEqual([
       { from: at('2026-01-05T06:00Z'), to: at('2026-01-06T06:00Z') },
@@ -205,7 +316,7 @@ describe('overrides', () => {
     fc.assert(
       fc.property(fc.array(someOverride, { maxLength: 6 }), fc.boolean(), (overrides, withRotation) => {
         const rotation = withRotation ? daily([7, 8]) : null;
-        const shifts = shiftsBetween(rotation, overrides, 'UTC', week);
+        const shifts = shiftsBetween(rotation ? [layer(rotation)] : [], overrides, 'UTC', week);
         for (let t = week.from.getTime(); t < week.to.getTime(); t += HOUR / 2) {
           const on = shifts.filter(({ from, to }) => from.getTime() <= t && t < to.getTime());
           const last = overrides.findLast(({ from, to }) => from.getTime() <= t && t < to.getTime());
@@ -225,10 +336,11 @@ describe('gaps', () => {
     to: at(to),
     userId: 1,
     override: false,
+    layer: null,
   });
 
   it('are the whole time where there is no rota', () => {
-    expect(gapsBetween(shiftsBetween(null, [], 'UTC', span), span)).toEqual([span]);
+    expect(gapsBetween(shiftsBetween([], [], 'UTC', span), span)).toEqual([span]);
   });
 
   it('are found at both ends and between', () => {

@@ -1,19 +1,26 @@
-import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
+import { applyDecorators } from '@nestjs/common';
+import { ApiProperty, ApiPropertyOptional, OmitType } from '@nestjs/swagger';
 import { Transform, Type } from 'class-transformer';
 import {
   ArrayMaxSize,
   ArrayMinSize,
+  ArrayUnique,
   IsArray,
+  IsBoolean,
   IsInt,
   IsISO8601,
   IsNotEmpty,
+  IsObject,
   IsOptional,
   IsString,
   Matches,
   Max,
   MaxLength,
   Min,
+  ValidateIf,
+  ValidateNested,
 } from 'class-validator';
+import { NullableTime, PageOf } from '../../page.js';
 
 const trimmed = () =>
   Transform(({ value }: { value: unknown }) => (typeof value === 'string' ? value.trim() : value));
@@ -25,7 +32,32 @@ export class RotaQueryDto {
   siteId: number;
 }
 
-export class SetRotationDto {
+const TIME_OF_DAY = /^([01]\d|2[0-3]):[0-5]\d$/;
+const IsTimeOfDay = () => Matches(TIME_OF_DAY, { message: '$property must be a time of day such as 06:00' });
+const IsDay = () =>
+  applyDecorators(
+    Matches(/^\d{4}-\d{2}-\d{2}$/, { message: '$property must be a day such as 2026-11-30' }),
+    IsISO8601({ strict: true }, { message: '$property must be a day that exists' }),
+  );
+
+export class HoursDto {
+  @ApiProperty({ example: '08:00', description: "On the site's clock" })
+  @IsTimeOfDay()
+  from: string;
+
+  @ApiProperty({ example: '17:00', description: 'No later than `from`: on the next day' })
+  @IsTimeOfDay()
+  to: string;
+}
+
+export class SetLayerDto {
+  @ApiProperty({ example: 'Weekends' })
+  @trimmed()
+  @IsString()
+  @IsNotEmpty()
+  @MaxLength(60)
+  name: string;
+
   @ApiProperty({ type: [Number], description: 'Ids of people, in the order of their turns' })
   @IsArray()
   @ArrayMinSize(1)
@@ -34,8 +66,7 @@ export class SetRotationDto {
   members: number[];
 
   @ApiProperty({ example: '06:00', description: "On the site's clock" })
-  @IsString()
-  @Matches(/^([01]\d|2[0-3]):[0-5]\d$/, { message: 'handOverTime must be a time of day such as 06:00' })
+  @IsTimeOfDay()
   handOverTime: string;
 
   @ApiProperty({ minimum: 1, maximum: 60 })
@@ -45,9 +76,55 @@ export class SetRotationDto {
   rotationDays: number;
 
   @ApiProperty({ example: '2026-11-30', description: 'The first turn begins at hand-over on this day' })
-  @Matches(/^\d{4}-\d{2}-\d{2}$/, { message: 'startDate must be a day such as 2026-11-30' })
-  @IsISO8601({ strict: true }, { message: 'startDate must be a day that exists' })
+  @IsDay()
   startDate: string;
+
+  @ApiPropertyOptional({
+    type: String,
+    nullable: true,
+    description: 'The last turn ends at hand-over on this day; null while it goes on',
+  })
+  @IsOptional()
+  @IsDay()
+  endDate: string | null = null;
+
+  @ApiPropertyOptional({
+    type: [Number],
+    default: [1, 2, 3, 4, 5, 6, 7],
+    description: 'Days of the week on which the layer holds (ISO 8601: Monday is 1, Sunday is 7)',
+  })
+  @IsOptional()
+  @IsArray()
+  @ArrayMinSize(1)
+  @ArrayUnique()
+  @IsInt({ each: true })
+  @Min(1, { each: true })
+  @Max(7, { each: true })
+  weekdays: number[] = [1, 2, 3, 4, 5, 6, 7];
+
+  @ApiPropertyOptional({
+    type: HoursDto,
+    nullable: true,
+    description: 'Hours of these days in which the layer holds; null for the whole day',
+  })
+  @IsOptional()
+  @IsObject()
+  @ValidateNested()
+  @Type(() => HoursDto)
+  hours: HoursDto | null = null;
+}
+
+export class SetLayersDto {
+  @ApiProperty({
+    type: [SetLayerDto],
+    description: 'The lowest first: where two hold at once, the later in this list counts',
+  })
+  @IsArray()
+  @ArrayMaxSize(10)
+  @IsObject({ each: true })
+  @ValidateNested({ each: true })
+  @Type(() => SetLayerDto)
+  layers: SetLayerDto[];
 }
 
 export class AddOverrideDto {
@@ -104,18 +181,9 @@ export class RotaMemberDto {
   name: string;
 }
 
-export class RotationDto {
+export class LayerDto extends OmitType(SetLayerDto, ['members']) {
   @ApiProperty({ type: [RotaMemberDto] })
   members: RotaMemberDto[];
-
-  @ApiProperty({ example: '06:00' })
-  handOverTime: string;
-
-  @ApiProperty()
-  rotationDays: number;
-
-  @ApiProperty({ example: '2026-11-30' })
-  startDate: string;
 }
 
 export class OverrideDto {
@@ -151,8 +219,11 @@ export class ShiftDto {
   @ApiProperty()
   name: string;
 
-  @ApiProperty({ description: 'Somebody stands in: not by the rotation' })
+  @ApiProperty({ description: 'Somebody stands in: not by a layer' })
   override: boolean;
+
+  @ApiProperty({ type: String, nullable: true, description: 'Name of the layer; null for an override' })
+  layer: string | null;
 }
 
 export class GapDto {
@@ -161,6 +232,125 @@ export class GapDto {
 
   @ApiProperty({ format: 'date-time' })
   to: string;
+}
+
+export class AskSwapDto {
+  @ApiProperty({ description: 'Who is to take over' })
+  @IsInt()
+  askedOfId: number;
+
+  @ApiProperty({ format: 'date-time', description: 'A time in which you are on call' })
+  @IsISO8601({ strict: true, strictSeparator: true })
+  from: string;
+
+  @ApiProperty({ format: 'date-time' })
+  @IsISO8601({ strict: true, strictSeparator: true })
+  to: string;
+
+  @ApiPropertyOptional({ format: 'date-time', description: 'A time of theirs that you take in return' })
+  @ValidateIf(({ returnFrom, returnTo }: AskSwapDto) => returnFrom !== undefined || returnTo !== undefined)
+  @IsISO8601({ strict: true, strictSeparator: true })
+  returnFrom?: string;
+
+  @ApiPropertyOptional({ format: 'date-time' })
+  @ValidateIf(({ returnFrom, returnTo }: AskSwapDto) => returnFrom !== undefined || returnTo !== undefined)
+  @IsISO8601({ strict: true, strictSeparator: true })
+  returnTo?: string;
+
+  @ApiProperty()
+  @trimmed()
+  @IsString()
+  @IsNotEmpty()
+  @MaxLength(500)
+  reason: string;
+}
+
+export class SwapDto {
+  @ApiProperty()
+  id: number;
+
+  @ApiProperty({ type: RotaMemberDto })
+  askedBy: RotaMemberDto;
+
+  @ApiProperty({ type: RotaMemberDto })
+  askedOf: RotaMemberDto;
+
+  @ApiProperty({ format: 'date-time' })
+  from: string;
+
+  @ApiProperty({ format: 'date-time' })
+  to: string;
+
+  @ApiProperty({ type: GapDto, nullable: true, description: 'What the asking one takes in return' })
+  inReturn: GapDto | null;
+
+  @ApiProperty()
+  reason: string;
+}
+
+export class MakeFeedDto {
+  @ApiProperty({ description: "Only the person's own shifts, or everybody's and the gaps" })
+  @IsBoolean()
+  own: boolean;
+}
+
+export class NewFeedDto {
+  @ApiProperty()
+  id: number;
+
+  @ApiProperty({ description: 'The private address, shown this once' })
+  url: string;
+}
+
+export class FeedDto {
+  @ApiProperty()
+  id: number;
+
+  @ApiProperty()
+  siteId: number;
+
+  @ApiProperty()
+  siteName: string;
+
+  @ApiProperty()
+  own: boolean;
+
+  @ApiProperty({ format: 'date-time' })
+  createdAt: string;
+
+  @NullableTime('When a calendar program last read it')
+  lastReadAt: string | null;
+}
+
+export class FeedsDto extends PageOf(FeedDto, 'FeedsPageDto') {}
+
+export class RotaSpanQuery {
+  @ApiPropertyOptional({ format: 'date-time', description: 'Now where not given' })
+  @IsOptional()
+  @IsISO8601({ strict: true, strictSeparator: true })
+  from?: string;
+
+  @ApiPropertyOptional({ format: 'date-time', description: '28 days later where not given; within 400 days' })
+  @IsOptional()
+  @IsISO8601({ strict: true, strictSeparator: true })
+  to?: string;
+}
+
+export class RotaFileDto {
+  @ApiProperty({
+    type: 'string',
+    format: 'binary',
+    description: 'CSV with the columns from, to, email and, if wanted, reason',
+  })
+  file: unknown;
+}
+
+export class RotaImportDto {
+  @ApiProperty({ description: 'Overrides that were added' })
+  added: number;
+
+  @ApiProperty({ description: 'Lines that said what was so already' })
+  alreadyThere: number;
 }
 
 export class OnCallDto {
@@ -184,11 +374,17 @@ export class RotaDto {
   @ApiProperty({ example: 'Europe/London' })
   timeZone: string;
 
-  @ApiProperty({ type: RotationDto, nullable: true })
-  layer: RotationDto | null;
+  @ApiProperty({ type: [LayerDto], description: 'The lowest first: a later one counts over an earlier' })
+  layers: LayerDto[];
 
   @ApiProperty({ type: [OverrideDto], description: 'That are not over' })
   overrides: OverrideDto[];
+
+  @ApiProperty({ type: [SwapDto], description: 'That wait for an answer' })
+  swaps: SwapDto[];
+
+  @ApiProperty({ type: [RotaMemberDto], description: 'Who can be on call on this site' })
+  available: RotaMemberDto[];
 
   @ApiProperty({ type: [ShiftDto], description: 'Of the next 14 days' })
   shifts: ShiftDto[];
