@@ -42,7 +42,8 @@ export class FakeService {
   readonly fetch = async (request: Request): Promise<Response> => {
     const { pathname } = new URL(request.url);
     const text = request.method === 'GET' ? '' : await request.text();
-    const body: unknown = text ? JSON.parse(text) : null;
+    const json = request.headers.get('content-type') === 'application/json';
+    const body: unknown = text && json ? JSON.parse(text) : text || null;
     this.asked.push({ method: request.method, path: pathname, body });
     const answer = this.answers.get(`${request.method} ${pathname}`)?.(body) ?? refusal(404, pathname);
     return new Response(answer.body === undefined ? null : JSON.stringify(answer.body), {

@@ -932,6 +932,102 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/rota/{siteId}/shifts.csv": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CalendarController_export"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/overrides.csv": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["CalendarController_import"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/feeds": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CalendarController_list"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/feeds": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["CalendarController_make"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/feeds/{id}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post?: never;
+        delete: operations["CalendarController_revoke"];
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/calendar/{token}.ics": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["CalendarController_calendar"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/rota": {
         parameters: {
             query?: never;
@@ -972,7 +1068,7 @@ export interface paths {
             cookie?: never;
         };
         get?: never;
-        put: operations["RotaController_setRotation"];
+        put: operations["RotaController_setLayers"];
         post?: never;
         delete?: never;
         options?: never;
@@ -1007,6 +1103,70 @@ export interface paths {
         put?: never;
         post?: never;
         delete: operations["RotaController_removeOverride"];
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/swaps": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["RotaController_askSwap"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/swaps/{id}/accept": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["RotaController_acceptSwap"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/swaps/{id}/decline": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["RotaController_declineSwap"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/rota/{siteId}/swaps/{id}/withdraw": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["RotaController_withdrawSwap"];
+        delete?: never;
         options?: never;
         head?: never;
         patch?: never;
@@ -2271,17 +2431,81 @@ export interface components {
             /** @description In order, each up to 300 characters */
             items: string[];
         };
+        RotaFileDto: {
+            /**
+             * Format: binary
+             * @description CSV with the columns from, to, email and, if wanted, reason
+             */
+            file: string;
+        };
+        RotaImportDto: {
+            /** @description Overrides that were added */
+            added: number;
+            /** @description Lines that said what was so already */
+            alreadyThere: number;
+        };
+        FeedDto: {
+            id: number;
+            siteId: number;
+            siteName: string;
+            own: boolean;
+            /** Format: date-time */
+            createdAt: string;
+            /**
+             * Format: date-time
+             * @description When a calendar program last read it
+             */
+            lastReadAt: string | null;
+        };
+        FeedsDto: {
+            items: components["schemas"]["FeedDto"][];
+            nextCursor: string | null;
+        };
+        MakeFeedDto: {
+            /** @description Only the person's own shifts, or everybody's and the gaps */
+            own: boolean;
+        };
+        NewFeedDto: {
+            id: number;
+            /** @description The private address, shown this once */
+            url: string;
+        };
         RotaMemberDto: {
             userId: number;
             name: string;
         };
-        RotationDto: {
-            members: components["schemas"]["RotaMemberDto"][];
-            /** @example 06:00 */
+        HoursDto: {
+            /**
+             * @description On the site's clock
+             * @example 08:00
+             */
+            from: string;
+            /**
+             * @description No later than `from`: on the next day
+             * @example 17:00
+             */
+            to: string;
+        };
+        LayerDto: {
+            /** @example Weekends */
+            name: string;
+            /**
+             * @description On the site's clock
+             * @example 06:00
+             */
             handOverTime: string;
             rotationDays: number;
-            /** @example 2026-11-30 */
+            /**
+             * @description The first turn begins at hand-over on this day
+             * @example 2026-11-30
+             */
             startDate: string;
+            members: components["schemas"]["RotaMemberDto"][];
+            /** @description The last turn ends at hand-over on this day */
+            endDate: string | null;
+            /** @description ISO 8601: Monday is 1, Sunday is 7 */
+            weekdays: number[];
+            hours: components["schemas"]["HoursDto"] | null;
         };
         OverrideDto: {
             id: number;
@@ -2293,6 +2517,24 @@ export interface components {
             to: string;
             reason: string;
         };
+        GapDto: {
+            /** Format: date-time */
+            from: string;
+            /** Format: date-time */
+            to: string;
+        };
+        SwapDto: {
+            id: number;
+            askedBy: components["schemas"]["RotaMemberDto"];
+            askedOf: components["schemas"]["RotaMemberDto"];
+            /** Format: date-time */
+            from: string;
+            /** Format: date-time */
+            to: string;
+            /** @description What the asking one takes in return */
+            inReturn: components["schemas"]["GapDto"] | null;
+            reason: string;
+        };
         ShiftDto: {
             /** Format: date-time */
             from: string;
@@ -2300,8 +2542,10 @@ export interface components {
             to: string;
             userId: number;
             name: string;
-            /** @description Somebody stands in: not by the rotation */
+            /** @description Somebody stands in: not by a layer */
             override: boolean;
+            /** @description Name of the layer; null for an override */
+            layer: string | null;
         };
         OnCallDto: {
             userId: number;
@@ -2310,19 +2554,18 @@ export interface components {
             /** Format: date-time */
             until: string;
         };
-        GapDto: {
-            /** Format: date-time */
-            from: string;
-            /** Format: date-time */
-            to: string;
-        };
         RotaDto: {
             siteId: number;
             /** @example Europe/London */
             timeZone: string;
-            layer: components["schemas"]["RotationDto"] | null;
+            /** @description The lowest first: a later one counts over an earlier */
+            layers: components["schemas"]["LayerDto"][];
             /** @description That are not over */
             overrides: components["schemas"]["OverrideDto"][];
+            /** @description That wait for an answer */
+            swaps: components["schemas"]["SwapDto"][];
+            /** @description Who can be on call on this site */
+            available: components["schemas"]["RotaMemberDto"][];
             /** @description Of the next 14 days */
             shifts: components["schemas"]["ShiftDto"][];
             onCall: components["schemas"]["OnCallDto"] | null;
@@ -2344,7 +2587,9 @@ export interface components {
             items: components["schemas"]["SiteOnCallDto"][];
             nextCursor: string | null;
         };
-        SetRotationDto: {
+        SetLayerDto: {
+            /** @example Weekends */
+            name: string;
             /** @description Ids of people, in the order of their turns */
             members: number[];
             /**
@@ -2358,6 +2603,27 @@ export interface components {
              * @example 2026-11-30
              */
             startDate: string;
+            /** @description The last turn ends at hand-over on this day; null while it goes on */
+            endDate?: string | null;
+            /**
+             * @description Days of the week on which the layer holds (ISO 8601: Monday is 1, Sunday is 7)
+             * @default [
+             *       1,
+             *       2,
+             *       3,
+             *       4,
+             *       5,
+             *       6,
+             *       7
+             *     ]
+             */
+            weekdays?: number[];
+            /** @description Hours of these days in which the layer holds; null for the whole day */
+            hours?: components["schemas"]["HoursDto"] | null;
+        };
+        SetLayersDto: {
+            /** @description The lowest first: where two hold at once, the later in this list counts */
+            layers: components["schemas"]["SetLayerDto"][];
         };
         AddOverrideDto: {
             userId: number;
@@ -2365,6 +2631,25 @@ export interface components {
             from: string;
             /** Format: date-time */
             to: string;
+            reason: string;
+        };
+        AskSwapDto: {
+            /** @description Who is to take over */
+            askedOfId: number;
+            /**
+             * Format: date-time
+             * @description A time in which you are on call
+             */
+            from: string;
+            /** Format: date-time */
+            to: string;
+            /**
+             * Format: date-time
+             * @description A time of theirs that you take in return
+             */
+            returnFrom?: string;
+            /** Format: date-time */
+            returnTo?: string;
             reason: string;
         };
         NoteDto: {
@@ -4336,6 +4621,141 @@ export interface operations {
             };
         };
     };
+    CalendarController_export: {
+        parameters: {
+            query?: {
+                /** @description Now where not given */
+                from?: string;
+                /** @description 28 days later where not given; within 400 days */
+                to?: string;
+            };
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/csv": string;
+                };
+            };
+        };
+    };
+    CalendarController_import: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "multipart/form-data": components["schemas"]["RotaFileDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RotaImportDto"];
+                };
+            };
+        };
+    };
+    CalendarController_list: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["FeedsDto"];
+                };
+            };
+        };
+    };
+    CalendarController_make: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["MakeFeedDto"];
+            };
+        };
+        responses: {
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["NewFeedDto"];
+                };
+            };
+        };
+    };
+    CalendarController_revoke: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            204: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    CalendarController_calendar: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                token: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/calendar": string;
+                };
+            };
+        };
+    };
     RotaController_view: {
         parameters: {
             query: {
@@ -4376,7 +4796,7 @@ export interface operations {
             };
         };
     };
-    RotaController_setRotation: {
+    RotaController_setLayers: {
         parameters: {
             query?: never;
             header?: never;
@@ -4387,7 +4807,7 @@ export interface operations {
         };
         requestBody: {
             content: {
-                "application/json": components["schemas"]["SetRotationDto"];
+                "application/json": components["schemas"]["SetLayersDto"];
             };
         };
         responses: {
@@ -4443,6 +4863,97 @@ export interface operations {
                     [name: string]: unknown;
                 };
                 content?: never;
+            };
+        };
+    };
+    RotaController_askSwap: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["AskSwapDto"];
+            };
+        };
+        responses: {
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RotaDto"];
+                };
+            };
+        };
+    };
+    RotaController_acceptSwap: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RotaDto"];
+                };
+            };
+        };
+    };
+    RotaController_declineSwap: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RotaDto"];
+                };
+            };
+        };
+    };
+    RotaController_withdrawSwap: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                siteId: number;
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RotaDto"];
+                };
             };
         };
     };

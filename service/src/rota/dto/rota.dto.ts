@@ -20,7 +20,7 @@ import {
   ValidateIf,
   ValidateNested,
 } from 'class-validator';
-import { NullableTime, PageOf } from '../../page.js';
+import { NullableText, NullableTime, PageOf } from '../../page.js';
 
 const trimmed = () =>
   Transform(({ value }: { value: unknown }) => (typeof value === 'string' ? value.trim() : value));
@@ -181,9 +181,18 @@ export class RotaMemberDto {
   name: string;
 }
 
-export class LayerDto extends OmitType(SetLayerDto, ['members']) {
+export class LayerDto extends OmitType(SetLayerDto, ['members', 'endDate', 'weekdays', 'hours']) {
   @ApiProperty({ type: [RotaMemberDto] })
   members: RotaMemberDto[];
+
+  @NullableText('The last turn ends at hand-over on this day')
+  endDate: string | null;
+
+  @ApiProperty({ type: [Number], description: 'ISO 8601: Monday is 1, Sunday is 7' })
+  weekdays: number[];
+
+  @ApiProperty({ type: HoursDto, nullable: true })
+  hours: HoursDto | null;
 }
 
 export class OverrideDto {

@@ -1,17 +1,15 @@
 import { Button, Select, TextInput } from '@mantine/core';
 import { useForm } from '@mantine/form';
 import { notifications } from '@mantine/notifications';
-import { useMutation, useQuery } from '@tanstack/react-query';
+import { useMutation } from '@tanstack/react-query';
 import dayjs from 'dayjs';
 import { useState } from 'react';
 import { may } from '../../api/policy';
 import { useSession } from '../../api/use-session';
 import { Card } from '../../components/card';
 import { onSite } from '../../components/site-clock';
-import { peopleQuery } from '../people/people-api';
-import { onCallChoices } from './on-call-people';
 import { Refusal } from './refusal';
-import { addOverride, type Rota } from './rota-api';
+import { addOverride, choicesOf, type Rota } from './rota-api';
 import classes from './rota.module.css';
 
 /** As a `datetime-local` field reads and writes. */
@@ -21,12 +19,8 @@ const LOCAL = 'YYYY-MM-DDTHH:mm';
 export function OverrideForm({ rota }: { rota: Rota }) {
   const { siteId, timeZone } = rota;
   const { user } = useSession();
-  const administers = may(user, 'people.manage', siteId);
-  const people = useQuery({ ...peopleQuery, enabled: administers });
-  const choices = onCallChoices(rota, people.data?.items ?? []);
+  const choices = choicesOf(rota);
   const own = user && may(user, 'alert.acknowledge', siteId) ? String(user.id) : null;
-  if (user && own && !choices.some(({ value }) => value === own))
-    choices.push({ value: own, label: user.name });
   const [now] = useState(() => onSite(Date.now(), timeZone));
   const form = useForm({
     initialValues: {

@@ -7,9 +7,11 @@ import { SiteTime } from '../../components/site-time';
 import { HandOverNotes } from './hand-over-notes';
 import { OverrideForm } from './override-form';
 import { rotaQuery } from './rota-api';
-import { RotationForm } from './rotation-form';
+import { LayersForm } from './layers-form';
 import classes from './rota.module.css';
+import { OutsideCard } from './outside-card';
 import { Shifts } from './shifts';
+import { Swaps } from './swaps';
 
 export function Component() {
   const { data: sites, error, isPending, refetch } = useQuery(sitesQuery);
@@ -39,10 +41,7 @@ function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
   if (error && !rota)
     return <ErrorState error={error} what={`The rota of ${siteName}`} onRetry={() => void refetch()} />;
   if (!rota) return <Waiting heights={[220]} />;
-  const forms = [
-    may(user, 'rota.override', siteId) && <OverrideForm key="override" rota={rota} />,
-    may(user, 'rota.change', siteId) && <RotationForm key="rotation" rota={rota} />,
-  ].filter(Boolean);
+  const onCallPart = may(user, 'alert.acknowledge', siteId);
   return (
     <section className={classes.site} aria-label={siteName}>
       <div>
@@ -61,9 +60,16 @@ function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
       </div>
       <div className={classes.columns}>
         <Shifts rota={rota} />
-        {forms.length > 0 && <div className={classes.stack}>{forms}</div>}
+        {may(user, 'rota.override', siteId) && (
+          <div className={classes.stack}>
+            <OverrideForm rota={rota} />
+            {(onCallPart || rota.swaps.length > 0) && <Swaps rota={rota} />}
+          </div>
+        )}
         <HandOverNotes siteId={siteId} timeZone={rota.timeZone} writes={may(user, 'note.write', siteId)} />
       </div>
+      {may(user, 'rota.change', siteId) && <LayersForm rota={rota} />}
+      <OutsideCard rota={rota} siteName={siteName} imports={may(user, 'rota.change', siteId)} />
     </section>
   );
 }

@@ -7,6 +7,7 @@ import { useSession } from '../../api/use-session';
 import { Card } from '../../components/card';
 import { ConfirmDialog } from '../../components/confirm-dialog';
 import { onSite } from '../../components/site-clock';
+import { layerWords } from './layer-words';
 import { removeOverride, type Rota } from './rota-api';
 import classes from './rota.module.css';
 
@@ -20,7 +21,11 @@ export function Shifts({ rota }: { rota: Rota }) {
   return (
     <Card
       title="Next 14 days"
-      sub={rota.layer ? `hand-over at ${rota.layer.handOverTime}, ${rota.timeZone}` : 'no rotation yet'}
+      sub={
+        rota.layers.length > 0
+          ? `${rota.layers.map(layerWords).join('; ')}; ${rota.timeZone}`
+          : 'no layer yet'
+      }
     >
       {rota.gaps.map(({ from, to }) => (
         <p key={from} className={classes.gap}>
@@ -43,7 +48,10 @@ export function Shifts({ rota }: { rota: Rota }) {
                 <td>{day(shift.to)}</td>
                 <td className={isNow(shift) ? classes.now : undefined}>
                   {shift.name}
-                  {isNow(shift) && ', now'} {shift.override && <span className="soft small">stands in</span>}
+                  {isNow(shift) && ', now'}{' '}
+                  {(shift.override || rota.layers.length > 1) && (
+                    <span className="soft small">{shift.layer ?? 'stands in'}</span>
+                  )}
                 </td>
               </tr>
             ))}
