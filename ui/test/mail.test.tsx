@@ -17,6 +17,9 @@ const mailOf = (differs: Partial<Schemas['MailDto']>): Schemas['MailDto'] => ({
   sentAt: null,
   error: 'connection refused',
   alertId: 7,
+  channel: 'mail',
+  perhapsAgain: false,
+  groupId: null,
   ...differs,
 });
 
@@ -45,7 +48,7 @@ test('the outbox says what failed and why, and sends it again', async () => {
     '/alerts/7',
   );
   await userEvent.click(within(outbox).getByRole('button', { name: /^Send again/ }));
-  await waitFor(() => expect(within(outbox).getByText('queued')).toBeInTheDocument());
+  await waitFor(() => expect(within(outbox).getByText('waits')).toBeInTheDocument());
   expect(within(outbox).queryByRole('button', { name: /^Send again/ })).toBeNull();
 });
 

@@ -13,6 +13,7 @@ import { TuningRevision } from '../fleet/tuning-revision.entity.js';
 import { IndicatorHour, IndicatorMinute, IndicatorSecond } from '../indicators/indicator-rollup.entity.js';
 import { MoveRecord } from '../indicators/move-record.entity.js';
 import { PlantEstimateRow } from '../indicators/plant-estimate.entity.js';
+import { AcknowledgeLink } from '../notifications/acknowledge-link.entity.js';
 import { Mail } from '../notifications/mail.entity.js';
 import { Invitation } from '../people/invitation.entity.js';
 import { UserRole } from '../people/user-role.entity.js';
@@ -32,6 +33,7 @@ import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpo
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
 import { RotaLayers1764738000100 } from './migrations/1764738000100-rota-layers.js';
+import { OutboxAttempts1764738000200 } from './migrations/1764738000200-outbox-attempts.js';
 
 export const ENTITIES = [
   Site,
@@ -63,6 +65,7 @@ export const ENTITIES = [
   CalendarFeed,
   HandoverNote,
   Mail,
+  AcknowledgeLink,
   Capture,
 ];
 
@@ -88,6 +91,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       ChangesAtMachines1764637000100,
       ProposalVersions1764637000200,
       RotaLayers1764738000100,
+      OutboxAttempts1764738000200,
     ],
     migrationsRun: true,
     synchronize: false,

@@ -17,6 +17,8 @@ export interface OutgoingMail {
   alertId?: number | null;
   /** Whose administrators see it in the outbox, beside those of the recipient's sites. */
   siteId?: number | null;
+  /** SVG that is shown above the text, and the same in words. */
+  picture?: { svg: string; text: string } | null;
 }
 
 export interface MailFilter {
@@ -37,6 +39,7 @@ export class MailOutboxService {
 
   /** Puts a mail into the outbox; does nothing when its key is there already. */
   async enqueue(manager: EntityManager, mail: OutgoingMail): Promise<void> {
+    const now = new Date();
     await manager
       .createQueryBuilder()
       .insert()
@@ -49,7 +52,10 @@ export class MailOutboxService {
         html: mail.html,
         alertId: mail.alertId ?? null,
         siteId: mail.siteId ?? null,
-        nextAttemptAt: new Date(),
+        picture: mail.picture?.svg ?? null,
+        pictureText: mail.picture?.text ?? null,
+        createdAt: now,
+        nextAttemptAt: now,
       })
       .orIgnore()
       .updateEntity(false)
@@ -81,9 +87,9 @@ export class MailOutboxService {
         .createQueryBuilder()
         .update(Mail)
         .set({ state: 'queued', attempts: 0, nextAttemptAt: new Date() })
-        .where('id = :id AND state <> :sent', { id, sent: 'sent' })
+        .where('id = :id AND state IN (:...open)', { id, open: ['queued', 'failed'] })
         .execute();
-      if (!affected) throw new ConflictException('The mail server has taken this mail already');
+      if (!affected) throw new ConflictException('It has gone out already');
       await this.audit.record(manager, {
         user,
         action: 'mail.resent',

@@ -35,3 +35,33 @@ export function composeMail({ greeting, paragraphs, link, closing }: MailContent
   ].join('\n');
   return { text: `${text}\n`, html };
 }
+
+/** Where in its HTML a mail shows its picture. */
+export const PICTURE_CID = 'axis@polewright';
+
+export const PERHAPS_AGAIN =
+  'You may have had this mail before: the service was stopped while it was going out and cannot know whether it did.';
+
+interface Letters {
+  text: string;
+  html: string;
+}
+
+/** A mail with a line put before all else. */
+export const withNotice = ({ text, html }: Letters, notice: string): Letters => ({
+  text: `${notice}\n\n${text}`,
+  html: atBegin(html, `<p><strong>${escapeHtml(notice)}</strong></p>`),
+});
+
+/** A mail with its attached picture above the text; where pictures are not shown, the same in words. */
+export const withPicture = ({ text, html }: Letters, words: string): Letters => ({
+  text: `${text}\n${words}\n`,
+  html: atBegin(
+    html,
+    `<p><img src="cid:${PICTURE_CID}" alt="${escapeHtml(words)}" width="320" style="max-width:100%"></p>`,
+  ),
+});
+
+/** Puts something at the begin of a page, or of a part of one. */
+const atBegin = (html: string, part: string): string =>
+  /<body[^>]*>/.test(html) ? html.replace(/<body[^>]*>/, (body) => body + part) : part + html;

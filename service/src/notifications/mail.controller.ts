@@ -26,6 +26,9 @@ const asDto = (mail: Mail): MailDto => ({
   sentAt: mail.sentAt?.toISOString() ?? null,
   error: mail.error,
   alertId: mail.alertId,
+  channel: mail.channel,
+  perhapsAgain: mail.perhapsAgain,
+  groupId: mail.groupId,
 });
 
 @ApiTags('Mail')

@@ -1,31 +1,50 @@
+import { ConfigService } from '@nestjs/config';
+import Database from 'better-sqlite3';
+import { simpleParser } from 'mailparser';
 import { SMTPServer } from 'smtp-server';
 import { createServer, type Server } from 'node:http';
 import type { AddressInfo } from 'node:net';
+import { join } from 'node:path';
+import { DataSource } from 'typeorm';
 import { afterEach, describe, expect, it, vi } from 'vitest';
+import { dataSourceOptions } from '../../src/database/data-source.js';
 import { Transactions } from '../../src/database/transactions.js';
 import { MailOutboxService, type OutgoingMail } from '../../src/notifications/mail-outbox.service.js';
 import { MAX_ATTEMPTS, MailSenderService, retryDelay } from '../../src/notifications/mail-sender.service.js';
-import { composeMail } from '../../src/notifications/mail-text.js';
+import { composeMail, PICTURE_CID } from '../../src/notifications/mail-text.js';
 import { Mail } from '../../src/notifications/mail.entity.js';
+import { Smtp } from '../../src/notifications/smtp.js';
+import type { Settings } from '../../src/settings.js';
 import { addPerson, startPeople, type PeopleApp } from '../people/people-app.js';
 
 /** What a mail server does with the next mails. */
-type Mood = 'takes' | 'busy' | 'refuses the address';
+type Mood = 'takes' | 'busy' | 'refuses the address' | 'hangs up';
 
 const closing: (() => Promise<void>)[] = [];
 afterEach(async () => {
+  vi.useRealTimers();
   for (const close of closing.splice(0).reverse()) await close();
 });
 
 /** A mail server on loopback with a mood. */
-async function mailServer() {
+async function mailServer(port = 0) {
   const taken: string[] = [];
-  const server = { taken, mood: 'takes' as Mood, port: 0 };
+  const server = {
+    taken,
+    mood: 'takes' as Mood,
+    port,
+    onTaken: () => undefined as void,
+    hangUp: (): void => smtp.connections.forEach((connection) => connection.close()),
+    close: (): Promise<void> => {
+      server.hangUp();
+      return new Promise((done) => smtp.close(() => done()));
+    },
+  };
   const smtp = new SMTPServer({
     authOptional: true,
     disabledCommands: ['STARTTLS', 'AUTH'],
     onRcptTo: (_address, _session, done) => {
-      if (server.mood === 'takes') done();
+      if (server.mood === 'takes' || server.mood === 'hangs up') done();
       else
         done(
           Object.assign(new Error(server.mood === 'busy' ? 'Try again later' : 'No such mailbox'), {
@@ -33,18 +52,22 @@ async function mailServer() {
           }),
         );
     },
-    onData: (stream, _session, done) => {
+    onData: (stream, session, done) => {
       let source = '';
       stream.on('data', (chunk: Buffer) => (source += chunk.toString()));
       stream.on('end', () => {
+        if (server.mood === 'hangs up') {
+          return void server.hangUp();
+        }
         taken.push(source);
+        server.onTaken();
         done();
       });
     },
   });
-  await new Promise<void>((ready) => smtp.listen(0, '127.0.0.1', ready));
+  await new Promise<void>((ready) => smtp.listen(port, '127.0.0.1', ready));
   server.port = (smtp.server.address() as AddressInfo).port;
-  closing.push(() => new Promise((done) => smtp.close(() => done())));
+  closing.push(server.close);
   return server;
 }
 
@@ -91,12 +114,88 @@ describe('outbox', () => {
     expect(server.taken[0]).toMatch(/^Subject: About alert 1\r$/m);
     expect(server.taken[0]).toMatch(/^Message-ID: <[0-9a-f]{32}@polewright>\r$/m);
     expect(await row(people, 'alert 1')).toMatchObject({ state: 'sent', attempts: 1, error: null });
-    // Killed between sending and marking: the copy is known by its Message-ID.
-    await people.dataSource.getRepository(Mail).update({ key: 'alert 1' }, { state: 'queued' });
+  });
+
+  it('killed between sending and marking: one copy more, with the same Message-ID, that says so', async () => {
+    const server = await mailServer();
+    const people = await start(server.port);
+    // As the file is at the moment at which the server has taken the mail.
+    const left = join(people.settings.DATA_DIR, 'left.sqlite');
+    server.onTaken = () => void new Database(people.settings.DATABASE).exec(`VACUUM INTO '${left}'`).close();
+    await enqueue(people, mail('alert 1'));
     await work(people);
-    const ids = server.taken.map((source) => /^Message-ID: (\S+)/m.exec(source)?.[1]);
-    expect(ids).toHaveLength(2);
-    expect(new Set(ids).size).toBe(1);
+    server.onTaken = () => undefined;
+    const dataSource = await new DataSource(dataSourceOptions(left)).initialize();
+    const mails = dataSource.getRepository(Mail);
+    expect(await mails.findOneByOrFail({})).toMatchObject({ state: 'queued', startedAt: expect.any(Date) });
+    const config = people.app.get(ConfigService);
+    const sender = new MailSenderService(
+      mails,
+      new Transactions(dataSource),
+      people.app.get(Smtp),
+      config as ConfigService<Settings, true>,
+    );
+    await sender.tick();
+    await sender.tick();
+    expect(server.taken).toHaveLength(2);
+    const [first, second] = server.taken as [string, string];
+    const idOf = (source: string) => /^Message-ID: (\S+)/m.exec(source)?.[1];
+    expect(idOf(second)).toBe(idOf(first));
+    expect(second).toMatch(/^Subject: \(perhaps again\) About alert 1\r$/m);
+    expect(second).toContain('You may have had this mail before');
+    expect(first).not.toContain('You may have had this mail before');
+    expect(await mails.findOneByOrFail({})).toMatchObject({ state: 'sent', perhapsAgain: true });
+    await dataSource.destroy();
+  });
+
+  it('that broke off after everything was handed over is tried again as a possible copy', async () => {
+    const server = await mailServer();
+    const people = await start(server.port);
+    server.mood = 'hangs up';
+    await enqueue(people, mail('cut'), mail('and another'));
+    await work(people);
+    expect(await row(people, 'cut')).toMatchObject({ state: 'queued', perhapsAgain: true });
+    server.mood = 'takes';
+    await makeDue(people);
+    await work(people);
+    expect(server.taken.at(-1)).toContain('(perhaps again)');
+  });
+
+  it('with the mail server down for an hour, then back: every mail once', async () => {
+    const { port, close } = await mailServer();
+    await close();
+    const people = await start(port);
+    vi.useFakeTimers({ toFake: ['Date'], now: new Date('2026-12-01T02:00:00Z') });
+    let server: Awaited<ReturnType<typeof mailServer>> | null = null;
+    for (let second = 0; second <= 5_400; second += 20) {
+      vi.setSystemTime(Date.UTC(2026, 11, 1, 2) + second * 1_000);
+      if (second % 300 === 0 && second < 3_600) await enqueue(people, mail(`at ${second}`));
+      if (second === 3_600) server = await mailServer(port);
+      await work(people);
+      if (second === 3_580)
+        expect(await people.dataSource.getRepository(Mail).countBy({ state: 'queued' })).toBe(12);
+    }
+    vi.useRealTimers();
+    const subjects = server!.taken.map((source) => /^Subject: (.*)\r$/m.exec(source)?.[1]);
+    expect(subjects.sort()).toEqual(Array.from({ length: 12 }, (_, i) => `About at ${i * 300}`).sort());
+    expect(await people.dataSource.getRepository(Mail).countBy({ state: 'sent' })).toBe(12);
+  });
+
+  it('shows its picture in the mail as PNG, with the same in words', async () => {
+    const server = await mailServer();
+    const people = await start(server.port);
+    const svg =
+      '<svg xmlns="http://www.w3.org/2000/svg" width="60" height="40"><rect width="60" height="40"/></svg>';
+    await enqueue(people, mail('drawn', { picture: { svg, text: 'A black field' } }));
+    await work(people);
+    const { html, text, attachments } = await simpleParser(server.taken[0]!, { skipImageLinks: true });
+    expect(html).toContain(`<img src="cid:${PICTURE_CID}" alt="A black field"`);
+    expect(text).toContain('A black field');
+    const [png] = attachments;
+    expect(png!.cid).toBe(PICTURE_CID);
+    // PNG (ISO/IEC 15948): signature, then the header chunk with width and height at bytes 16 and 20.
+    expect(png!.content.subarray(1, 4).toString()).toBe('PNG');
+    expect([png!.content.readUInt32BE(16), png!.content.readUInt32BE(20)]).toEqual([120, 80]);
   });
 
   it('is worked by itself every second', async () => {
@@ -195,6 +294,9 @@ describe('outbox', () => {
       sentAt: null,
       error: expect.stringMatching(/No such mailbox/),
       alertId: 12,
+      channel: 'mail',
+      perhapsAgain: false,
+      groupId: null,
     });
     const yardAdmin = await people.as('yardadmin');
     const ofYard = await yardAdmin.get('/api/v1/mail/outbox').expect(200);
@@ -214,6 +316,57 @@ describe('outbox', () => {
     const page = await admin.get('/api/v1/mail/outbox?limit=1').expect(200);
     expect(page.body.nextCursor).toBe(String(page.body.items[0].id));
     await admin.get('/api/v1/mail/outbox?state=lost').expect(400);
+  });
+});
+
+describe('a flood', () => {
+  const alertMail = (i: number, to = 'technician@tarnwick.example') =>
+    mail(`alert ${i} to ${to}`, { alertId: i, to, siteId: 1 });
+
+  it('of 10,000 alerts in a minute comes in a few mails: the first ones alone, then one for all every five minutes', async () => {
+    const server = await mailServer();
+    const people = await start(server.port);
+    const begin = Date.UTC(2026, 11, 1, 2);
+    vi.useFakeTimers({ toFake: ['Date'], now: begin });
+    for (let second = 0; second < 60; second++) {
+      vi.setSystemTime(begin + second * 1_000);
+      const from = Math.round((second * 10_000) / 60);
+      const to = Math.round(((second + 1) * 10_000) / 60);
+      await enqueue(people, ...Array.from({ length: to - from }, (_, i) => alertMail(from + i + 1)));
+      if (second === 20) await enqueue(people, alertMail(1, 'engineer@tarnwick.example'));
+      await work(people);
+    }
+    for (let minute = 1; minute <= 12; minute++) {
+      vi.setSystemTime(begin + minute * 60_000);
+      await work(people);
+    }
+    vi.useRealTimers();
+    const subjects = server.taken.map((source) => /^Subject: (.*)\r$/m.exec(source)![1]!);
+    const floods = subjects.filter((subject) => subject.startsWith('Flood of alerts'));
+    expect(floods).toEqual(['Flood of alerts: 167 wait', 'Flood of alerts: 9833 wait']);
+    // Who is in no flood is told as ever.
+    expect(subjects.filter((subject) => !subject.startsWith('Flood'))).toEqual([
+      'About alert 1 to engineer@tarnwick.example',
+    ]);
+    const mails = people.dataSource.getRepository(Mail);
+    expect(await mails.countBy({ state: 'grouped', to: 'technician@tarnwick.example' })).toBe(10_000);
+    expect(await mails.countBy({ state: 'queued' })).toBe(0);
+    const last = await simpleParser(server.taken.at(-1)!);
+    expect(last.text).toContain('http://polewright.test/alerts/168');
+    expect(last.text).toContain('… and 9793 more.');
+  });
+
+  it('is none with ten alerts, or with mails that tell of something else', async () => {
+    const server = await mailServer();
+    const people = await start(server.port);
+    await enqueue(people, ...Array.from({ length: 10 }, (_, i) => alertMail(i + 1)));
+    await enqueue(people, ...Array.from({ length: 5 }, (_, i) => mail(`other ${i}`)));
+    await work(people);
+    expect(server.taken).toHaveLength(15);
+    await enqueue(people, alertMail(11), alertMail(12));
+    await work(people);
+    expect(server.taken).toHaveLength(16);
+    expect(server.taken.at(-1)).toMatch(/^Subject: Flood of alerts: 2 wait\r$/m);
   });
 });
 

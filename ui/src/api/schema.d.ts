@@ -2672,7 +2672,7 @@ export interface components {
             to: string;
             subject: string;
             /** @enum {string} */
-            state: "queued" | "sent" | "failed";
+            state: "queued" | "sent" | "failed" | "grouped";
             attempts: number;
             /** Format: date-time */
             createdAt: string;
@@ -2681,6 +2681,12 @@ export interface components {
             /** @description What the mail server answered last */
             error: string | null;
             alertId: number | null;
+            /** @enum {string} */
+            channel: "mail" | "push" | "sms";
+            /** @description The service was stopped while it went out: it may have gone out twice */
+            perhapsAgain: boolean;
+            /** @description The mail in which it went out with others */
+            groupId: number | null;
         };
         MailPageDto: {
             items: components["schemas"]["MailDto"][];
@@ -5010,7 +5016,7 @@ export interface operations {
     MailController_list: {
         parameters: {
             query?: {
-                state?: "queued" | "sent" | "failed";
+                state?: "queued" | "sent" | "failed" | "grouped";
                 limit?: number;
                 /** @description nextCursor of the page before */
                 cursor?: string;

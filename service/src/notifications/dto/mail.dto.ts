@@ -1,7 +1,7 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
 import { IsIn, IsInt, IsOptional, Max, Min } from 'class-validator';
-import { MAIL_STATES, type MailState } from '../mail.entity.js';
+import { CHANNELS, MAIL_STATES, type Channel, type MailState } from '../mail.entity.js';
 
 export class MailQueryDto {
   @ApiPropertyOptional({ enum: MAIL_STATES })
@@ -51,6 +51,15 @@ export class MailDto {
 
   @ApiProperty({ type: Number, nullable: true })
   alertId: number | null;
+
+  @ApiProperty({ enum: CHANNELS })
+  channel: Channel;
+
+  @ApiProperty({ description: 'The service was stopped while it went out: it may have gone out twice' })
+  perhapsAgain: boolean;
+
+  @ApiProperty({ type: Number, nullable: true, description: 'The mail in which it went out with others' })
+  groupId: number | null;
 }
 
 export class MailPageDto {

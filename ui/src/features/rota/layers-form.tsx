@@ -146,7 +146,7 @@ export function LayersForm({ rota }: { rota: Rota }) {
                 >
                   <Group gap={6} role="group" aria-labelledby={`days-${layer.key}`}>
                     {WEEKDAYS.map((day, k) => (
-                      <Chip key={day} value={String(k + 1)} size="xs">
+                      <Chip key={day} value={String(k + 1)} size="sm" variant="outline">
                         {day}
                       </Chip>
                     ))}
