@@ -1,7 +1,10 @@
+import { availableParallelism } from 'node:os';
 import { defineConfig } from 'vitest/config';
 
 export default defineConfig({
   test: {
+    // One process for each core: the browser journeys, which mostly wait, run beside the rest.
+    maxWorkers: availableParallelism(),
     projects: [
       {
         root: './service',
@@ -37,7 +40,6 @@ export default defineConfig({
           include: ['e2e/**/*.test.ts'],
           testTimeout: 300_000,
           hookTimeout: 120_000,
-          fileParallelism: false,
         },
       },
     ],
