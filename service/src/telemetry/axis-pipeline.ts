@@ -118,8 +118,25 @@ export class AxisPipeline {
     this.own[STANDING_SINCE_US] = this.own[LAST_US]!;
   }
 
-  /** Takes a block. Samples not later than the last one taken are dropped and counted; a hole in time is a gap. */
-  push(block: FrameBlock): void {
+  /**
+   * Forgets the time of a last sample that lies beyond `latestUs`, which would have everything that follows dropped.
+   *
+   * @returns whether it did
+   */
+  forgetFuture(latestUs: number): boolean {
+    if (this.own[LAST_US]! <= latestUs) return false;
+    this.own[LAST_US] = 0;
+    this.heardAt = null;
+    this.gap();
+    return true;
+  }
+
+  /**
+   * Takes a block. Samples not later than the last one taken are dropped and counted; a hole in time is a gap.
+   *
+   * @returns samples dropped
+   */
+  push(block: FrameBlock): number {
     const { own, stepUs } = this;
     const { target, position, output, startUs } = block;
     const lastUs = own[LAST_US]!;
@@ -129,7 +146,7 @@ export class AxisPipeline {
         from = Math.min(target.length, Math.floor((lastUs - startUs) / stepUs) + 1);
         own[DROPPED]! += from;
       } else if (block.gapBefore || startUs - lastUs > stepUs * (1 + GRID_TOLERANCE)) this.gap();
-      if (from === target.length) return;
+      if (from === target.length) return from;
     }
     this.touched = true;
     this.heardAt = Date.now() / 1000;
@@ -137,9 +154,10 @@ export class AxisPipeline {
     this.moves.push(target, position, output, startUs, stepUs, from, this.closeMove);
     this.noteStanding(block, from);
     own[LAST_US] = startUs + (target.length - 1) * stepUs;
-    if (this.facts.inMaintenance) return; // moves by hand are not production
+    if (this.facts.inMaintenance) return from; // moves by hand are not production
     this.identifier.push(position, output, from, target.length);
     this.takeWindows();
+    return from;
   }
 
   private readonly closeSecond = (second: ClosedSecond): void => void this.closedSeconds.push(second);

@@ -4,7 +4,7 @@ import type { RecordedMove } from '../indicators/move-recorder.js';
 import type { ClosedSecond } from '../indicators/second-accumulator.js';
 import { JUDGEMENT_PART } from './axis-checkpoint.entity.js';
 import type { AxisPipeline, EstimateAfterWindow } from './axis-pipeline.js';
-import type { GatewayProgress } from './intake.service.js';
+import type { GatewayProgress } from './gateway-progress.js';
 
 /** What one axis got written. */
 export interface WrittenAxis {

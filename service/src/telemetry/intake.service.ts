@@ -11,19 +11,11 @@ import { Gateway } from '../fleet/gateway.entity.js';
 import { AxisCheckpoint } from './axis-checkpoint.entity.js';
 import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
 import { CheckpointWriter, type WrittenAxis } from './checkpoint-writer.js';
-import { decodeFrame, FrameError } from './frame-codec.js';
+import { checkTime, endOf, MAX_AHEAD_US, MAX_JUMP, Refusal } from './frame-bounds.js';
+import { decodeFrame, FrameError, type Frame } from './frame-codec.js';
+import { progressOf, type GatewayProgress } from './gateway-progress.js';
 import { SampleRecorder } from './sample-recorder.js';
-
-/** How far a gateway has got; in memory it runs ahead of what is durable. */
-export interface GatewayProgress {
-  id: number;
-  siteId: number;
-  epoch: string | null;
-  /** Last sequence taken. */
-  received: number;
-  durable: number;
-  lastSeenAt: number | null;
-}
+import { serviceNow } from './service-clock.js';
 
 export type FrameAnswer = { received: number } | { rejected: string; sequence: number | null };
 
@@ -83,6 +75,8 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
         )
       )
         this.log.warn(`The saved state of axis ${axisId} has another layout; its identification starts anew`);
+      if (pipeline.forgetFuture(1000 * serviceNow() + MAX_AHEAD_US))
+        this.log.warn(`Axis ${axisId} has samples from the future; it goes on with what comes now`);
     }
     for (const gateway of await this.dataSource.getRepository(Gateway).find()) this.addGateway(gateway);
     this.timer = setInterval(() => this.checkpoint(), CHECKPOINT_EVERY_MS);
@@ -121,6 +115,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
     progress.epoch = epoch;
     progress.received = 0;
     progress.durable = 0;
+    progress.jumpTo = null;
   }
 
   /** Which axes' raw samples somebody wants to see live. */
@@ -140,41 +135,29 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
     try {
       const frame = decodeFrame(message);
       sequence = frame.sequence;
-      const pipelines = frame.blocks.map((block, b) => {
-        const axisId = served[block.axisIndex];
-        const pipeline = axisId === undefined ? undefined : this.pipelines.get(axisId);
-        if (!pipeline)
-          return refuse(
-            'unknown-axis',
-            `block ${b} names axis index ${block.axisIndex}, which hello did not give`,
-          );
-        if (block.sampleTimeUs !== Math.round(pipeline.facts.sampleTime * 1e6))
-          return refuse(
-            'wrong-sample-time',
-            `block ${b}: sample time ${block.sampleTimeUs} µs, ${pipeline.facts.tag} is registered with ${pipeline.facts.sampleTime * 1e6} µs`,
-          );
-        return pipeline;
-      });
-      progress.lastSeenAt = Date.now();
+      const now = serviceNow();
+      const pipelines = this.pipelinesOf(frame, served, now);
+      progress.lastSeenAt = now;
       if (sequence <= progress.received) {
+        progress.watch.duplicates++;
         framesTotal.inc({ outcome: 'duplicate' });
         return { received: sequence };
       }
-      if (sequence > progress.received + 1) {
-        gapsTotal.inc();
-        for (const axisId of served) this.pipelines.get(axisId)?.gap();
-      }
+      this.checkSequence(progress, sequence, served);
       let samples = 0;
+      let newestUs = 0;
       for (let b = 0; b < pipelines.length; b++) {
         const block = frame.blocks[b]!;
         const pipeline = pipelines[b]!;
-        pipeline.push(block);
+        progress.watch.droppedSamples += pipeline.push(block);
         this.recorder.push(pipeline.facts.id, block);
         samples += block.target.length;
+        newestUs = Math.max(newestUs, endOf(block));
         if (this.traced.has(pipeline.facts.id))
           tell(this.emitter, 'samples.received', { axisId: pipeline.facts.id, block });
       }
       progress.received = sequence;
+      progress.watch.taken(now, samples, newestUs);
       framesTotal.inc({ outcome: 'taken' });
       samplesTotal.inc(samples);
       return { received: sequence };
@@ -182,9 +165,47 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       const reason =
         error instanceof FrameError || error instanceof Refusal ? error.reason : 'internal-error';
       if (reason === 'internal-error') this.log.error('A frame could not be taken', (error as Error).stack);
+      progress.watch.refused(reason);
       framesTotal.inc({ outcome: reason });
       return { rejected: `${reason}: ${(error as Error).message}`, sequence };
     }
+  }
+
+  /** The pipeline of each block, once all blocks are what hello and the clock allow. */
+  private pipelinesOf({ blocks }: Frame, served: readonly number[], now: number): AxisPipeline[] {
+    return blocks.map((block, b) => {
+      const axisId = served[block.axisIndex];
+      const pipeline = axisId === undefined ? undefined : this.pipelines.get(axisId);
+      if (!pipeline)
+        throw new Refusal(
+          'unknown-axis',
+          `block ${b} names axis index ${block.axisIndex}, which hello did not give`,
+        );
+      if (block.sampleTimeUs !== Math.round(pipeline.facts.sampleTime * 1e6))
+        throw new Refusal(
+          'wrong-sample-time',
+          `block ${b}: sample time ${block.sampleTimeUs} µs, ${pipeline.facts.tag} is registered with ${pipeline.facts.sampleTime * 1e6} µs`,
+        );
+      checkTime(block, b, 1000 * now);
+      return pipeline;
+    });
+  }
+
+  /** A sequence that skips some is a gap of every axis served; one that skips many must come twice. */
+  private checkSequence(progress: GatewayProgress, sequence: number, served: readonly number[]): void {
+    const { received, jumpTo } = progress;
+    progress.jumpTo = null;
+    if (sequence === received + 1) return;
+    if (sequence > received + MAX_JUMP && sequence !== jumpTo) {
+      progress.jumpTo = sequence;
+      throw new Refusal(
+        'sequence-jump',
+        `sequence ${sequence} comes after ${received}; a step of more than ${MAX_JUMP} is taken when the message is sent again`,
+      );
+    }
+    progress.watch.gaps++;
+    gapsTotal.inc();
+    for (const axisId of served) this.pipelines.get(axisId)?.gap();
   }
 
   /** Writes what is known by now in one transaction, then tells the others. A failed write is tried again. */
@@ -253,30 +274,10 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
   }
 
   private addGateway(gateway: Gateway): GatewayProgress {
-    const progress: GatewayProgress = {
-      id: gateway.id,
-      siteId: gateway.siteId,
-      epoch: gateway.epoch,
-      received: gateway.durableSequence,
-      durable: gateway.durableSequence,
-      lastSeenAt: gateway.lastSeenAt?.getTime() ?? null,
-    };
+    const progress = progressOf(gateway);
     this.gateways.set(gateway.id, progress);
     return progress;
   }
-}
-
-class Refusal extends Error {
-  constructor(
-    readonly reason: string,
-    message: string,
-  ) {
-    super(message);
-  }
-}
-
-function refuse(reason: string, message: string): never {
-  throw new Refusal(reason, message);
 }
 
 function factsOf(axis: Axis): AxisFacts {

@@ -20,7 +20,8 @@ import { Axis } from '../fleet/axis.entity.js';
 import { Gateway } from '../fleet/gateway.entity.js';
 import { TuningRevision } from '../fleet/tuning-revision.entity.js';
 import { MAX_FRAME_BYTES } from './frame-codec.js';
-import { IntakeService, type FrameAnswer, type GatewayProgress } from './intake.service.js';
+import type { GatewayProgress } from './gateway-progress.js';
+import { IntakeService, type FrameAnswer } from './intake.service.js';
 
 interface GatewaySocket extends Socket {
   data: { progress: GatewayProgress; served: number[] };

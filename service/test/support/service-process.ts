@@ -19,7 +19,8 @@ export async function startProcess(dataFolder: string): Promise<ServiceProcess> 
   if (!existsSync(MAIN)) throw new Error('the service is not built: npm run build -w service');
   const child = spawn(
     process.execPath,
-    [...(process.env.PROFILE ? ['--cpu-prof', '--cpu-prof-dir=/tmp/intake-probe/prof'] : []), MAIN],
+    // For a profile of it: PROFILE_DIR names the folder.
+    [...(process.env.PROFILE_DIR ? ['--cpu-prof', `--cpu-prof-dir=${process.env.PROFILE_DIR}`] : []), MAIN],
     {
       env: {
         PATH: process.env.PATH,
