@@ -35,6 +35,7 @@ export const POLICY = {
   'note.write': ['technician', 'engineer', 'approver', 'administrator'],
   'site.register': ADMINISTRATOR,
   'gateway.register': ADMINISTRATOR,
+  'intake.read': ['engineer', 'approver', 'administrator'],
   'people.manage': ADMINISTRATOR,
   'mail.manage': ADMINISTRATOR,
   'audit.read': ['engineer', 'approver', 'administrator'],

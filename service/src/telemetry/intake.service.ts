@@ -13,7 +13,7 @@ import { AxisPipeline, type AxisFacts } from './axis-pipeline.js';
 import { CheckpointWriter, type WrittenAxis } from './checkpoint-writer.js';
 import { checkTime, endOf, MAX_AHEAD_US, MAX_JUMP, Refusal } from './frame-bounds.js';
 import { decodeFrame, FrameError, type Frame } from './frame-codec.js';
-import { progressOf, type GatewayProgress } from './gateway-progress.js';
+import { progressOf, type GatewayProgress, type GatewayWatch } from './gateway-progress.js';
 import { SampleRecorder } from './sample-recorder.js';
 import { serviceNow } from './service-clock.js';
 
@@ -51,6 +51,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
   private writer: CheckpointWriter;
   private timer: NodeJS.Timeout | undefined;
   private failedCheckpoints = 0;
+  private lastCheckpoint: number | null = null;
   private longestCheckpoint = 0;
 
   constructor(
@@ -109,6 +110,12 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
     return this.gateways.get(gatewayId);
   }
 
+  /** How the checkpoints fare, s. */
+  checkpoints(): { lastCheckpoint: number | null; longestCheckpoint: number; failedCheckpoints: number } {
+    const { lastCheckpoint, longestCheckpoint, failedCheckpoints } = this;
+    return { lastCheckpoint, longestCheckpoint, failedCheckpoints };
+  }
+
   /** A gateway says in which counting period it is; a new one counts from 1 again. */
   startEpoch(progress: GatewayProgress, epoch: string): void {
     if (progress.epoch === epoch) return;
@@ -165,10 +172,15 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       const reason =
         error instanceof FrameError || error instanceof Refusal ? error.reason : 'internal-error';
       if (reason === 'internal-error') this.log.error('A frame could not be taken', (error as Error).stack);
-      progress.watch.refused(reason);
-      framesTotal.inc({ outcome: reason });
-      return { rejected: `${reason}: ${(error as Error).message}`, sequence };
+      return this.refuse(progress.watch, reason, (error as Error).message, sequence);
     }
+  }
+
+  /** Counts a refusal and puts it into words. */
+  refuse(watch: GatewayWatch, reason: string, message: string, sequence: number | null = null): FrameAnswer {
+    watch.refused(reason);
+    framesTotal.inc({ outcome: reason });
+    return { rejected: `${reason}: ${message}`, sequence };
   }
 
   /** The pipeline of each block, once all blocks are what hello and the clock allow. */
@@ -232,6 +244,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       const written = this.writer.write([...this.pipelines.values()], [...this.gateways.values()]);
       const took = (performance.now() - from) / 1000;
       checkpointSeconds.observe(took);
+      this.lastCheckpoint = took;
       this.longestCheckpoint = Math.max(this.longestCheckpoint, took);
       longestCheckpoint.set(this.longestCheckpoint);
       this.failedCheckpoints = 0;

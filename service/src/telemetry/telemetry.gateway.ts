@@ -1,57 +1,37 @@
 import { Logger } from '@nestjs/common';
 import { EventEmitter2, OnEvent } from '@nestjs/event-emitter';
-import { InjectDataSource } from '@nestjs/typeorm';
+import { Interval } from '@nestjs/schedule';
 import {
   ConnectedSocket,
   MessageBody,
   SubscribeMessage,
   WebSocketGateway,
   WebSocketServer,
+  type OnGatewayConnection,
   type OnGatewayDisconnect,
   type OnGatewayInit,
 } from '@nestjs/websockets';
-import { createHash } from 'node:crypto';
-import { Counter, Gauge } from 'prom-client';
+import { Gauge } from 'prom-client';
 import type { Namespace, Socket } from 'socket.io';
-import { In, type DataSource } from 'typeorm';
 import type { Gains, Structure } from '../control/pole-placement.js';
 import { tell } from '../events.js';
-import { Axis } from '../fleet/axis.entity.js';
-import { Gateway } from '../fleet/gateway.entity.js';
-import { TuningRevision } from '../fleet/tuning-revision.entity.js';
 import { MAX_FRAME_BYTES } from './frame-codec.js';
-import type { GatewayProgress } from './gateway-progress.js';
-import { IntakeService, type FrameAnswer } from './intake.service.js';
+import { GatewaySessions, MAX_AXES, MAX_EPOCH_LENGTH, type HelloAnswer } from './gateway-sessions.service.js';
+import { IntakeLine, type GatewaySession } from './intake-line.service.js';
+import type { FrameAnswer } from './intake.service.js';
 
 interface GatewaySocket extends Socket {
-  data: { progress: GatewayProgress; served: number[] };
+  data: GatewaySession;
 }
 
-interface HelloAnswer {
-  axes: {
-    tag: string;
-    index: number;
-    id: number;
-    resolution: number;
-    gains: Gains | null;
-    revision: number;
-    structure: Structure;
-    maintenance: boolean;
-  }[];
-  durableSequence: number;
-  unknown: string[];
-}
-
-const refusedConnections = new Counter({
-  name: 'polewright_gateway_refused_total',
-  help: 'Telemetry connections refused for their token',
-});
 const connectedGateways = new Gauge({
   name: 'polewright_gateways_connected',
   help: 'Gateways connected now',
 });
 
-const MAX_AXES = 65_535;
+const PACE_EVERY_MS = 1_000;
+/** Answers that a gateway may leave unread before its connection is closed: memory is bounded on this side too. */
+const MOST_UNREAD = 10_000;
 
 /** Where machine gateways connect: `/telemetry`, one connection per token, the newest wins. */
 @WebSocketGateway({
@@ -61,7 +41,9 @@ const MAX_AXES = 65_535;
   maxHttpBufferSize: MAX_FRAME_BYTES,
   perMessageDeflate: false,
 })
-export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisconnect<GatewaySocket> {
+export class TelemetryGateway
+  implements OnGatewayInit<Namespace>, OnGatewayConnection<GatewaySocket>, OnGatewayDisconnect<GatewaySocket>
+{
   private readonly log = new Logger(TelemetryGateway.name);
   /** Connected sockets by gateway. */
   private readonly sockets = new Map<number, GatewaySocket>();
@@ -70,39 +52,49 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
   private readonly namespace: Namespace;
 
   constructor(
-    @InjectDataSource() private readonly dataSource: DataSource,
-    private readonly intake: IntakeService,
+    private readonly sessions: GatewaySessions,
+    private readonly line: IntakeLine,
     private readonly emitter: EventEmitter2,
   ) {}
 
   afterInit(namespace: Namespace): void {
     namespace.use((socket, next) => {
-      this.admit(socket as GatewaySocket).then(
-        () => next(),
-        (error: Error) => {
-          refusedConnections.inc();
-          next(error);
-        },
-      );
+      this.admit(socket as GatewaySocket).then(() => next(), next);
     });
   }
 
   private async admit(socket: GatewaySocket): Promise<void> {
-    const { token } = socket.handshake.auth as { token?: unknown };
-    if (typeof token !== 'string' || token.length === 0)
-      throw new Error('a gateway token is needed: auth: { token }');
-    const gateway = await this.dataSource
-      .getRepository(Gateway)
-      .findOneBy({ tokenHash: createHash('sha256').update(token).digest('hex') });
-    if (!gateway) throw new Error('this gateway token is not known');
-    socket.data = { progress: this.intake.progress(gateway), served: [] };
-    const former = this.sockets.get(gateway.id);
-    if (former) {
-      this.log.warn(`Gateway ${gateway.name} connected twice; the former connection is closed`);
-      former.disconnect(true);
-    }
+    const gateway = await this.sessions.gatewayOf((socket.handshake.auth as { token?: unknown }).token);
+    socket.data = this.sessions.open(gateway);
+    this.close(gateway.id, `Gateway ${gateway.name} connected twice; the former connection is closed`);
+    this.sessions.endHttp(gateway.id);
     this.sockets.set(gateway.id, socket);
     connectedGateways.set(this.sockets.size);
+  }
+
+  /** Ends a gateway's connection, if there is one. */
+  close(gatewayId: number, because: string): void {
+    const socket = this.sockets.get(gatewayId);
+    if (!socket) return;
+    this.log.warn(because);
+    this.sockets.delete(gatewayId);
+    socket.disconnect(true);
+  }
+
+  /** Frames go to the line without the pipe of observables that a message handler of the framework is. */
+  handleConnection(socket: GatewaySocket): void {
+    let unread = 0;
+    // Sent whenever the connection could hand on all that it had to write.
+    socket.conn.on('drain', () => (unread = 0));
+    socket.on('frames', (message: unknown, reply: unknown) => {
+      this.line.offer(socket.data, message, (answer: FrameAnswer) => {
+        if (typeof reply !== 'function') return;
+        (reply as (answer: FrameAnswer) => void)(answer);
+        if (++unread <= MOST_UNREAD || socket.disconnected) return;
+        this.log.warn(`Gateway ${socket.data.progress.id} reads no answers; its connection is closed`);
+        socket.disconnect(true);
+      });
+    });
   }
 
   handleDisconnect(socket: GatewaySocket): void {
@@ -119,49 +111,11 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
     const { axes: tags, epoch } = (body ?? {}) as { axes?: unknown; epoch?: unknown };
     if (!Array.isArray(tags) || tags.length > MAX_AXES || tags.some((tag) => typeof tag !== 'string'))
       return { rejected: 'bad-hello: axes must be a list of at most 65535 tags' };
-    if (typeof epoch !== 'string' || epoch.length === 0 || epoch.length > 200)
-      return { rejected: 'bad-hello: epoch must be a string of 1 to 200 characters' };
-    const { progress } = socket.data;
-    const wanted = [...new Set(tags as string[])];
-    const known = new Map<string, Axis>();
-    for (let i = 0; i < wanted.length; i += 500)
-      for (const axis of await this.dataSource
-        .getRepository(Axis)
-        .findBy({ siteId: progress.siteId, tag: In(wanted.slice(i, i + 500)) }))
-        known.set(axis.tag, axis);
-    const served: number[] = [];
-    const answers: HelloAnswer['axes'] = [];
-    for (const axis of wanted.flatMap((tag) => known.get(tag) ?? [])) {
-      this.intake.pipelineFor(axis);
-      const tuning = await this.dataSource
-        .getRepository(TuningRevision)
-        .findOneBy({ axisId: axis.id, revision: axis.revision });
-      answers.push({
-        tag: axis.tag,
-        index: served.length,
-        id: axis.id,
-        resolution: axis.resolution,
-        gains: tuning?.gains ?? null,
-        revision: axis.revision,
-        structure: tuning?.structure ?? axis.structure,
-        maintenance: axis.inMaintenance,
-      });
-      served.push(axis.id);
-    }
-    this.intake.startEpoch(progress, epoch);
-    progress.lastSeenAt = Date.now();
-    socket.data.served = served;
-    tell(this.emitter, 'gateway.greeted', { axisIds: served });
-    return {
-      axes: answers,
-      durableSequence: progress.durable,
-      unknown: wanted.filter((tag) => !known.has(tag)),
-    };
-  }
-
-  @SubscribeMessage('frames')
-  frames(@ConnectedSocket() socket: GatewaySocket, @MessageBody() message: unknown): FrameAnswer {
-    return this.intake.take(socket.data.progress, socket.data.served, message as Uint8Array);
+    if (typeof epoch !== 'string' || epoch.length === 0 || epoch.length > MAX_EPOCH_LENGTH)
+      return {
+        rejected: `bad-hello: epoch must be a string of 1 to ${MAX_EPOCH_LENGTH} characters`,
+      };
+    return this.sessions.hello(socket.data, tags as string[], epoch);
   }
 
   @SubscribeMessage('gains-applied')
@@ -184,6 +138,13 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
         return { rejected: `bad-gains: gains.${name} must be a number` };
     tell(this.emitter, 'gains.read-back', { axisId, revision, gains: read as Gains });
     return { received: true };
+  }
+
+  /** Asks those whose messages wait to send less often, and lets them run again. */
+  @Interval(PACE_EVERY_MS)
+  pace(): void {
+    for (const [gatewayId, keepEveryMs] of this.line.beat(this.sockets.keys()))
+      this.sockets.get(gatewayId)?.emit('slow-down', { keepEveryMs });
   }
 
   /** Everything that a checkpoint wrote is durable: each gateway may forget it. */
@@ -216,6 +177,10 @@ export class TelemetryGateway implements OnGatewayInit<Namespace>, OnGatewayDisc
   /** Whether a connected gateway serves the axis. */
   serves(axisId: number): boolean {
     return this.socketServing(axisId) !== undefined;
+  }
+
+  sessionOf(gatewayId: number): GatewaySession | undefined {
+    return this.sockets.get(gatewayId)?.data;
   }
 
   connected(gatewayId: number): boolean {
