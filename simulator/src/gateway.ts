@@ -208,6 +208,8 @@ export class Gateway {
         return void this.greet();
       }
       this.take(answer);
+      // A service that was started anew knows of no slow-down.
+      this.slowestPeriod = 0;
       this.buffer.rewind(answer.durableSequence);
       this.greeted = true;
       log(`${name}: ${answer.axes.length} axes greeted, ${this.buffer.size} messages to send`);

@@ -452,6 +452,80 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/telemetry/hello": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /**
+         * A gateway says what it serves; a socket of the same token is closed
+         * @description Needed before frames, and again when they are refused as no-hello (the service was started anew, or the token connected elsewhere).
+         */
+        post: operations["TelemetryController_hello"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/telemetry/frames": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /**
+         * One telemetry message
+         * @description The bytes that the socket’s event frames carries, little-endian, at most 4 MB. The answer is the socket’s: received, or rejected with the reason. busy and sequence-jump ask for the same message again, later. Send one message at a time and keep it until GET /telemetry/durable has passed it.
+         */
+        post: operations["TelemetryController_frames"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/telemetry/durable": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** What a gateway may forget */
+        get: operations["TelemetryController_durable"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/intake": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** How the intake fares: what waits, the checkpoint, and each gateway */
+        get: operations["IntakeController_get"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/alerts": {
         parameters: {
             query?: never;
@@ -1857,6 +1931,108 @@ export interface components {
         TuningPageDto: {
             items: components["schemas"]["TuningRevisionDto"][];
             nextCursor: string | null;
+        };
+        HelloDto: {
+            /** @description Tags of the axes that the gateway serves */
+            axes: string[];
+            /** @description New whenever the gateway has lost its buffer and counts from 1 again */
+            epoch: string;
+        };
+        GreetedAxisDto: {
+            tag: string;
+            /** @description The axis index of its blocks */
+            index: number;
+            id: number;
+            /** @description mm per count */
+            resolution: number;
+            gains: components["schemas"]["GainsDto"] | null;
+            revision: number;
+            /** @enum {string} */
+            structure: "PID" | "PI-D" | "I-PD";
+            maintenance: boolean;
+        };
+        HelloAnswerDto: {
+            axes: components["schemas"]["GreetedAxisDto"][];
+            /** @description Everything up to it survives a crash of the service */
+            durableSequence: number;
+            /** @description Tags that the gateway’s site does not have */
+            unknown: string[];
+        };
+        FrameAnswerDto: {
+            /** @description The sequence taken, also of a message that was taken before */
+            received?: number;
+            /** @description Why the whole message was refused: a stable word, a colon, the rest */
+            rejected?: string;
+            /** @description Beside rejected; null if unreadable */
+            sequence?: number | null;
+        };
+        DurableDto: {
+            /** @description Everything up to it may be forgotten */
+            sequence: number;
+        };
+        RefusalCountDto: {
+            /** @example time-ahead */
+            reason: string;
+            count: number;
+        };
+        GatewayIntakeDto: {
+            id: number;
+            siteId: number;
+            name: string;
+            /**
+             * @description null: not connected
+             * @enum {string|null}
+             */
+            via: "socket" | "http" | null;
+            /** Format: date-time */
+            lastSeenAt: string | null;
+            /** @description Axes that hello answered */
+            axes: number;
+            /** @description Per second, over the last ten */
+            messagesPerSecond: number;
+            /** @description Per second, over the last ten */
+            samplesPerSecond: number;
+            /** @description Age of the newest sample taken, s */
+            lag: number | null;
+            /** @description Newest sample’s time minus its arrival, s, of the least delayed message of the last minute: positive when the gateway’s clock is ahead, negative when samples come late or the clock is behind */
+            clockOffset: number | null;
+            /** @description Times that the sequence skipped, since the service started */
+            gaps: number;
+            /** @description Messages that came again, since the service started */
+            duplicates: number;
+            /** @description Samples not later than what their axis had, not taken, since the service started */
+            droppedSamples: number;
+            /** @description Since the service started, most frequent first */
+            refusals: components["schemas"]["RefusalCountDto"][];
+            /** @description Bytes of its messages that wait */
+            queueBytes: number;
+            /** @description Time between messages that it was asked for, ms; 0 if it sends as it likes */
+            keepEveryMs: number;
+        };
+        IntakeDto: {
+            /**
+             * Format: date-time
+             * @description Now by the service
+             */
+            at: string;
+            /**
+             * Format: date-time
+             * @description Since when what is counted was counted
+             */
+            since: string;
+            /** @description Bytes of messages that wait */
+            queueBytes: number;
+            /** @description Messages that wait */
+            queueMessages: number;
+            /** @description Longest wait of a message within the last second, s */
+            lag: number;
+            /** @description The last checkpoint took so long, s */
+            lastCheckpoint: number | null;
+            /** @description Longest checkpoint since the service started, s */
+            longestCheckpoint: number;
+            /** @description Checkpoints that failed in a row until now; 0 when the last one was written */
+            failedCheckpoints: number;
+            gateways: components["schemas"]["GatewayIntakeDto"][];
         };
         AlertEventDto: {
             /** Format: date-time */
@@ -3795,6 +3971,111 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["TuningPageDto"];
+                };
+            };
+        };
+    };
+    TelemetryController_hello: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["HelloDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["HelloAnswerDto"];
+                };
+            };
+            /** @description The token is that of no gateway */
+            401: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    TelemetryController_frames: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/octet-stream": string;
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["FrameAnswerDto"];
+                };
+            };
+            /** @description The token is that of no gateway */
+            401: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    TelemetryController_durable: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["DurableDto"];
+                };
+            };
+            /** @description The token is that of no gateway */
+            401: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
+            };
+        };
+    };
+    IntakeController_get: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["IntakeDto"];
                 };
             };
         };

@@ -23,6 +23,7 @@ export function Layout() {
     { to: '/captures', label: 'Captures', count: 0 },
     ...(administrator ? [{ to: '/admin/people', label: 'People', count: 0 }] : []),
     { to: '/admin/mail', label: 'Mail', count: 0 },
+    ...(may(user, 'intake.read') ? [{ to: '/admin/intake', label: 'Intake', count: 0 }] : []),
     ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record', count: 0 }] : []),
   ];
   const link = ({ to, label, count }: (typeof links)[number]) => (
