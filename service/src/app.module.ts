@@ -18,6 +18,7 @@ import { HealthModule } from './health/health.module.js';
 import { IndicatorsModule } from './indicators/indicators.module.js';
 import { LiveModule } from './live/live.module.js';
 import { NotificationsModule } from './notifications/notifications.module.js';
+import { OnCallModule } from './on-call/on-call.module.js';
 import { PeopleModule } from './people/people.module.js';
 import { ProposalsModule } from './proposals/proposals.module.js';
 import { RotaModule } from './rota/rota.module.js';
@@ -62,6 +63,7 @@ export class AppModule {
         ProposalsModule,
         RotaModule,
         NotificationsModule,
+        OnCallModule,
         LiveModule,
         DesignModule,
         HealthModule,

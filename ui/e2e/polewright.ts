@@ -77,7 +77,7 @@ export class Polewright {
 
   /** A page of a person who has signed in by the sign-in page. */
   async pageOf(person: Person, width = 1280): Promise<Page> {
-    const context = await this.browser.newContext({ viewport: { width, height: width < 500 ? 844 : 900 } });
+    const context = await this.browser.newContext({ viewport: { width, height: width < 500 ? 740 : 900 } });
     const page = await context.newPage();
     page.setDefaultTimeout(20_000);
     await page.goto(`${this.address}/sign-in`);

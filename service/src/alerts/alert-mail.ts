@@ -4,11 +4,16 @@ import { RULE_TITLES } from './rules.js';
 const escape = (text: string): string =>
   text.replace(/[&<>"]/g, (c) => ({ '&': '&amp;', '<': '&lt;', '>': '&gt;', '"': '&quot;' })[c]!);
 
-/** The mail about an alert that nobody has acknowledged: what, where, what to do, and the way to the page. */
+/**
+ * The mail about an alert that nobody has acknowledged: what, where, what to do, and the ways to acknowledge it.
+ *
+ * @param acknowledgeUrl a page that asks once more and needs no sign-in
+ */
 export function alertMail(
   alert: Alert,
   step: number,
   publicUrl: string,
+  acknowledgeUrl: string,
 ): { subject: string; text: string; html: string } {
   const { axis } = alert;
   const link = `${publicUrl}/alerts/${alert.id}`;
@@ -30,14 +35,15 @@ export function alertMail(
     'Machines can move unexpectedly. Follow the site’s lockout and machine-safety procedures and local codes.';
   return {
     subject,
-    text: `${lines.join('\n\n')}\n\nAcknowledge: ${link}\n\n${safety}\n`,
+    text: `${lines.join('\n\n')}\n\nAcknowledge: ${acknowledgeUrl}\n\nOpen the alert: ${link}\n\n${safety}\n`,
     html: `<div style="font:16px/1.5 'Work Sans',Arial,sans-serif;color:#1C2733;max-width:560px">
 <h1 style="font-size:20px;margin:0 0 4px">${escape(axis.tag)}: ${escape(RULE_TITLES[alert.rule])}</h1>
 <p style="margin:0 0 14px;color:#5B6672">${escape(axis.name)}. ${escape(where)}</p>
 <p style="margin:0 0 10px"><strong>${escape(alert.message)}</strong></p>
 <p style="margin:0 0 10px">${escape(lines[2]!)}</p>
 <p style="margin:0 0 18px">${escape(lines[3]!)}</p>
-<p style="margin:0 0 18px"><a href="${escape(link)}" style="background:#1F7A6D;color:#fff;padding:12px 20px;border-radius:4px;text-decoration:none;font-weight:600">Open and acknowledge</a></p>
+<p style="margin:0 0 14px"><a href="${escape(acknowledgeUrl)}" style="background:#1F7A6D;color:#fff;padding:12px 20px;border-radius:4px;text-decoration:none;font-weight:600">Acknowledge …</a></p>
+<p style="margin:0 0 18px"><a href="${escape(link)}">Open the alert</a></p>
 <p style="margin:0;color:#5B6672;font-size:13px">${escape(safety)}</p></div>`,
   };
 }

@@ -1,13 +1,10 @@
 import { Injectable } from '@nestjs/common';
-import { ConfigService } from '@nestjs/config';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
 import { LessThanOrEqual, type DataSource } from 'typeorm';
 import { Transactions } from '../database/transactions.js';
-import { MailOutboxService } from '../notifications/mail-outbox.service.js';
 import { RotaService } from '../rota/rota.service.js';
-import type { Settings } from '../settings.js';
-import { alertMail } from './alert-mail.js';
+import { AlertNoticesService } from './alert-notices.service.js';
 import { Alert, AlertEvent } from './alert.entity.js';
 import { AlertsService } from './alerts.service.js';
 
@@ -22,8 +19,7 @@ export class EscalationService {
     private readonly transactions: Transactions,
     private readonly alerts: AlertsService,
     private readonly rota: RotaService,
-    private readonly outbox: MailOutboxService,
-    private readonly config: ConfigService<Settings, true>,
+    private readonly notices: AlertNoticesService,
   ) {}
 
   @Interval(1_000)
@@ -46,19 +42,13 @@ export class EscalationService {
       // Somebody may have acknowledged it since it was found due.
       const fresh = await manager.findOneBy(Alert, { id: alert.id, state: 'unacknowledged' });
       if (!fresh || fresh.stepsTaken !== alert.stepsTaken) return;
-      if (onCall)
-        await this.outbox.enqueue(manager, {
-          key: `alert ${alert.id} raised ${alert.raisedAt.getTime()} step ${alert.stepsTaken + 1}`,
-          to: onCall.email,
-          alertId: alert.id,
-          ...alertMail(alert, alert.stepsTaken + 1, this.config.get('PUBLIC_URL', { infer: true })),
-        });
+      const ways = onCall && (await this.notices.tell(manager, alert, onCall, alert.stepsTaken + 1, at));
       await manager.save(AlertEvent, {
         alertId: alert.id,
         at,
         by: 'service',
         action: onCall ? 'told' : 'nobody on call',
-        note: onCall ? `${onCall.name} by mail` : 'The rota has a gap: nobody could be told',
+        note: onCall ? `${onCall.name} by ${ways}` : 'The rota has a gap: nobody could be told',
       });
       fresh.stepsTaken++;
       fresh.nextStepAt =

@@ -168,6 +168,12 @@ export class AuthService {
     return asSignedIn(user);
   }
 
+  /** A person by their number, without a sign-in of theirs; null when they are shut out. */
+  async personById(userId: number): Promise<SignedInUser | null> {
+    const user = await this.find('user.id = :key', userId);
+    return user && !this.isShutOut(user) ? asSignedIn(user) : null;
+  }
+
   /** Counts and words the refusal of a missing, expired or unreadable access token. */
   refusal(cause: unknown): UnauthorizedException {
     const name = cause instanceof Error ? cause.name : '';

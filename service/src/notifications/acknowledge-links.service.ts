@@ -49,10 +49,9 @@ export class AcknowledgeLinksService {
     return manager.findOneBy(AcknowledgeLink, { id: parseInt(id, 36) });
   }
 
-  /** @returns whether this was the link's one use */
-  async use(manager: EntityManager, id: number, at: Date): Promise<boolean> {
-    const { affected } = await manager.update(AcknowledgeLink, { id, usedAt: IsNull() }, { usedAt: at });
-    return affected === 1;
+  /** Uses a link up. */
+  async use(manager: EntityManager, id: number, at: Date): Promise<void> {
+    await manager.update(AcknowledgeLink, { id, usedAt: IsNull() }, { usedAt: at });
   }
 
   private token(id: number, expiresAt: Date): string {

@@ -1310,6 +1310,22 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/acknowledge/{token}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["AcknowledgeController_view"];
+        put?: never;
+        post: operations["AcknowledgeController_acknowledge"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/design": {
         parameters: {
             query?: never;
@@ -2880,6 +2896,33 @@ export interface components {
         };
         DemoInboxDto: {
             items: components["schemas"]["DemoMessageDto"][];
+        };
+        AcknowledgeLinkDto: {
+            /**
+             * @description `over`: the alert is no longer the one of the mail, or waits for nobody
+             * @enum {string}
+             */
+            state: "open" | "used" | "expired" | "over";
+            alertId: number;
+            /** @description For whom the link acknowledges */
+            person: string;
+            axisTag: string;
+            axisName: string;
+            machineName: string;
+            siteName: string;
+            /** @example Europe/London */
+            timeZone: string;
+            title: string;
+            /** @enum {string} */
+            priority: "high" | "medium" | "low";
+            message: string;
+            /** @description What to do */
+            action: string;
+            /** Format: date-time */
+            raisedAt: string;
+            acknowledgedBy: string | null;
+            /** Format: date-time */
+            acknowledgedAt: string | null;
         };
         DesignPlantDto: {
             /** @description K, (mm/s)/% */
@@ -5354,6 +5397,48 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["DemoInboxDto"];
+                };
+            };
+        };
+    };
+    AcknowledgeController_view: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                token: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AcknowledgeLinkDto"];
+                };
+            };
+        };
+    };
+    AcknowledgeController_acknowledge: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                token: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AcknowledgeLinkDto"];
                 };
             };
         };

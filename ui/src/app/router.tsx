@@ -10,6 +10,7 @@ export const router = createBrowserRouter([
       { path: '/sign-in', lazy: () => import('../features/auth/sign-in-page') },
       { path: '/password-reset', lazy: () => import('../features/auth/password-reset-page') },
       { path: '/invitation/:token', lazy: () => import('../features/people/invitation-page') },
+      { path: '/acknowledge/:token', lazy: () => import('../features/alerts/acknowledge-page') },
       {
         element: <SignedIn />,
         children: [

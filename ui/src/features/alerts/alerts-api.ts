@@ -72,3 +72,20 @@ export const unshelve = (id: number) =>
 
 export const addNote = (id: number, note: string) =>
   changed(answer(client.POST('/api/v1/alerts/{id}/note', { params: { path: { id } }, body: { note } })));
+
+export type AcknowledgeLink = Schemas['AcknowledgeLinkDto'];
+
+/** What the link in a mail would acknowledge. */
+export const linkQuery = (token: string) =>
+  queryOptions({
+    queryKey: ['acknowledge', token],
+    queryFn: () => answer(client.GET('/api/v1/acknowledge/{token}', { params: { path: { token } } })),
+  });
+
+export async function acknowledgeByLink(token: string): Promise<void> {
+  try {
+    await answer(client.POST('/api/v1/acknowledge/{token}', { params: { path: { token } } }));
+  } finally {
+    await queryClient.invalidateQueries({ queryKey: ['acknowledge', token] });
+  }
+}

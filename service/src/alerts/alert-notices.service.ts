@@ -1,0 +1,71 @@
+import { Injectable } from '@nestjs/common';
+import { ConfigService } from '@nestjs/config';
+import type { EntityManager } from 'typeorm';
+import type { Axis } from '../fleet/axis.entity.js';
+import { stripPoint } from '../fleet/strip-point.js';
+import { RecentSeconds } from '../indicators/recent-seconds.js';
+import { AcknowledgeLinksService } from '../notifications/acknowledge-links.service.js';
+import { axisPicture } from '../notifications/axis-picture.js';
+import { MailOutboxService } from '../notifications/mail-outbox.service.js';
+import type { Settings } from '../settings.js';
+import { IntakeService } from '../telemetry/intake.service.js';
+import { alertMail } from './alert-mail.js';
+import type { Alert } from './alert.entity.js';
+
+/** Who is told. */
+export interface Told {
+  userId: number;
+  name: string;
+  email: string;
+}
+
+/** Tells one person of one alert, by every way that reaches them. */
+@Injectable()
+export class AlertNoticesService {
+  constructor(
+    private readonly outbox: MailOutboxService,
+    private readonly links: AcknowledgeLinksService,
+    private readonly recent: RecentSeconds,
+    private readonly intake: IntakeService,
+    private readonly config: ConfigService<Settings, true>,
+  ) {}
+
+  /**
+   * Writes what is to go out, in the unit of work of the step that tells.
+   *
+   * @param alert with its axis, machine and site
+   * @returns the ways in words, such as "mail"
+   */
+  async tell(manager: EntityManager, alert: Alert, person: Told, step: number, at: Date): Promise<string> {
+    const key = `alert ${alert.id} raised ${alert.raisedAt.getTime()} step ${step}`;
+    const acknowledgeUrl = await this.links.make(manager, alert, person.userId, at);
+    const publicUrl = this.config.get('PUBLIC_URL', { infer: true });
+    await this.outbox.enqueue(manager, {
+      key,
+      to: person.email,
+      alertId: alert.id,
+      siteId: alert.siteId,
+      picture: this.pictureOf(alert.axis),
+      ...alertMail(alert, step, publicUrl, acknowledgeUrl),
+    });
+    return 'mail';
+  }
+
+  private pictureOf(axis: Axis): { svg: string; text: string } {
+    const estimate = this.intake.pipeline(axis.id)?.estimate;
+    const { baseline } = axis;
+    return axisPicture({
+      tag: axis.tag,
+      drift:
+        estimate && baseline
+          ? {
+              gainRatio: estimate.gain.value / baseline.gain,
+              poleRatio: estimate.pole.value / baseline.pole,
+              covariance: estimate.lnCovariance,
+            }
+          : null,
+      tolerances: axis.tolerances,
+      seconds: this.recent.of(axis.id).map(stripPoint),
+    });
+  }
+}

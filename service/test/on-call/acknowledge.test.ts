@@ -1,0 +1,160 @@
+import request from 'supertest';
+import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from 'vitest';
+import { Alert, AlertEvent } from '../../src/alerts/alert.entity.js';
+import { EscalationService } from '../../src/alerts/escalation.service.js';
+import { Axis } from '../../src/fleet/axis.entity.js';
+import { AcknowledgeLink } from '../../src/notifications/acknowledge-link.entity.js';
+import { Mail } from '../../src/notifications/mail.entity.js';
+import { UserRole } from '../../src/people/user-role.entity.js';
+import { User } from '../../src/people/user.entity.js';
+import { RotaService } from '../../src/rota/rota.service.js';
+import { startService, type Service } from '../support/start-service.js';
+
+let service: Service;
+let axis: Axis;
+let person: User;
+const alerts = () => service.dataSource.getRepository(Alert);
+
+beforeAll(async () => {
+  service = await startService();
+  axis = await service.dataSource.getRepository(Axis).findOneByOrFail({ siteId: service.siteIds[0] });
+});
+afterAll(() => service.close());
+beforeEach(async () => {
+  for (const table of ['alert_event', 'alert', 'mail_outbox', 'acknowledge_link'])
+    await service.dataSource.query(`DELETE FROM "${table}"`);
+  // Each test has a person of its own on call: one who leaves is gone for good.
+  person = await service.addPerson(`watch ${Math.random().toString(36).slice(2)}`.replace(' ', '-'), [
+    { siteId: axis.siteId, role: 'technician' },
+  ]);
+  vi.spyOn(service.app.get(RotaService), 'onCall').mockResolvedValue({
+    userId: person.id,
+    name: person.name,
+    email: person.email,
+    until: new Date(Date.now() + 3_600_000),
+  });
+});
+
+/** An alert that is due to be told, and what the mail about it says. */
+async function toldAlert(): Promise<{ alert: Alert; mail: Mail; path: string }> {
+  const alert = await alerts().save(
+    alerts().create({
+      siteId: axis.siteId,
+      axisId: axis.id,
+      rule: 'following-error',
+      priority: 'high',
+      state: 'unacknowledged',
+      raisedAt: new Date(Date.now() - 60_000),
+      acknowledgedAt: null,
+      acknowledgedBy: null,
+      returnedAt: null,
+      value: 2,
+      threshold: 1,
+      message: 'It lags by 2 mm.',
+      action: 'Look at it.',
+      nextStepAt: new Date(Date.now() - 1_000),
+    }),
+  );
+  await service.app.get(EscalationService).tellDue();
+  const mail = await service.dataSource.getRepository(Mail).findOneByOrFail({ alertId: alert.id });
+  const url = /http:\/\/polewright\.test\/acknowledge\/(\S+)/.exec(mail.text)!;
+  return { alert, mail, path: `/api/v1/acknowledge/${url[1]}` };
+}
+const get = (path: string) => request(service.app.getHttpServer()).get(path);
+const post = (path: string) => request(service.app.getHttpServer()).post(path);
+
+describe('the link in an alert’s mail', () => {
+  it('shows the alert and changes nothing, however often it is opened; then acknowledges once', async () => {
+    const { alert, mail, path } = await toldAlert();
+    expect(mail).toMatchObject({ to: person.email, siteId: axis.siteId });
+    expect(mail.html).toContain('Acknowledge …');
+    expect(mail.picture).toMatch(/^<svg .*<\/svg>$/);
+    expect(mail.pictureText).toContain(`${axis.tag}: gain`);
+    for (let i = 0; i < 3; i++) {
+      const { body } = await get(path).expect(200);
+      expect(body).toMatchObject({
+        state: 'open',
+        alertId: alert.id,
+        person: person.name,
+        axisTag: axis.tag,
+        message: 'It lags by 2 mm.',
+        acknowledgedBy: null,
+      });
+    }
+    expect((await alerts().findOneByOrFail({ id: alert.id })).state).toBe('unacknowledged');
+    const { body } = await post(path).expect(200);
+    expect(body).toMatchObject({ state: 'used', acknowledgedBy: person.name });
+    expect(await alerts().findOneByOrFail({ id: alert.id })).toMatchObject({
+      state: 'acknowledged',
+      acknowledgedBy: person.name,
+      nextStepAt: null,
+    });
+    const events = await service.dataSource.getRepository(AlertEvent).findBy({ alertId: alert.id });
+    expect(events.map(({ by, action }) => `${by} ${action}`)).toContain(`${person.name} acknowledged`);
+    const second = await post(path).expect(410);
+    expect(second.body.detail).toBe('This link was used already');
+    expect((await get(path)).body).toMatchObject({ state: 'used', acknowledgedBy: person.name });
+  });
+
+  it('pressed twice at once acknowledges once', async () => {
+    const { alert, path } = await toldAlert();
+    const answers = await Promise.all([post(path), post(path), post(path)]);
+    expect(answers.map(({ status }) => status).sort()[0]).toBe(200);
+    expect(answers.filter(({ status }) => status === 200)).toHaveLength(1);
+    const events = await service.dataSource
+      .getRepository(AlertEvent)
+      .findBy({ alertId: alert.id, action: 'acknowledged' });
+    expect(events).toHaveLength(1);
+  });
+
+  it('expires, is for its alert alone, and cannot be made up', async () => {
+    const { path } = await toldAlert();
+    await service.dataSource
+      .getRepository(AcknowledgeLink)
+      .update({ userId: person.id }, { expiresAt: new Date(Date.now() - 1) });
+    expect((await get(path)).body.state).toBe('expired');
+    await post(path).expect(410);
+    const [id, end, signature] = path.split('/').at(-1)!.split('.') as [string, string, string];
+    const made = [
+      `${id}1.${end}.${signature}`,
+      `${id}.${end}1.${signature}`,
+      `${id}.${end}.${signature.slice(0, -1)}A`,
+      `${id}.${end}.`,
+      'x',
+      'a..b',
+    ].filter((token) => token !== `${id}.${end}.${signature}`);
+    for (const token of made) {
+      await get(`/api/v1/acknowledge/${token}`).expect(404);
+      await post(`/api/v1/acknowledge/${token}`).expect(404);
+    }
+  });
+
+  it('is over when somebody else was first, or the alert has gone and come back', async () => {
+    const { alert, path } = await toldAlert();
+    await alerts().update(alert.id, { raisedAt: new Date() });
+    expect((await get(path)).body.state).toBe('over');
+    await post(path).expect(409);
+    await alerts().update(alert.id, { raisedAt: alert.raisedAt });
+    await (
+      await service.as('technician')
+    )
+      .post(`/api/v1/alerts/${alert.id}/acknowledge`)
+      .send({})
+      .expect(200);
+    expect((await get(path)).body).toMatchObject({ state: 'over', acknowledgedBy: 'Tomas Birkwell' });
+    await post(path).expect(409);
+  });
+
+  it('is worth nothing to who has left, or may no longer acknowledge there', async () => {
+    const { alert, path } = await toldAlert();
+    await service.dataSource.getRepository(UserRole).update({ userId: person.id }, { role: 'viewer' });
+    await post(path).expect(403);
+    await service.dataSource.getRepository(User).update(person.id, { disabled: true });
+    await post(path).expect(403);
+    expect((await alerts().findOneByOrFail({ id: alert.id })).state).toBe('unacknowledged');
+    // Refused, it is not used up.
+    await service.dataSource.getRepository(User).update(person.id, { disabled: false });
+    await service.dataSource.getRepository(UserRole).update({ userId: person.id }, { role: 'technician' });
+    await post(path).expect(200);
+  });
+});
