@@ -4,12 +4,15 @@ import { AuthModule } from '../auth/auth.module.js';
 import { NotificationsModule } from '../notifications/notifications.module.js';
 import { RotaModule } from '../rota/rota.module.js';
 import { AcknowledgeController } from './acknowledge.controller.js';
+import { HandOverController } from './hand-over.controller.js';
+import { HandOverService } from './hand-over.service.js';
 import { LinkAcknowledgementService } from './link-acknowledgement.service.js';
+import { RatesService } from './rates.service.js';
 
 /** What the person on call works with: the link in the mail, the hand-over sheet, the rates. */
 @Module({
   imports: [AlertsModule, AuthModule, NotificationsModule, RotaModule],
-  controllers: [AcknowledgeController],
-  providers: [LinkAcknowledgementService],
+  controllers: [AcknowledgeController, HandOverController],
+  providers: [LinkAcknowledgementService, HandOverService, RatesService],
 })
 export class OnCallModule {}

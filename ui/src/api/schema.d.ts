@@ -1326,6 +1326,38 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/on-call/hand-over/{siteId}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["HandOverController_sheet"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/on-call/rates": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["HandOverController_ratesOf"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/design": {
         parameters: {
             query?: never;
@@ -2923,6 +2955,157 @@ export interface components {
             acknowledgedBy: string | null;
             /** Format: date-time */
             acknowledgedAt: string | null;
+        };
+        HandOverAlertDto: {
+            id: number;
+            axisTag: string;
+            title: string;
+            /** @enum {string} */
+            priority: "high" | "medium" | "low";
+            /** @enum {string} */
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            /** Format: date-time */
+            raisedAt: string;
+            message: string;
+            /** @description What to do */
+            action: string;
+            acknowledgedBy: string | null;
+            /** Format: date-time */
+            shelvedUntil: string | null;
+            shelveReason: string | null;
+        };
+        HandOverAxisDto: {
+            id: number;
+            tag: string;
+            name: string;
+            /** @enum {string} */
+            state: "in-tune" | "drifting" | "out-of-tune" | "no-signal" | "in-maintenance";
+            stateReason: string;
+        };
+        HandOverChangeDto: {
+            /** Format: date-time */
+            at: string;
+            by: string;
+            /** @example proposal.applied */
+            action: string;
+            /** @description What it was done to, such as "axis CU-03 feed" */
+            subject: string;
+            note: string | null;
+        };
+        HandOverDto: {
+            siteId: number;
+            siteName: string;
+            /** @example Europe/London */
+            timeZone: string;
+            /** Format: date-time */
+            from: string;
+            /** Format: date-time */
+            to: string;
+            onCall: components["schemas"]["OnCallDto"] | null;
+            /** @description Who comes after; null: nobody */
+            next: components["schemas"]["OnCallDto"] | null;
+            /** @description That are not over */
+            open: components["schemas"]["HandOverAlertDto"][];
+            /** @description That came in the shift and are over */
+            over: components["schemas"]["HandOverAlertDto"][];
+            /** @description That are not in tune now */
+            axes: components["schemas"]["HandOverAxisDto"][];
+            /** @description What people and the service changed in the shift */
+            changes: components["schemas"]["HandOverChangeDto"][];
+            notes: components["schemas"]["NoteDto"][];
+        };
+        DayRateDto: {
+            /**
+             * @description On the site's calendar
+             * @example 2026-11-30
+             */
+            date: string;
+            alerts: number;
+        };
+        PersonRateDto: {
+            /** @description null: nobody was on call */
+            userId: number | null;
+            name: string;
+            hoursOnCall: number;
+            alerts: number;
+            /** @description Alerts in 24 hours on call */
+            perDay: number;
+            /** @description Most alerts on one day of the site's calendar */
+            busiestDay: number;
+            /**
+             * @description Of the busiest day, by the published figures
+             * @enum {string}
+             */
+            load: "acceptable" | "manageable" | "too many";
+        };
+        FloodDto: {
+            /** Format: date-time */
+            from: string;
+            /** Format: date-time */
+            to: string;
+            alerts: number;
+        };
+        FrequentAlertDto: {
+            axisId: number;
+            axisTag: string;
+            title: string;
+            alerts: number;
+            /** @description Of all alerts of the time */
+            sharePct: number;
+            /** @description Came three times or more within a minute */
+            chattering: boolean;
+        };
+        StandingAlertDto: {
+            alertId: number;
+            axisTag: string;
+            title: string;
+            /** @enum {string} */
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            /** Format: date-time */
+            raisedAt: string;
+        };
+        AcknowledgeTimeDto: {
+            /** @enum {string} */
+            priority: "high" | "medium" | "low";
+            alerts: number;
+            /** @description That nobody acknowledged */
+            unanswered: number;
+            /** @description s; half of those acknowledged waited no longer */
+            medianSeconds: number | null;
+            /** @description s; nine of ten of those acknowledged waited no longer */
+            ninthDecileSeconds: number | null;
+        };
+        PublishedFiguresDto: {
+            acceptablePerDay: number;
+            manageablePerDay: number;
+            /** @description More alerts than this in ten minutes are a flood */
+            floodAlerts: number;
+            source: string;
+        };
+        RatesDto: {
+            siteId: number;
+            /** @example Europe/London */
+            timeZone: string;
+            /** Format: date-time */
+            from: string;
+            /** Format: date-time */
+            to: string;
+            /** @description Alerts that were raised */
+            alerts: number;
+            perDay: number;
+            days: components["schemas"]["DayRateDto"][];
+            people: components["schemas"]["PersonRateDto"][];
+            floods: components["schemas"]["FloodDto"][];
+            /** @description Of the time */
+            floodPct: number;
+            /** @description The ten that came most often */
+            frequent: components["schemas"]["FrequentAlertDto"][];
+            /** @description That came three times or more within a minute */
+            chattering: components["schemas"]["FrequentAlertDto"][];
+            /** @description That stand for more than a day */
+            standing: components["schemas"]["StandingAlertDto"][];
+            acknowledging: components["schemas"]["AcknowledgeTimeDto"][];
+            published: components["schemas"]["PublishedFiguresDto"];
         };
         DesignPlantDto: {
             /** @description K, (mm/s)/% */
@@ -5439,6 +5622,52 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["AcknowledgeLinkDto"];
+                };
+            };
+        };
+    };
+    HandOverController_sheet: {
+        parameters: {
+            query?: {
+                /** @description Begin of the present shift where not given */
+                from?: string;
+            };
+            header?: never;
+            path: {
+                siteId: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["HandOverDto"];
+                };
+            };
+        };
+    };
+    HandOverController_ratesOf: {
+        parameters: {
+            query: {
+                siteId: number;
+                days?: number;
+            };
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RatesDto"];
                 };
             };
         };

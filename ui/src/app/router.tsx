@@ -24,6 +24,7 @@ export const router = createBrowserRouter([
                   { path: '/axes/:id', lazy: () => import('../features/axis/axis-page') },
                   { path: '/axes/:id/bench', lazy: () => import('../features/bench/bench-page') },
                   { path: '/alerts', lazy: () => import('../features/alerts/alerts-page') },
+                  { path: '/alerts/rates', lazy: () => import('../features/on-call/rates-page') },
                   { path: '/alerts/:id', lazy: () => import('../features/alerts/alert-page') },
                   { path: '/proposals', lazy: () => import('../features/proposals/proposals-page') },
                   {
@@ -34,6 +35,10 @@ export const router = createBrowserRouter([
                   { path: '/captures', lazy: () => import('../features/captures/captures-page') },
                   { path: '/captures/:id', lazy: () => import('../features/captures/capture-page') },
                   { path: '/rota', lazy: () => import('../features/rota/rota-page') },
+                  {
+                    path: '/rota/:siteId/hand-over',
+                    lazy: () => import('../features/on-call/hand-over-page'),
+                  },
                   { path: '/admin/people', lazy: () => import('../features/people/people-page') },
                   { path: '/admin/mail', lazy: () => import('../features/mail/mail-page') },
                   { path: '/admin/intake', lazy: () => import('../features/intake/intake-page') },

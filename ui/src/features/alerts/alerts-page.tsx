@@ -1,6 +1,6 @@
 import { Button, SegmentedControl, Select } from '@mantine/core';
 import { useInfiniteQuery, useQuery } from '@tanstack/react-query';
-import { useSearchParams } from 'react-router-dom';
+import { Link, useSearchParams } from 'react-router-dom';
 import { useLiveStatus } from '../../api/live';
 import { sitesQuery } from '../../api/sites';
 import { EmptyState, ErrorState, Waiting } from '../../components/notices';
@@ -28,6 +28,7 @@ export function Component() {
       <title>Alerts · Polewright</title>
       <div className={classes.heading}>
         <h1>Alerts</h1>
+        <Link to={`/alerts/rates${siteId ? `?site=${siteId}` : ''}`}>Rates</Link>
         <span style={{ flex: 1 }} />
         {sites && sites.items.length > 1 && (
           <Select

@@ -1,4 +1,5 @@
 import { useQuery } from '@tanstack/react-query';
+import { Link } from 'react-router-dom';
 import { may } from '../../api/policy';
 import { sitesQuery } from '../../api/sites';
 import { useSession } from '../../api/use-session';
@@ -55,7 +56,8 @@ function SiteRota({ siteId, siteName }: { siteId: number; siteName: string }) {
           ) : (
             <b style={{ color: 'var(--out)' }}>Nobody is on call now: alerts reach no one.</b>
           )}{' '}
-          <span className="soft small">{rota.timeZone}</span>
+          <span className="soft small">{rota.timeZone}</span> ·{' '}
+          <Link to={`/rota/${siteId}/hand-over`}>Hand-over sheet</Link>
         </div>
       </div>
       <div className={classes.columns}>

@@ -158,3 +158,78 @@ describe('the link in an alert’s mail', () => {
     await post(path).expect(200);
   });
 });
+
+describe('the hand-over sheet', () => {
+  it('has what stands, what changed and what was noted in the shift, for the people of the site', async () => {
+    vi.restoreAllMocks();
+    const { alert } = await toldAlert();
+    const technician = await service.as('technician');
+    const { id: _, ...rest } = alert;
+    const over = await alerts().save(
+      alerts().create({ ...rest, rule: 'output-activity', state: 'normal', nextStepAt: null }),
+    );
+    await technician
+      .post(`/api/v1/axes/${axis.id}/maintenance`)
+      .send({ on: true, reason: 'Grease' })
+      .expect(200);
+    await technician.post(`/api/v1/rota/${axis.siteId}/notes`).send({ text: 'Quiet night.' }).expect(201);
+    const { body } = await technician.get(`/api/v1/on-call/hand-over/${axis.siteId}`).expect(200);
+    expect(body.open).toMatchObject([{ id: alert.id, axisTag: axis.tag, state: 'unacknowledged' }]);
+    expect(body.over).toMatchObject([{ id: over.id }]);
+    expect(body.notes[0]).toMatchObject({ text: 'Quiet night.', by: 'Tomas Birkwell' });
+    expect(body.changes).toContainEqual(
+      expect.objectContaining({ by: 'Tomas Birkwell', subject: `axis ${axis.tag}`, note: 'Grease' }),
+    );
+    // As the rota has it: the begin of the shift, and who comes next.
+    const rota = (await technician.get(`/api/v1/rota?siteId=${axis.siteId}`)).body;
+    expect(body.from).toBe(rota.shifts[0].from);
+    expect(body.onCall.userId).toBe(rota.shifts[0].userId);
+    expect(body.next.userId).toBe(rota.shifts[1].userId);
+    const soon = new Date(Date.now() - 1).toISOString();
+    const later = await technician.get(`/api/v1/on-call/hand-over/${axis.siteId}?from=${soon}`).expect(200);
+    expect(later.body).toMatchObject({ from: soon, notes: [], changes: [], over: [] });
+    expect(later.body.open).toHaveLength(1);
+    await technician.get(`/api/v1/on-call/hand-over/${axis.siteId}?from=2020-01-01T00:00:00Z`).expect(400);
+    await technician.get('/api/v1/on-call/hand-over/999').expect(404);
+  });
+});
+
+describe('the rates', () => {
+  it('count what came, to whom, how often and how long it waited, beside the published figures', async () => {
+    vi.restoreAllMocks();
+    const { alert } = await toldAlert();
+    await alerts().update(alert.id, { raisedAt: new Date(Date.now() - 30 * 3_600_000) });
+    const events = service.dataSource.getRepository(AlertEvent);
+    const at = (secondsAgo: number) => new Date(Date.now() - secondsAgo * 1000);
+    // Twelve within a minute, each acknowledged 2 s later; one long ago, which nobody acknowledged.
+    for (let i = 0; i < 12; i++)
+      await events.save([
+        { alertId: alert.id, by: 'service', action: 'raised', note: null, at: at(600 - 5 * i) },
+        { alertId: alert.id, by: 'Wren', action: 'acknowledged', note: null, at: at(598 - 5 * i) },
+      ]);
+    await events.save({ alertId: alert.id, by: 'service', action: 'raised', note: null, at: at(86_400 * 3) });
+    await events.save({ alertId: alert.id, by: 'service', action: 'raised', note: null, at: at(86_400 * 8) });
+    const viewer = await service.as('viewer');
+    const { body } = await viewer.get(`/api/v1/on-call/rates?siteId=${axis.siteId}&days=7`).expect(200);
+    expect(body.alerts).toBe(13);
+    expect(body.perDay).toBeCloseTo(13 / 7, 9);
+    expect(body.days.reduce((sum: number, { alerts }: { alerts: number }) => sum + alerts, 0)).toBe(13);
+    expect(body.floods).toMatchObject([{ alerts: 12 }]);
+    expect(body.floodPct).toBeCloseTo((100 * 55) / (7 * 86_400), 2);
+    expect(body.frequent).toEqual([
+      expect.objectContaining({ axisTag: axis.tag, alerts: 13, sharePct: 100, chattering: true }),
+    ]);
+    expect(body.chattering).toHaveLength(1);
+    expect(body.standing).toMatchObject([{ alertId: alert.id, state: 'unacknowledged' }]);
+    expect(body.acknowledging[0]).toMatchObject({ priority: 'high', alerts: 13, unanswered: 1 });
+    expect(body.acknowledging[0].medianSeconds).toBeCloseTo(2, 1);
+    expect(body.people.reduce((sum: number, person: { alerts: number }) => sum + person.alerts, 0)).toBe(13);
+    expect(
+      body.people.reduce((sum: number, person: { hoursOnCall: number }) => sum + person.hoursOnCall, 0),
+    ).toBeCloseTo(7 * 24, 3);
+    expect(body.people[0]).toMatchObject({ load: 'acceptable' });
+    expect(body.published).toMatchObject({ acceptablePerDay: 150, manageablePerDay: 300, floodAlerts: 10 });
+    await viewer.get(`/api/v1/on-call/rates?siteId=${axis.siteId}&days=0`).expect(400);
+    await viewer.get('/api/v1/on-call/rates?siteId=999').expect(404);
+  });
+});
