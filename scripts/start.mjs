@@ -1,7 +1,6 @@
 // `npm start`: installs and builds what is missing, then runs service, simulator and mail fake until Ctrl-C.
 import { spawn } from 'node:child_process';
 import { once } from 'node:events';
-import { accessSync, constants, mkdirSync } from 'node:fs';
 import { createServer } from 'node:net';
 import { join, resolve } from 'node:path';
 import { build, checkNode, fail, install, root } from './workspace.mjs';
@@ -12,12 +11,6 @@ if (!Number.isInteger(port) || port < 1 || port > 65_532)
   fail(`PORT is "${process.env.PORT}"; it must be a whole number from 1 to 65532.`);
 const demo = (process.env.DEMO ?? '1') !== '0';
 const dataDir = resolve(process.env.DATA_DIR ?? join(root, 'data'));
-try {
-  mkdirSync(dataDir, { recursive: true });
-  accessSync(dataDir, constants.W_OK);
-} catch (error) {
-  fail(`The data folder ${dataDir} cannot be written (${error.message}). Set DATA_DIR to one that can.`);
-}
 const ports = {
   service: port,
   simulator: Number(process.env.SIMULATOR_PORT ?? port + 1),

@@ -23,6 +23,7 @@ import { PeopleModule } from './people/people.module.js';
 import { ProposalsModule } from './proposals/proposals.module.js';
 import { RotaModule } from './rota/rota.module.js';
 import type { Settings } from './settings.js';
+import { StorageModule } from './storage/storage.module.js';
 import { TelemetryModule } from './telemetry/telemetry.module.js';
 
 /** Requests a minute from one address. */
@@ -67,6 +68,7 @@ export class AppModule {
         LiveModule,
         DesignModule,
         HealthModule,
+        StorageModule,
         ...(settings.DEMO ? [DemoModule] : []),
       ],
       providers: [{ provide: APP_GUARD, useClass: ThrottlerGuard }],

@@ -1,6 +1,6 @@
 import { randomBytes } from 'node:crypto';
-import { accessSync, constants, existsSync, mkdirSync, readFileSync, writeFileSync } from 'node:fs';
-import { join, resolve } from 'node:path';
+import { existsSync, mkdirSync, mkdtempSync, readFileSync, rmdirSync, writeFileSync } from 'node:fs';
+import { dirname, join, resolve } from 'node:path';
 
 /** What the environment says, checked once at start; every other part reads it through Nest's ConfigService. */
 export interface Settings {
@@ -32,8 +32,9 @@ export function readSettings(env: NodeJS.ProcessEnv): Settings {
     throw new SettingsError(`PORT is "${env.PORT}"; it must be a whole number from 0 to 65535`);
   const dataDir = resolve(env.DATA_DIR ?? 'data');
   try {
-    mkdirSync(dataDir, { recursive: true });
-    accessSync(dataDir, constants.W_OK);
+    makeFolder(dataDir);
+    // Tried, not asked: to a superuser a read-only file system and /proc look writable.
+    rmdirSync(mkdtempSync(join(dataDir, '.write-')));
   } catch (error) {
     throw new SettingsError(
       `The data folder ${dataDir} cannot be written (${(error as Error).message}). Set DATA_DIR to one that can.`,
@@ -52,6 +53,13 @@ export function readSettings(env: NodeJS.ProcessEnv): Settings {
     MAIL_INBOX_URL: demo ? (env.MAIL_INBOX_URL ?? 'http://127.0.0.1:4603') : null,
     JWT_SECRET: env.JWT_SECRET ?? secretOf(dataDir),
   };
+}
+
+/** One level after another: below /proc, Node's own `recursive` never ends (seen with Node 20.20). */
+function makeFolder(path: string): void {
+  if (existsSync(path)) return;
+  makeFolder(dirname(path));
+  mkdirSync(path);
 }
 
 /** The signing secret of this installation, made at the first start and kept beside the database. */

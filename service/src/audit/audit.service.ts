@@ -13,6 +13,8 @@ export const SERVICE_NAME = 'Polewright';
 const BATCH = 1_000;
 /** What engineers may read the record of: the subjects of their own work. */
 const ENGINEERS_SUBJECTS = ['axis', 'proposal'];
+/** What belongs to the installation and to no site: for whoever administers any. */
+const INSTALLATION_SUBJECTS = ['storage'];
 
 export interface AuditRecord {
   /** null when the service itself acts */
@@ -127,7 +129,10 @@ export class AuditService {
               .select('1')
               .where('CAST(role.userId AS TEXT) = entry.subjectId AND role.siteId IN (:...administered)')
               .getQuery()})`,
-          ),
+          )
+          .orWhere('entry.siteId IS NULL AND entry.subjectType IN (:...shared)', {
+            shared: administered.length > 0 ? INSTALLATION_SUBJECTS : [''],
+          }),
       ),
     );
     if (filter.siteId !== undefined) query.andWhere('entry.siteId = :siteId', { siteId: filter.siteId });

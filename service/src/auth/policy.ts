@@ -38,6 +38,7 @@ export const POLICY = {
   'intake.read': ['engineer', 'approver', 'administrator'],
   'people.manage': ADMINISTRATOR,
   'mail.manage': ADMINISTRATOR,
+  'storage.manage': ADMINISTRATOR,
   'audit.read': ['engineer', 'approver', 'administrator'],
 } as const satisfies Record<string, readonly Role[]>;
 

@@ -5,6 +5,9 @@ import { rm } from 'node:fs/promises';
 import { join } from 'node:path';
 import type { Settings } from '../settings.js';
 
+/** The folder of captures in a data folder. */
+export const captureFolder = (dataDir: string): string => join(dataDir, 'captures');
+
 /** Where captures lie: named by their id alone, whatever the file was called. */
 @Injectable()
 export class CaptureFiles {
@@ -13,7 +16,7 @@ export class CaptureFiles {
   readonly incoming: string;
 
   constructor(config: ConfigService<Settings, true>) {
-    this.folder = join(config.get('DATA_DIR', { infer: true }), 'captures');
+    this.folder = captureFolder(config.get('DATA_DIR', { infer: true }));
     this.incoming = join(this.folder, 'incoming');
     rmSync(this.incoming, { recursive: true, force: true });
     mkdirSync(this.incoming, { recursive: true });

@@ -3,9 +3,11 @@ import { MulterModule } from '@nestjs/platform-express';
 import { diskStorage } from 'multer';
 import { randomUUID } from 'node:crypto';
 import { FleetModule } from '../fleet/fleet.module.js';
+import { StorageModule } from '../storage/storage.module.js';
 import { TelemetryModule } from '../telemetry/telemetry.module.js';
 import { CaptureFiles } from './capture-files.js';
 import { CaptureQueue } from './capture-queue.service.js';
+import { CaptureRetention } from './capture-retention.service.js';
 import { CapturesController } from './captures.controller.js';
 import { CapturesService } from './captures.service.js';
 import { LiveCaptures } from './live-captures.service.js';
@@ -19,6 +21,7 @@ class CaptureFilesModule {}
   imports: [
     FleetModule,
     TelemetryModule,
+    StorageModule,
     CaptureFilesModule,
     MulterModule.registerAsync({
       imports: [CaptureFilesModule],
@@ -33,6 +36,6 @@ class CaptureFilesModule {}
     }),
   ],
   controllers: [CapturesController],
-  providers: [CapturesService, LiveCaptures, CaptureQueue],
+  providers: [CapturesService, LiveCaptures, CaptureQueue, CaptureRetention],
 })
 export class CapturesModule {}

@@ -12,6 +12,7 @@ import { AxesService } from '../fleet/axes.service.js';
 import { SampleRecorder, type KeptBlock } from '../telemetry/sample-recorder.js';
 import { CaptureFiles } from './capture-files.js';
 import { CaptureQueue } from './capture-queue.service.js';
+import { CaptureRetention } from './capture-retention.service.js';
 import { Capture, newCapture } from './capture.entity.js';
 import { recordedFile } from './recorded-samples.js';
 
@@ -20,8 +21,6 @@ const BEFORE_ALERT = 10;
 const AFTER_ALERT = 20;
 /** How long samples may be late before a recording ends with what it has, s. */
 const PATIENCE = 15;
-/** Captures around alerts that are kept of an axis. */
-const KEPT_PER_AXIS = 20;
 
 /** Captures of the live stream: on demand, and by itself around an alert. */
 @Injectable()
@@ -36,6 +35,7 @@ export class LiveCaptures {
     private readonly recorder: SampleRecorder,
     private readonly files: CaptureFiles,
     private readonly queue: CaptureQueue,
+    private readonly retention: CaptureRetention,
   ) {}
 
   /** Starts to record an axis for some seconds from now. */
@@ -104,26 +104,11 @@ export class LiveCaptures {
       await rename(`${path}.part`, path);
       const { affected } = await captures.update({ id: capture.id, status: 'queued' }, { recorded: true });
       if (!affected) return void (await this.files.remove(capture.id));
-      if (capture.alertId !== null) await this.prune(axis.id);
+      if (capture.alertId !== null) await this.retention.oneMore(axis.id);
       this.queue.look();
     } catch (error) {
       // At an orderly end the database may be closed already; the next start says so on the capture.
       this.log.warn(`Capture ${capture.id} was not recorded: ${(error as Error).message}`);
-    }
-  }
-
-  private async prune(axisId: number): Promise<void> {
-    const captures = this.dataSource.getRepository(Capture);
-    const old = await captures.find({
-      select: { id: true },
-      where: { axisId, source: 'alert' },
-      order: { id: 'DESC' },
-      skip: KEPT_PER_AXIS,
-      take: 100,
-    });
-    for (const { id } of old) {
-      await captures.delete(id);
-      await this.files.remove(id);
     }
   }
 }

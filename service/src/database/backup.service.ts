@@ -3,16 +3,20 @@ import { ConfigService } from '@nestjs/config';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
 import type { Database } from 'better-sqlite3';
-import { existsSync, mkdirSync, readdirSync, renameSync, rmSync } from 'node:fs';
+import { existsSync, mkdirSync, readdirSync, renameSync, rmSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import { Gauge } from 'prom-client';
 import type { DataSource } from 'typeorm';
 import type { Settings } from '../settings.js';
+import { diskSpace } from './disk.js';
 
 const LOOK_EVERY_MS = 10 * 60_000;
-/** A backup is made when the newest is this old, ms, and the newest ones are kept. */
+/** A backup is made when the newest is this old, ms. */
 const EVERY_MS = 24 * 3_600_000;
+/** Days of which the newest backup is kept. */
 export const BACKUPS_KEPT = 7;
+/** Left to the database while a backup is made, bytes: its log grows meanwhile. */
+const SPARE_BYTES = 128 * 2 ** 20;
 /** Pages copied before intake has its turn again. */
 const PAGES_PER_STEP = 200;
 
@@ -25,8 +29,23 @@ const newestBackup = new Gauge({
 
 export interface Backup {
   at: Date;
+  /** Of its file. */
+  name: string;
   path: string;
+  bytes: number;
 }
+
+/** Refused before anything was written: a backup that fills the disk would take the database with it. */
+export class NoSpaceForBackup extends Error {
+  constructor(
+    readonly needed: number,
+    readonly free: number,
+  ) {
+    super(`it needs ${mebibytes(needed)} of disk and ${mebibytes(free)} are free`);
+  }
+}
+
+const mebibytes = (bytes: number): string => `${Math.ceil(bytes / 2 ** 20)} MiB`;
 
 /** The folder of backups in a data folder. */
 export const backupFolder = (dataDir: string): string => join(dataDir, 'backups');
@@ -37,9 +56,11 @@ export function backupsIn(folder: string): Backup[] {
   return readdirSync(folder)
     .flatMap((name) => {
       const [, day, hours, minutes, seconds] = NAME.exec(name) ?? [];
-      return day === undefined
-        ? []
-        : [{ at: new Date(`${day}T${hours}:${minutes}:${seconds}Z`), path: join(folder, name) }];
+      const path = join(folder, name);
+      const file = day !== undefined && statSync(path, { throwIfNoEntry: false });
+      return file
+        ? [{ at: new Date(`${day}T${hours}:${minutes}:${seconds}Z`), name, path, bytes: file.size }]
+        : [];
     })
     .sort((a, b) => b.at.getTime() - a.at.getTime());
 }
@@ -48,7 +69,9 @@ export function backupsIn(folder: string): Backup[] {
 @Injectable()
 export class BackupService {
   private readonly log = new Logger(BackupService.name);
-  private running = false;
+  /** Pages of the backup that is being made. */
+  private pages: { done: number; total: number } | null = null;
+  private failed: { at: Date; why: string } | null = null;
 
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
@@ -57,6 +80,24 @@ export class BackupService {
 
   list(): Backup[] {
     return backupsIn(this.folder);
+  }
+
+  /** Share of the backup that is being made, 0 to 1; null while none is. */
+  get progress(): number | null {
+    return this.pages && this.pages.done / Math.max(1, this.pages.total);
+  }
+
+  /** Why the last attempt made no backup; null when it made one. */
+  get failure(): { at: Date; why: string } | null {
+    return this.failed;
+  }
+
+  /** Bytes of disk that a backup needs now: as many as the database has, and what the database needs meanwhile. */
+  get needed(): number {
+    const { page_count: pages, page_size: size } = this.database
+      .prepare('SELECT * FROM pragma_page_count, pragma_page_size')
+      .get() as { page_count: number; page_size: number };
+    return pages * size + SPARE_BYTES;
   }
 
   @Interval(LOOK_EVERY_MS)
@@ -71,32 +112,64 @@ export class BackupService {
     }
   }
 
+  /** Whether a backup fits the disk. */
+  async requireSpace(): Promise<void> {
+    mkdirSync(this.folder, { recursive: true });
+    const { free } = await diskSpace(this.folder);
+    const { needed } = this;
+    if (free < needed) throw new NoSpaceForBackup(needed, free);
+  }
+
   /**
-   * Makes a backup and deletes all but the newest `BACKUPS_KEPT`.
+   * Makes a backup.
    *
    * @returns its path; null while another one is being made
-   * @throws what SQLite or the file system throws; then no file of that name is there
+   * @throws NoSpaceForBackup, or what SQLite or the file system throws; then no file of that name is there
    */
   async make(now = new Date()): Promise<string | null> {
-    if (this.running) return null;
-    this.running = true;
+    if (this.pages) return null;
+    this.pages = { done: 0, total: 0 };
     const path = join(
       this.folder,
       `polewright-${now.toISOString().slice(0, 19).replaceAll(':', '-')}.sqlite`,
     );
     const part = `${path}.part`;
     try {
-      mkdirSync(this.folder, { recursive: true });
-      const { databaseConnection } = this.dataSource.driver as unknown as { databaseConnection: Database };
-      await databaseConnection.backup(part, { progress: () => PAGES_PER_STEP });
+      await this.requireSpace();
+      await this.database.backup(part, {
+        progress: ({ totalPages: total, remainingPages }) => {
+          this.pages = { done: total - remainingPages, total };
+          return PAGES_PER_STEP;
+        },
+      });
       renameSync(part, path);
+      this.failed = null;
+    } catch (error) {
+      this.failed = { at: now, why: (error as Error).message };
+      throw error;
     } finally {
       rmSync(part, { force: true });
-      this.running = false;
+      this.pages = null;
     }
     newestBackup.set(now.getTime() / 1000);
-    for (const { path: old } of this.list().slice(BACKUPS_KEPT)) rmSync(old);
     return path;
+  }
+
+  /**
+   * Deletes all but the newest backup of each of the last `BACKUPS_KEPT` days with one: several on one day, made by
+   * hand, do not push out the former days. Called only when the newest was read and found whole.
+   */
+  prune(): void {
+    const days = new Set<string>();
+    for (const { at, path } of this.list()) {
+      const day = at.toISOString().slice(0, 10);
+      if (days.has(day) || days.size === BACKUPS_KEPT) rmSync(path);
+      else days.add(day);
+    }
+  }
+
+  private get database(): Database {
+    return (this.dataSource.driver as unknown as { databaseConnection: Database }).databaseConnection;
   }
 
   private get folder(): string {

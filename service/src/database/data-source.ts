@@ -25,6 +25,9 @@ import { HandoverNote } from '../rota/handover-note.entity.js';
 import { RotaLayer } from '../rota/rota-layer.entity.js';
 import { RotaOverride } from '../rota/rota-override.entity.js';
 import { RotaSwap } from '../rota/rota-swap.entity.js';
+import { IntegrityCheck } from '../storage/integrity-check.entity.js';
+import { RetentionSetting } from '../storage/retention-setting.entity.js';
+import { StorageMeasurement } from '../storage/storage-measurement.entity.js';
 import { AxisCheckpoint } from '../telemetry/axis-checkpoint.entity.js';
 import { Fleet1764547200000 } from './migrations/1764547200000-fleet.js';
 import { People1764547201000 } from './migrations/1764547201000-people.js';
@@ -34,6 +37,7 @@ import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-chang
 import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
 import { RotaLayers1764738000100 } from './migrations/1764738000100-rota-layers.js';
 import { OutboxAttempts1764738000200 } from './migrations/1764738000200-outbox-attempts.js';
+import { Storage1764737500100 } from './migrations/1764737500100-storage.js';
 
 export const ENTITIES = [
   Site,
@@ -67,6 +71,9 @@ export const ENTITIES = [
   Mail,
   AcknowledgeLink,
   Capture,
+  RetentionSetting,
+  StorageMeasurement,
+  IntegrityCheck,
 ];
 
 /** The one SQLite file: write-ahead log, foreign keys on, schema by migrations only. */
@@ -81,6 +88,8 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       db.pragma('busy_timeout = 5000');
       // 32 MiB of log before its pages go into the file: a fleet's checkpoint rewrites the same pages every second.
       db.pragma('wal_autocheckpoint = 8192');
+      // A long reader, such as an integrity check, lets the log grow; when it is gone the file shrinks to this again.
+      db.pragma(`journal_size_limit = ${64 * 2 ** 20}`);
     },
     entities: ENTITIES,
     migrations: [
@@ -92,6 +101,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       ProposalVersions1764637000200,
       RotaLayers1764738000100,
       OutboxAttempts1764738000200,
+      Storage1764737500100,
     ],
     migrationsRun: true,
     synchronize: false,

@@ -16,6 +16,6 @@ import { Transactions } from './transactions.js';
     }),
   ],
   providers: [Transactions, BackupService],
-  exports: [Transactions],
+  exports: [Transactions, BackupService],
 })
 export class DatabaseModule {}

@@ -1,6 +1,7 @@
 import Database from 'better-sqlite3';
 import { copyFileSync, existsSync, renameSync, rmSync } from 'node:fs';
 import { join, resolve } from 'node:path';
+import { faultOf } from './integrity.js';
 
 /** What SQLite keeps beside a database file. */
 const BESIDE = ['-wal', '-shm'];
@@ -43,26 +44,6 @@ export function restore(
   renameSync(part, database);
   say(`Restored ${backup}. Gateways send again what they still hold from there on.`);
   return 0;
-}
-
-/** What is wrong with a backup: every page and index of it is read; null when it is whole. */
-function faultOf(path: string): string | null {
-  if (!existsSync(path)) return 'there is no such file';
-  let opened: Database.Database | undefined;
-  try {
-    opened = new Database(path, { readonly: true });
-    const [first] = opened.prepare('PRAGMA integrity_check').pluck().all() as string[];
-    if (first !== 'ok') return `its integrity check says: ${first}`;
-    const known = opened
-      .prepare(`SELECT count(*) FROM "sqlite_master" WHERE "name" IN ('migrations', 'axis', 'gateway')`)
-      .pluck()
-      .get();
-    return known === 3 ? null : 'it is a database, but not of this service';
-  } catch (error) {
-    return `it cannot be read (${(error as Error).message})`;
-  } finally {
-    opened?.close();
-  }
 }
 
 /** Leaving the write-ahead log takes the only connection there is; a damaged file cannot be in use by a service. */

@@ -1,17 +1,16 @@
 import { Injectable, Logger, Module } from '@nestjs/common';
 import { ConfigService } from '@nestjs/config';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { randomBytes } from 'node:crypto';
 import { existsSync, readFileSync, writeFileSync } from 'node:fs';
 import { join } from 'node:path';
 import type { DataSource, EntityManager } from 'typeorm';
+import { hashOfToken, newToken } from '../auth/passwords.js';
 import { placeGains } from '../control/pole-placement.js';
 import { Transactions } from '../database/transactions.js';
 import { Axis } from '../fleet/axis.entity.js';
 import { Gateway } from '../fleet/gateway.entity.js';
 import { Machine } from '../fleet/machine.entity.js';
 import { Site } from '../fleet/site.entity.js';
-import { hashOfToken } from '../fleet/sites.service.js';
 import { TuningRevision } from '../fleet/tuning-revision.entity.js';
 import { seedDemoPeople, seedDemoRota } from '../people/demo-people.js';
 import type { Settings } from '../settings.js';
@@ -112,7 +111,7 @@ export class DemoSeed {
     const path = join(this.config.get('DATA_DIR', { infer: true }), 'gateway-tokens.json');
     if (existsSync(path)) return JSON.parse(readFileSync(path, 'utf8')) as Record<string, string>;
     const tokens = Object.fromEntries(
-      GATEWAYS.map(({ name }) => [name, randomBytes(32).toString('base64url')]),
+      GATEWAYS.map(({ name }) => [name, newToken()]),
     );
     writeFileSync(path, JSON.stringify(tokens, null, 2), { mode: 0o600 });
     return tokens;

@@ -1,9 +1,9 @@
 import { BadRequestException, ConflictException, ForbiddenException, Injectable } from '@nestjs/common';
 import { EventEmitter2 } from '@nestjs/event-emitter';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { createHash, randomBytes } from 'node:crypto';
 import { In, type DataSource, type EntityTarget, type ObjectLiteral } from 'typeorm';
 import { AuditService } from '../audit/audit.service.js';
+import { hashOfToken, newToken } from '../auth/passwords.js';
 import { mayRegisterSites, requireRole, sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
 import { Transactions } from '../database/transactions.js';
 import { tell } from '../events.js';
@@ -13,8 +13,6 @@ import type { CreateGatewayDto, CreateMachineDto, CreateSiteDto } from './dto/si
 import { Gateway } from './gateway.entity.js';
 import { Machine } from './machine.entity.js';
 import { Site } from './site.entity.js';
-
-export const hashOfToken = (token: string): string => createHash('sha256').update(token).digest('hex');
 
 /** Sites, their machines and their gateways. */
 @Injectable()
@@ -97,7 +95,7 @@ export class SitesService {
   /** A new gateway and its token, which is shown this once. */
   async createGateway(body: CreateGatewayDto, user: SignedInUser): Promise<{ id: number; token: string }> {
     await this.requireSite(body.siteId, user, 'gateway.register');
-    const token = randomBytes(32).toString('base64url');
+    const token = newToken();
     const gateway = await this.transactions.run(async (manager) => {
       if (await manager.existsBy(Gateway, { siteId: body.siteId, name: body.name }))
         throw new ConflictException(`The site already has a gateway "${body.name}"`);

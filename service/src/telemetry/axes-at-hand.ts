@@ -1,22 +1,36 @@
 import { Injectable } from '@nestjs/common';
 import { InjectDataSource } from '@nestjs/typeorm';
+import type { Database } from 'better-sqlite3';
 import type { DataSource, EntitySubscriberInterface } from 'typeorm';
 import { Axis } from '../fleet/axis.entity.js';
 
+/** What is read with an axis. */
+const TABLES = ['axis', 'site'];
+
 /**
- * All axes with their sites, read again only after an axis was written: who looks at every axis at every beat would
+ * All axes with their sites, read again only after one was written: who looks at every axis at every beat would
  * otherwise build a thousand entities a second. Take them as they are, do not change them.
+ *
+ * The database itself tells of every write on its connection, by triggers that last as long as the connection does:
+ * TypeORM's subscribers know neither the ids of an `update()` nor a statement written by hand.
  */
 @Injectable()
 export class AxesAtHand implements EntitySubscriberInterface<Axis> {
   private axes: Promise<readonly Axis[]> | null = null;
 
   constructor(@InjectDataSource() private readonly dataSource: DataSource) {
+    const { databaseConnection } = dataSource.driver as unknown as { databaseConnection: Database };
+    databaseConnection.function('axes_written', () => {
+      this.forget();
+      return null;
+    });
+    for (const table of TABLES)
+      for (const change of ['INSERT', 'UPDATE', 'DELETE'])
+        databaseConnection.exec(
+          `CREATE TEMP TRIGGER IF NOT EXISTS "${table}_${change}" AFTER ${change} ON main."${table}"
+           BEGIN SELECT axes_written(); END`,
+        );
     dataSource.subscribers.push(this);
-  }
-
-  listenTo(): typeof Axis {
-    return Axis;
   }
 
   all(): Promise<readonly Axis[]> {
@@ -26,18 +40,6 @@ export class AxesAtHand implements EntitySubscriberInterface<Axis> {
       reading.catch(() => this.axes === reading && this.forget());
     }
     return this.axes;
-  }
-
-  afterInsert(): void {
-    this.forget();
-  }
-
-  afterUpdate(): void {
-    this.forget();
-  }
-
-  afterRemove(): void {
-    this.forget();
   }
 
   /** What was read on the one connection inside a transaction that was taken back is no longer so. */

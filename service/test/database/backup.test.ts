@@ -49,10 +49,30 @@ test('a backup is made once a day beside the working database, and the newest se
   for (let day = 0; day < BACKUPS_KEPT + 2; day++) {
     await backups.whenDue(new Date(MONDAY.getTime() + day * DAY));
     await backups.whenDue(new Date(MONDAY.getTime() + day * DAY + DAY / 2));
+    backups.prune();
   }
   const made = backups.list();
   expect(made.map(({ at }) => (at.getTime() - MONDAY.getTime()) / DAY)).toEqual([8, 7, 6, 5, 4, 3, 2]);
   expect(readdirSync(join(folder, 'backups'))).toHaveLength(BACKUPS_KEPT);
+});
+
+test('several backups on one day leave the former days theirs, and none goes before it is asked for', async () => {
+  for (const at of [0, DAY, DAY + 3_600_000, DAY + 7_200_000])
+    await backups.make(new Date(MONDAY.getTime() + at));
+  expect(backups.list()).toHaveLength(4);
+  backups.prune();
+  expect(backups.list().map(({ at }) => at.getTime() - MONDAY.getTime())).toEqual([DAY + 7_200_000, 0]);
+});
+
+test('a backup that does not fit is refused before anything is written, and says what it needs', async () => {
+  Object.defineProperty(backups, 'needed', { configurable: true, get: () => 2 ** 60 });
+  await backups.whenDue(MONDAY);
+  expect(backups.failure?.why).toMatch(/^it needs 1099511627776 MiB of disk and \d+ MiB are free$/);
+  expect(readdirSync(join(folder, 'backups'))).toEqual([]);
+  Reflect.deleteProperty(backups, 'needed');
+  expect(await backups.make(MONDAY)).not.toBeNull();
+  expect(backups.failure).toBeNull();
+  expect(backups.list()).toMatchObject([{ name: 'polewright-2026-11-30T06-00-00.sqlite', at: MONDAY }]);
 });
 
 test('what is written while a backup is made does not spoil it', async () => {

@@ -1406,6 +1406,86 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/storage": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["StorageController_get"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/storage/retention": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch: operations["StorageController_change"];
+        trace?: never;
+    };
+    "/api/v1/storage/measurements": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["StorageController_measure"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/storage/backups": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["StorageController_backUp"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/storage/checks": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["StorageController_check"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
 }
 export type webhooks = Record<string, never>;
 export interface components {
@@ -3393,6 +3473,132 @@ export interface components {
              * @description Now, by the service
              */
             at: string;
+        };
+        TableSizeDto: {
+            /** @description The table’s name, or "capture files" */
+            name: string;
+            rows: number;
+            /** @description Of its pages and its indices’ pages */
+            bytes: number;
+            /** @description Rows that it gets a day, less what is deleted; null until a day was measured */
+            rowsPerDay: number | null;
+            /** @description How long its rows are kept, s; null without end */
+            keptSeconds: number | null;
+            /**
+             * Format: date-time
+             * @description Time of its oldest row, of tables that are kept for a time
+             */
+            oldest: string | null;
+        };
+        ForecastDto: {
+            /** @enum {string} */
+            outcome: "not-enough-history" | "not-within-ten-years" | "full-at" | "backups-do-not-fit";
+            /**
+             * Format: date-time
+             * @description First measurement that it rests on
+             */
+            since: string | null;
+            /** @description Bytes that the database and the captures get in the next day */
+            bytesPerDay: number | null;
+            /**
+             * Format: date-time
+             * @description When the disk is full, with all backups that are kept; only with "full-at"
+             */
+            fullAt: string | null;
+        };
+        RetentionDto: {
+            /** @enum {string} */
+            kind: "seconds" | "minutes" | "hours" | "estimates" | "alertCaptures";
+            /** @description What is kept, in plain words */
+            title: string;
+            /** @description s */
+            keptSeconds: number;
+            /** @description s */
+            defaultSeconds: number;
+            /** @description s */
+            leastSeconds: number;
+            /** @description s */
+            mostSeconds: number;
+        };
+        IntegrityDto: {
+            /** Format: date-time */
+            at: string;
+            /** @description What is wrong, in plain words; null when it is whole */
+            fault: string | null;
+        };
+        BackupDto: {
+            /** @example polewright-2026-11-30T06-00-00.sqlite */
+            name: string;
+            /** Format: date-time */
+            at: string;
+            bytes: number;
+            /** @description null until it was checked */
+            integrity: components["schemas"]["IntegrityDto"] | null;
+        };
+        BackupFailureDto: {
+            /** Format: date-time */
+            at: string;
+            /** @description In plain words */
+            why: string;
+        };
+        BackupsDto: {
+            /** @description Newest first */
+            items: components["schemas"]["BackupDto"][];
+            /** @description Days of which the newest one is kept */
+            kept: number;
+            /** @description Bytes of disk that the next one needs */
+            neededBytes: number;
+            /** @description Share of the one that is being made, 0 to 1 */
+            progress: number | null;
+            /** @description Why the last attempt made none */
+            failure: components["schemas"]["BackupFailureDto"] | null;
+        };
+        StorageDto: {
+            /** @description Bytes that may still be written to the data folder */
+            freeBytes: number;
+            /** @description Bytes of its file system */
+            totalBytes: number;
+            /** @description Bytes of the database file and its log */
+            databaseBytes: number;
+            /** @description Bytes inside the file that deleted rows left and new ones fill */
+            reusableBytes: number;
+            /**
+             * Format: date-time
+             * @description When the tables were last measured
+             */
+            measuredAt: string | null;
+            /** @description Whether they are being measured now */
+            measuring: boolean;
+            /** @description Largest first */
+            tables: components["schemas"]["TableSizeDto"][];
+            forecast: components["schemas"]["ForecastDto"];
+            retention: components["schemas"]["RetentionDto"][];
+            /** @description Whether this person may change how long is kept */
+            mayChangeRetention: boolean;
+            backups: components["schemas"]["BackupsDto"];
+            /** @description Of the database; null until it was checked */
+            integrity: components["schemas"]["IntegrityDto"] | null;
+            /** @description What is being checked: "database" or names of backups */
+            checking: string[];
+        };
+        ChangeRetentionDto: {
+            /** @description s */
+            seconds?: number;
+            /** @description s */
+            minutes?: number;
+            /** @description s */
+            hours?: number;
+            /** @description s */
+            estimates?: number;
+            /** @description s */
+            alertCaptures?: number;
+        };
+        CheckDto: {
+            /**
+             * @description "database", or the name of a backup
+             * @example database
+             */
+            subject: string;
         };
     };
     responses: never;
@@ -5749,6 +5955,109 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["StatusDto"];
+                };
+            };
+        };
+    };
+    StorageController_get: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StorageDto"];
+                };
+            };
+        };
+    };
+    StorageController_change: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["ChangeRetentionDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StorageDto"];
+                };
+            };
+        };
+    };
+    StorageController_measure: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            202: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StorageDto"];
+                };
+            };
+        };
+    };
+    StorageController_backUp: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            202: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StorageDto"];
+                };
+            };
+        };
+    };
+    StorageController_check: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["CheckDto"];
+            };
+        };
+        responses: {
+            202: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StorageDto"];
                 };
             };
         };

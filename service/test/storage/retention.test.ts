@@ -1,18 +1,21 @@
 import Database from 'better-sqlite3';
 import type { DataSource } from 'typeorm';
 import { afterAll, beforeAll, beforeEach, expect, test } from 'vitest';
-import { ESTIMATES_WHOLE, KEPT, RetentionService } from '../../src/indicators/retention.service.js';
+import { KIND_OF, RETENTION, RETENTION_KINDS, type Retention } from '../../src/storage/retention.js';
+import type { RetentionSettings } from '../../src/storage/retention-settings.service.js';
+import { ESTIMATES_WHOLE, RetentionService } from '../../src/storage/retention.service.js';
 
 const NOW = 1_764_600_000;
 const HOUR = 3_600;
 
 let database: Database.Database;
 let retention: RetentionService;
+let kept: Retention;
 
 beforeAll(() => {
   database = new Database(':memory:');
   database.exec(`CREATE TABLE "axis" ("id" integer PRIMARY KEY)`);
-  for (const table of Object.keys(KEPT))
+  for (const table of Object.keys(KIND_OF))
     database.exec(
       `CREATE TABLE "${table}" ("axisId" integer, "t" real, PRIMARY KEY ("axisId", "t")) WITHOUT ROWID`,
     );
@@ -21,8 +24,12 @@ beforeAll(() => {
 afterAll(() => database.close());
 
 beforeEach(() => {
-  for (const table of Object.keys(KEPT)) database.exec(`DELETE FROM "${table}"`);
-  retention = new RetentionService({ driver: { databaseConnection: database } } as unknown as DataSource);
+  for (const table of Object.keys(KIND_OF)) database.exec(`DELETE FROM "${table}"`);
+  kept = Object.fromEntries(RETENTION_KINDS.map((kind) => [kind, RETENTION[kind].default])) as Retention;
+  retention = new RetentionService(
+    { driver: { databaseConnection: database } } as unknown as DataSource,
+    { get: () => kept } as unknown as RetentionSettings,
+  );
 });
 
 const put = (table: string, axisId: number, times: number[]): void => {
@@ -38,14 +45,18 @@ const steps = (count: number, now = NOW): void => {
   for (let k = 0; k < count; k++) retention.step(now);
 };
 
-test.each(Object.entries(KEPT))('%s: rows go when they are older than %d s, on every axis', (table, kept) => {
-  // The last of its hour, so that thinning has no part in it.
-  const old = [NOW - kept - 2 * HOUR, NOW - kept - 1];
-  const young = [NOW - kept, NOW - kept + HOUR, NOW - 1];
-  for (const axisId of [3, 9]) put(table, axisId, [...old, ...young]);
-  steps(3);
-  for (const axisId of [3, 9]) expect(left(table, axisId)).toEqual(young);
-});
+test.each(Object.entries(KIND_OF))(
+  '%s: rows go when they are older than %s are kept, on every axis',
+  (table, kind) => {
+    const kept = RETENTION[kind].default;
+    // The last of its hour, so that thinning has no part in it.
+    const old = [NOW - kept - 2 * HOUR, NOW - kept - 1];
+    const young = [NOW - kept, NOW - kept + HOUR, NOW - 1];
+    for (const axisId of [3, 9]) put(table, axisId, [...old, ...young]);
+    steps(3);
+    for (const axisId of [3, 9]) expect(left(table, axisId)).toEqual(young);
+  },
+);
 
 test('a backlog goes in steps of 500 rows, the oldest first', () => {
   put(
@@ -82,4 +93,13 @@ test('inside somebody else’s transaction nothing is deleted', () => {
   expect(left('indicator_second', 3)).toEqual([1]);
   steps(3);
   expect(left('indicator_second', 3)).toEqual([]);
+});
+
+test('a retention that is set shorter counts from the next step on', () => {
+  put('indicator_minute', 3, [NOW - 9 * 24 * HOUR, NOW - 7 * 24 * HOUR, NOW - HOUR]);
+  steps(3);
+  expect(left('indicator_minute', 3)).toHaveLength(3);
+  kept.minutes = 8 * 24 * HOUR;
+  steps(3);
+  expect(left('indicator_minute', 3)).toEqual([NOW - 7 * 24 * HOUR, NOW - HOUR]);
 });

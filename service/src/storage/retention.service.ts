@@ -4,19 +4,11 @@ import { InjectDataSource } from '@nestjs/typeorm';
 import type { Database, Statement } from 'better-sqlite3';
 import { Counter } from 'prom-client';
 import type { DataSource } from 'typeorm';
+import { KIND_OF, type RetentionKind } from './retention.js';
+import { RetentionSettings } from './retention-settings.service.js';
 
 const HOUR = 3_600;
 const DAY = 24 * HOUR;
-const YEAR = 365 * DAY;
-
-/** How long rows are kept, s, by table. Moves are looked at beside minutes and go with them. */
-export const KEPT = {
-  indicator_second: 2 * HOUR,
-  move_record: 60 * DAY,
-  indicator_minute: 60 * DAY,
-  indicator_hour: 3 * YEAR,
-  plant_estimate_row: 3 * YEAR,
-} as const;
 
 /** Every estimate is kept this long, s; of older ones the last of each hour: a busy axis makes one every few seconds. */
 export const ESTIMATES_WHOLE = DAY;
@@ -36,7 +28,7 @@ const prunedRows = new Counter({
 
 interface Statements {
   next: Statement;
-  prune: [table: string, kept: number, statement: Statement][];
+  prune: [table: string, kind: RetentionKind, statement: Statement][];
   thin: Statement;
 }
 
@@ -49,7 +41,10 @@ export class RetentionService {
   /** Up to where an axis's estimates are thinned, s since the Unix epoch; found anew after a start. */
   private readonly thinned = new Map<number, number>();
 
-  constructor(@InjectDataSource() private readonly dataSource: DataSource) {}
+  constructor(
+    @InjectDataSource() private readonly dataSource: DataSource,
+    private readonly settings: RetentionSettings,
+  ) {}
 
   /** Looks at the next axis, in turn. */
   @Interval(STEP_MS)
@@ -63,8 +58,9 @@ export class RetentionService {
       const found = next.get(this.lastAxis) as { id: number } | undefined;
       this.lastAxis = found?.id ?? 0;
       if (!found) return;
-      for (const [table, kept, statement] of prune)
-        this.count(table, statement.run(found.id, now - kept).changes);
+      const kept = this.settings.get();
+      for (const [table, kind, statement] of prune)
+        this.count(table, statement.run(found.id, now - kept[kind]).changes);
       this.thin(found.id, now - ESTIMATES_WHOLE);
     } catch (error) {
       this.log.warn(`Old rows could not be deleted: ${(error as Error).message}`);
@@ -72,7 +68,8 @@ export class RetentionService {
   }
 
   private thin(axisId: number, until: number): void {
-    const from = this.thinned.get(axisId) ?? Math.floor((until - KEPT.plant_estimate_row) / HOUR) * HOUR;
+    const from =
+      this.thinned.get(axisId) ?? Math.floor((until - this.settings.get().estimates) / HOUR) * HOUR;
     const to = Math.min(from + THINNED_PER_STEP, Math.floor(until / HOUR) * HOUR);
     if (to <= from) return;
     const { changes } = this.statements!.thin.run({ axisId, from, to, limit: ROWS_PER_STEP });
@@ -88,9 +85,9 @@ export class RetentionService {
 function prepare(database: Database): Statements {
   return {
     next: database.prepare(`SELECT "id" FROM "axis" WHERE "id" > ? ORDER BY "id" LIMIT 1`),
-    prune: Object.entries(KEPT).map(([table, kept]) => [
+    prune: Object.entries(KIND_OF).map(([table, kind]) => [
       table,
-      kept,
+      kind,
       database.prepare(
         `DELETE FROM "${table}" WHERE ("axisId", "t") IN (
            SELECT "axisId", "t" FROM "${table}" WHERE "axisId" = ? AND "t" < ? ORDER BY "t" LIMIT ${ROWS_PER_STEP})`,
