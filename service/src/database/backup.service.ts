@@ -2,7 +2,7 @@ import { Injectable, Logger } from '@nestjs/common';
 import { ConfigService } from '@nestjs/config';
 import { Interval } from '@nestjs/schedule';
 import { InjectDataSource } from '@nestjs/typeorm';
-import type { Database } from 'better-sqlite3';
+import Sqlite, { type Database } from 'better-sqlite3';
 import { existsSync, mkdirSync, readdirSync, renameSync, rmSync, statSync } from 'node:fs';
 import { join } from 'node:path';
 import { Gauge } from 'prom-client';
@@ -63,6 +63,13 @@ export function backupsIn(folder: string): Backup[] {
         : [];
     })
     .sort((a, b) => b.at.getTime() - a.at.getTime());
+}
+
+/** A copy says, as its original, that it has a write-ahead log: whoever read it would leave two files beside it. */
+function leaveLog(path: string): void {
+  const copy = new Sqlite(path);
+  copy.pragma('journal_mode = DELETE');
+  copy.close();
 }
 
 /** Copies the database beside itself once a day while it works, by SQLite's online backup. */
@@ -142,6 +149,7 @@ export class BackupService {
           return PAGES_PER_STEP;
         },
       });
+      leaveLog(part);
       renameSync(part, path);
       this.failed = null;
     } catch (error) {

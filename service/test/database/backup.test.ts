@@ -84,6 +84,8 @@ test('what is written while a backup is made does not spoil it', async () => {
   const database = new Database(file, { readonly: true });
   expect(database.pragma('integrity_check', { simple: true })).toBe('ok');
   database.close();
+  // Whoever reads it leaves nothing beside it.
+  expect(readdirSync(join(folder, 'backups'))).toEqual(['polewright-2026-11-30T06-00-00.sqlite']);
 });
 
 test('restored, the data are those of the backup, the service opens them, and the former file is kept', async () => {
