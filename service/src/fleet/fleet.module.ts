@@ -1,5 +1,6 @@
 import { Module } from '@nestjs/common';
 import { IndicatorsModule } from '../indicators/indicators.module.js';
+import { StorageModule } from '../storage/storage.module.js';
 import { TelemetryModule } from '../telemetry/telemetry.module.js';
 import { AxesController } from './axes.controller.js';
 import { AxesService } from './axes.service.js';
@@ -9,7 +10,7 @@ import { SitesController } from './sites.controller.js';
 import { SitesService } from './sites.service.js';
 
 @Module({
-  imports: [TelemetryModule, IndicatorsModule],
+  imports: [TelemetryModule, IndicatorsModule, StorageModule],
   controllers: [SitesController, AxesController],
   providers: [SitesService, AxesService, AxisStateService, HistoryService],
   exports: [AxesService, SitesService],

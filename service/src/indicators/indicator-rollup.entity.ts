@@ -1,5 +1,21 @@
 import { Column, Entity, PrimaryColumn } from 'typeorm';
 
+/** Columns that add up from stretch to stretch. */
+export const SUM_COLUMNS = [
+  'samples',
+  'movingSamples',
+  'sumSquaredMovingError',
+  'sumSquaredStandingError',
+  'saturatedSamples',
+  'sumSquaredOutput',
+  'sumSquaredActivity',
+  'activityCrossings',
+  'coveredSeconds',
+  'gaps',
+] as const;
+/** Columns of which the larger is taken. */
+export const PEAK_COLUMNS = ['peakMovingError', 'peakStandingError', 'peakOutput'] as const;
+
 /** Sums and extremes of the samples of one stretch of time; they add up from seconds to minutes to hours. */
 abstract class IndicatorRollup {
   @PrimaryColumn()

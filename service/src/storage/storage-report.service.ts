@@ -121,7 +121,7 @@ function forecast(
 ): ForecastDto {
   const grown = tables.map((table) => grownOf(table, newest!));
   if (!grown.some((table) => table.rowsPerDay !== null))
-    return { outcome: 'not-enough-history', since, bytesPerDay: null, fullAt: null };
+    return { outcome: 'not-enough-history', since, bytesPerDay: null, fullAt: null, fullInDays: null };
   const captures = grown.find(({ name }) => name === CAPTURE_FILES)!;
   const inDatabase = grown.filter((table) => table !== captures);
   // One more than are kept: an old one goes only after the newest was found whole.
@@ -131,6 +131,7 @@ function forecast(
     since,
     bytesPerDay: grownBytes(grown, 1),
     fullAt: days === null || days === 0 ? null : new Date(Date.now() + days * DAY * 1000),
+    fullInDays: days || null,
   };
 }
 

@@ -1,5 +1,6 @@
 import type { Database, Statement } from 'better-sqlite3';
 import type { DataSource } from 'typeorm';
+import { PEAK_COLUMNS, SUM_COLUMNS } from '../indicators/indicator-rollup.entity.js';
 import type { RecordedMove } from '../indicators/move-recorder.js';
 import type { ClosedSecond } from '../indicators/second-accumulator.js';
 import { JUDGEMENT_PART } from './axis-checkpoint.entity.js';
@@ -14,19 +15,6 @@ export interface WrittenAxis {
   estimates: EstimateAfterWindow[];
 }
 
-const SUM_COLUMNS = [
-  'samples',
-  'movingSamples',
-  'sumSquaredMovingError',
-  'sumSquaredStandingError',
-  'saturatedSamples',
-  'sumSquaredOutput',
-  'sumSquaredActivity',
-  'activityCrossings',
-  'coveredSeconds',
-  'gaps',
-] as const;
-const PEAK_COLUMNS = ['peakMovingError', 'peakStandingError', 'peakOutput'] as const;
 const COLUMNS = [...SUM_COLUMNS, ...PEAK_COLUMNS];
 
 /** Adds a second to the row of its stretch: sums add, peaks take the larger. */

@@ -111,6 +111,7 @@ test('measured, every table is there with its rows; a forecast waits for a day o
     since: null,
     bytesPerDay: null,
     fullAt: null,
+    fullInDays: null,
   });
   await (await service.as('admin')).post('/api/v1/storage/measurements').expect(202);
   await until('the thread to answer', async () => (await report()).measuredAt !== null);

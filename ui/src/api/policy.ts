@@ -18,6 +18,7 @@ const POLICY = {
   'rota.override': [...TECHNICIAN_AND_UP, 'administrator'],
   'note.write': [...TECHNICIAN_AND_UP, 'administrator'],
   'people.manage': ['administrator'],
+  'storage.manage': ['administrator'],
   'intake.read': [...ENGINEER_AND_UP, 'administrator'],
   'audit.read': [...ENGINEER_AND_UP, 'administrator'],
 } as const satisfies Record<string, readonly Role[]>;

@@ -3505,6 +3505,8 @@ export interface components {
              * @description When the disk is full, with all backups that are kept; only with "full-at"
              */
             fullAt: string | null;
+            /** @description Whole days until then; only with "full-at" */
+            fullInDays: number | null;
         };
         RetentionDto: {
             /** @enum {string} */
@@ -4316,6 +4318,8 @@ export interface operations {
                 from?: string;
                 /** @description Default: now */
                 to?: string;
+                /** @description Thinned for a chart of so many points, on one page; resolution, limit and cursor do not count then */
+                points?: number;
             };
             header?: never;
             path: {
@@ -4345,6 +4349,8 @@ export interface operations {
                 from?: string;
                 /** @description Default: now */
                 to?: string;
+                /** @description Thinned for a chart of so many points, on one page; resolution, limit and cursor do not count then */
+                points?: number;
                 resolution?: "second" | "minute" | "hour";
             };
             header?: never;

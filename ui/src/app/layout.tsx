@@ -24,6 +24,7 @@ export function Layout() {
     ...(administrator ? [{ to: '/admin/people', label: 'People', count: 0 }] : []),
     { to: '/admin/mail', label: 'Mail', count: 0 },
     ...(may(user, 'intake.read') ? [{ to: '/admin/intake', label: 'Intake', count: 0 }] : []),
+    ...(may(user, 'storage.manage') ? [{ to: '/admin/storage', label: 'Storage', count: 0 }] : []),
     ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record', count: 0 }] : []),
   ];
   const link = ({ to, label, count }: (typeof links)[number]) => (

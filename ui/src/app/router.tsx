@@ -42,6 +42,7 @@ export const router = createBrowserRouter([
                   { path: '/admin/people', lazy: () => import('../features/people/people-page') },
                   { path: '/admin/mail', lazy: () => import('../features/mail/mail-page') },
                   { path: '/admin/intake', lazy: () => import('../features/intake/intake-page') },
+                  { path: '/admin/storage', lazy: () => import('../features/storage/storage-page') },
                   { path: '/admin/record', lazy: () => import('../features/record/record-page') },
                   { path: '/profile', lazy: () => import('../features/auth/profile-page') },
                   { path: '*', element: <NotFound /> },

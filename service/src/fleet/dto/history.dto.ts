@@ -1,6 +1,6 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
-import { IsDate, IsIn, IsOptional } from 'class-validator';
+import { IsDate, IsIn, IsInt, IsOptional, Max, Min } from 'class-validator';
 import { STRUCTURES, type Structure } from '../../control/pole-placement.js';
 import { PatternDto } from '../../design/dto/pattern.dto.js';
 import { NullableNumber, NullableText, PageOf, PageQuery } from '../../page.js';
@@ -19,6 +19,19 @@ export class SpanQuery extends PageQuery {
   @Type(() => Date)
   @IsDate()
   to?: Date;
+
+  @ApiPropertyOptional({
+    minimum: 1,
+    maximum: 1000,
+    description:
+      'Thinned for a chart of so many points, on one page; resolution, limit and cursor do not count then',
+  })
+  @IsOptional()
+  @Type(() => Number)
+  @IsInt()
+  @Min(1)
+  @Max(1000)
+  points?: number;
 }
 
 export const RESOLUTIONS = ['second', 'minute', 'hour'] as const;

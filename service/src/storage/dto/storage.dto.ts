@@ -90,6 +90,9 @@ export class ForecastDto {
 
   @NullableTime('When the disk is full, with all backups that are kept; only with "full-at"')
   fullAt: Date | null;
+
+  @NullableNumber('Whole days until then; only with "full-at"')
+  fullInDays: number | null;
 }
 
 export class IntegrityDto {

@@ -13,6 +13,9 @@ export const axisQuery = (id: number) =>
 export const SPANS = { '1 h': 3_600, '1 day': 86_400, '30 days': 30 * 86_400 } as const;
 export type Span = keyof typeof SPANS;
 
+/** Estimates that a history shows at most: more than its width can tell apart. */
+const CHART_POINTS = 600;
+
 export const estimatesQuery = (id: number, span: Span) =>
   queryOptions({
     queryKey: ['estimates', id, span],
@@ -21,7 +24,7 @@ export const estimatesQuery = (id: number, span: Span) =>
         client.GET('/api/v1/axes/{id}/estimates', {
           params: {
             path: { id },
-            query: { from: new Date(Date.now() - SPANS[span] * 1000).toISOString(), limit: 1000 },
+            query: { from: new Date(Date.now() - SPANS[span] * 1000).toISOString(), points: CHART_POINTS },
           },
         }),
       ),

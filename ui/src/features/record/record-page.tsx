@@ -22,6 +22,7 @@ const SUBJECTS = [
   { value: 'person', label: 'people' },
   { value: 'site', label: 'sites' },
   { value: 'gateway', label: 'gateways' },
+  { value: 'storage', label: 'storage' },
 ];
 
 const PAGE_OF: Record<string, string> = { axis: '/axes', proposal: '/proposals', alert: '/alerts' };
