@@ -1,6 +1,6 @@
 import { Menu, UnstyledButton, useMantineColorScheme } from '@mantine/core';
 import { useQuery } from '@tanstack/react-query';
-import { Link, NavLink, Outlet, ScrollRestoration } from 'react-router-dom';
+import { Link, NavLink, Outlet, ScrollRestoration, useLocation } from 'react-router-dom';
 import { useLiveStatus } from '../api/live';
 import { may } from '../api/policy';
 import { signOut } from '../api/session';
@@ -11,21 +11,30 @@ import classes from './layout.module.css';
 import { Mark } from './mark';
 import { onCallQuery, summaryQuery } from './shell-api';
 
+/** Pages that a phone shows at its lower edge; the further ones are in the account's menu there. */
+const AT_THE_THUMB = 4;
+
+interface PageLink {
+  to: string;
+  label: string;
+}
+
 export function Layout() {
   const { user } = useSession();
   const { data: summary } = useQuery(summaryQuery);
-  const administrator = may(user, 'people.manage');
   const links = [
     { to: '/', label: 'Fleet', count: 0 },
     { to: '/alerts', label: 'Alerts', count: summary?.unacknowledgedAlerts ?? 0 },
     { to: '/proposals', label: 'Proposals', count: summary?.openProposals ?? 0 },
     { to: '/rota', label: 'Rota', count: 0 },
     { to: '/captures', label: 'Captures', count: 0 },
-    ...(administrator ? [{ to: '/admin/people', label: 'People', count: 0 }] : []),
-    { to: '/admin/mail', label: 'Mail', count: 0 },
-    ...(may(user, 'intake.read') ? [{ to: '/admin/intake', label: 'Intake', count: 0 }] : []),
-    ...(may(user, 'storage.manage') ? [{ to: '/admin/storage', label: 'Storage', count: 0 }] : []),
-    ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record', count: 0 }] : []),
+  ];
+  const adminLinks = [
+    ...(may(user, 'people.manage') ? [{ to: '/admin/people', label: 'People' }] : []),
+    { to: '/admin/mail', label: 'Mail' },
+    ...(may(user, 'intake.read') ? [{ to: '/admin/intake', label: 'Intake' }] : []),
+    ...(may(user, 'storage.manage') ? [{ to: '/admin/storage', label: 'Storage' }] : []),
+    ...(may(user, 'audit.read') ? [{ to: '/admin/record', label: 'Record' }] : []),
   ];
   const link = ({ to, label, count }: (typeof links)[number]) => (
     <NavLink key={to} to={to} end={to === '/'} className={({ isActive }) => (isActive ? classes.here : '')}>
@@ -50,21 +59,57 @@ export function Layout() {
         </Link>
         <nav aria-label="Main" className={classes.nav}>
           {links.map(link)}
+          <AdminMenu links={adminLinks} />
         </nav>
         <span style={{ flex: 1 }} />
         <AxisFinder />
         <LiveMark />
         <OnCall />
-        <Account />
+        <Account further={[...links.slice(AT_THE_THUMB), ...adminLinks]} />
       </header>
       <main id="content" className={classes.main}>
         <Outlet />
       </main>
       <nav aria-label="Main, at the thumb" className={`${classes.thumb} no-print`}>
-        {links.slice(0, 4).map(link)}
+        {links.slice(0, AT_THE_THUMB).map(link)}
       </nav>
       <ScrollRestoration />
     </div>
+  );
+}
+
+/** The pages of running the installation, under one word. */
+function AdminMenu({ links }: { links: PageLink[] }) {
+  const { pathname } = useLocation();
+  const here = links.find(({ to }) => pathname.startsWith(to));
+  return (
+    <Menu position="bottom-start" withinPortal>
+      <Menu.Target>
+        <UnstyledButton className={`${classes.admin} ${here ? classes.here : ''}`}>
+          {here?.label ?? 'Admin'} <span aria-hidden>▾</span>
+        </UnstyledButton>
+      </Menu.Target>
+      <Menu.Dropdown>
+        <Menu.Label>Admin</Menu.Label>
+        {links.map((link) => (
+          <PageItem key={link.to} {...link} />
+        ))}
+      </Menu.Dropdown>
+    </Menu>
+  );
+}
+
+function PageItem({ to, label, className }: PageLink & { className?: string | undefined }) {
+  const { pathname } = useLocation();
+  return (
+    <Menu.Item
+      component={Link}
+      to={to}
+      {...(className && { className })}
+      {...(pathname.startsWith(to) && { 'aria-current': 'page' as const })}
+    >
+      {label}
+    </Menu.Item>
   );
 }
 
@@ -112,7 +157,7 @@ function OnCall() {
   );
 }
 
-function Account() {
+function Account({ further }: { further: PageLink[] }) {
   const { user } = useSession();
   const { colorScheme, setColorScheme } = useMantineColorScheme();
   if (!user) return null;
@@ -134,6 +179,10 @@ function Account() {
         <Menu.Item component={Link} to="/profile">
           Profile
         </Menu.Item>
+        <Menu.Label className={classes.phoneOnly}>Further pages</Menu.Label>
+        {further.map((link) => (
+          <PageItem key={link.to} {...link} className={classes.phoneOnly} />
+        ))}
         <Menu.Label>Scheme</Menu.Label>
         {(['light', 'dark', 'auto'] as const).map((scheme) => (
           <Menu.Item

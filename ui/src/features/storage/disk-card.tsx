@@ -39,7 +39,7 @@ export function DiskCard({ storage }: { storage: Storage }) {
             </dt>
             <dd>
               {bytes(size)}
-              {name === 'Database' && reusableBytes > 0 && (
+              {name === 'Database' && reusableBytes >= 2 ** 20 && (
                 <span className="soft small">, {bytes(reusableBytes)} of it free for new rows</span>
               )}
             </dd>

@@ -34,15 +34,15 @@ function Storage() {
       <div className={classes.wide}>
         <DiskCard storage={data} />
       </div>
-      <BackupsCard storage={data} />
       <div className={classes.column}>
-        <RetentionCard
-          key={data.retention.map(({ keptSeconds }) => keptSeconds).join()}
-          retention={data.retention}
-          mayChange={data.mayChangeRetention}
-        />
+        <BackupsCard storage={data} />
         <DatabaseCheckCard storage={data} />
       </div>
+      <RetentionCard
+        key={data.retention.map(({ keptSeconds }) => keptSeconds).join()}
+        retention={data.retention}
+        mayChange={data.mayChangeRetention}
+      />
       <div className={classes.wide}>
         <TablesCard storage={data} />
       </div>

@@ -1,5 +1,6 @@
 import { Button } from '@mantine/core';
 import { useMutation } from '@tanstack/react-query';
+import { useState } from 'react';
 import { Card } from '../../components/card';
 import { ScrollX } from '../../components/scroll-x';
 import { SiteTime } from '../../components/site-time';
@@ -21,13 +22,19 @@ const HOLDS: Record<string, string> = {
   'capture files': 'Samples and traces of captures, as files',
   proposal: 'Proposals',
   proposal_version: 'Versions of proposals',
-  mail: 'Mail that was sent',
+  axis: 'Axes',
+  mail_outbox: 'Mail that was sent',
   storage_measurement: 'These measurements',
 };
+
+/** Tables that are shown at first: the largest, and those that are kept for a time. */
+const SHOWN = 8;
 
 /** What every table holds and how it grows. */
 export function TablesCard({ storage: { tables, measuredAt, measuring } }: { storage: Storage }) {
   const begin = useMutation({ mutationFn: measure });
+  const [all, setAll] = useState(false);
+  const shown = all ? tables : tables.filter(({ keptSeconds }, k) => k < SHOWN || keptSeconds !== null);
   return (
     <Card
       title="Tables"
@@ -63,7 +70,7 @@ export function TablesCard({ storage: { tables, measuredAt, measuring } }: { sto
               </tr>
             </thead>
             <tbody>
-              {tables.map((table) => (
+              {shown.map((table) => (
                 <tr key={table.name}>
                   <td>
                     {HOLDS[table.name] ?? table.name.replaceAll('_', ' ')}
@@ -99,6 +106,11 @@ export function TablesCard({ storage: { tables, measuredAt, measuring } }: { sto
             </tbody>
           </table>
         </ScrollX>
+      )}
+      {tables.length > shown.length && (
+        <Button variant="subtle" size="compact-sm" mt="sm" onClick={() => setAll(true)}>
+          Show all {tables.length} tables
+        </Button>
       )}
     </Card>
   );
