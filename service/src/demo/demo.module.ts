@@ -110,9 +110,7 @@ export class DemoSeed {
   private tokens(): Record<string, string> {
     const path = join(this.config.get('DATA_DIR', { infer: true }), 'gateway-tokens.json');
     if (existsSync(path)) return JSON.parse(readFileSync(path, 'utf8')) as Record<string, string>;
-    const tokens = Object.fromEntries(
-      GATEWAYS.map(({ name }) => [name, newToken()]),
-    );
+    const tokens = Object.fromEntries(GATEWAYS.map(({ name }) => [name, newToken()]));
     writeFileSync(path, JSON.stringify(tokens, null, 2), { mode: 0o600 });
     return tokens;
   }
