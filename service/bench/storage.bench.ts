@@ -5,10 +5,10 @@ import { join } from 'node:path';
 import type { DataSource } from 'typeorm';
 import { AxisPipeline } from '../dist/telemetry/axis-pipeline.js';
 import { CheckpointWriter } from '../dist/telemetry/checkpoint-writer.js';
-import { DEMO_PASSWORD } from '../src/people/demo-people.js';
 import { ProductionAxis } from '../test/support/production-axis.js';
 import { startProcess } from '../test/support/service-process.js';
 import { makeFleet, type BenchFleet } from './intake/fleet.js';
+import { accessToken } from './intake/run-load.js';
 import { round, type BenchRecord } from './measure.js';
 
 /** Axes of the checkpoints, and how many seconds of them. */
@@ -160,7 +160,7 @@ async function histories(): Promise<BenchRecord[]> {
     const rows = fill(fleet, now);
     const service = await startProcess(fleet.folder);
     try {
-      const authorization = await signIn(service.url);
+      const authorization = `Bearer ${await accessToken(service.url)}`;
       const ask = async (path: string): Promise<number> => {
         const from = performance.now();
         const response = await fetch(`${service.url}/api/v1/${path}`, { headers: { authorization } });
@@ -252,13 +252,4 @@ function fill({ folder, axisIds }: BenchFleet, now: number): number {
   database.pragma('wal_checkpoint(TRUNCATE)');
   database.close();
   return rows;
-}
-
-async function signIn(url: string): Promise<string> {
-  const response = await fetch(`${url}/api/v1/auth/sign-in`, {
-    method: 'POST',
-    headers: { 'content-type': 'application/json' },
-    body: JSON.stringify({ email: 'engineer@tarnwick.example', password: DEMO_PASSWORD }),
-  });
-  return `Bearer ${((await response.json()) as { accessToken: string }).accessToken}`;
 }

@@ -11,7 +11,7 @@ import type { LoadOrder, LoadResult } from './load.js';
 const LOAD = fileURLToPath(new URL('./load.ts', import.meta.url));
 const FLOOR = fileURLToPath(new URL('./floor.ts', import.meta.url));
 /** As the demo's people sign in; their module cannot be read without the entities. */
-const DEMO_PASSWORD = 'polewright-demo';
+export const DEMO_PASSWORD = 'polewright-demo';
 /** Processes that share the gateways. */
 const LOAD_PROCESSES = 2;
 /** Axes that the watching page shows. */
@@ -28,7 +28,12 @@ export interface UnderLoad extends LoadResult {
   longestCheckpointMs: number;
 }
 
-async function load(url: string, gateways: BenchFleet['gateways'], seconds: number): Promise<LoadResult> {
+/** Streams a fleet in real time from processes of their own. */
+export async function load(
+  url: string,
+  gateways: BenchFleet['gateways'],
+  seconds: number,
+): Promise<LoadResult> {
   const parts = Array.from({ length: LOAD_PROCESSES }, (_, p) =>
     gateways.filter((__, g) => g % LOAD_PROCESSES === p),
   ).filter((part) => part.length > 0);
@@ -60,7 +65,8 @@ async function metrics(url: string): Promise<(name: string) => number | null> {
   };
 }
 
-async function accessToken(url: string): Promise<string> {
+/** Signs an engineer of the demo in. */
+export async function accessToken(url: string): Promise<string> {
   const answer = await fetch(`${url}/api/v1/auth/sign-in`, {
     method: 'POST',
     headers: { 'content-type': 'application/json' },

@@ -17,17 +17,10 @@ import type { SignedInUser } from '../auth/signed-in-user.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
 import type { Page } from '../page.js';
 import { AxesService } from './axes.service.js';
-import {
-  AxisDto,
-  AxisPageDto,
-  AxisQuery,
-  ChangeAxisDto,
-  ConfirmBaselineDto,
-  CreateAxisDto,
-  FleetSummaryDto,
-  MaintenanceDto,
-  StripsDto,
-} from './dto/axis.dto.js';
+import { AxisDto, AxisPageDto, AxisQuery } from './dto/axis.dto.js';
+import { ChangeAxisDto, CreateAxisDto } from './dto/axis-sheet.dto.js';
+import { ConfirmBaselineDto, MaintenanceDto } from './dto/axis-care.dto.js';
+import { FleetSummaryDto, StripsDto } from './dto/fleet.dto.js';
 import {
   EstimatePageDto,
   HistoricEstimateDto,

@@ -16,16 +16,11 @@ import { IntakeService } from '../telemetry/intake.service.js';
 import { TelemetryGateway } from '../telemetry/telemetry.gateway.js';
 import { groupBy } from '../group-by.js';
 import { Axis, AXIS_STATES, type Baseline } from './axis.entity.js';
-import type {
-  FleetSummaryDto,
-  AxisDto,
-  AxisEstimateDto,
-  AxisQuery,
-  ChangeAxisDto,
-  CreateAxisDto,
-  MaintenanceDto,
-  RatioPointDto,
-} from './dto/axis.dto.js';
+import type { FleetSummaryDto } from './dto/fleet.dto.js';
+import type { AxisDto, AxisQuery } from './dto/axis.dto.js';
+import type { AxisEstimateDto, RatioPointDto } from './dto/axis-estimate.dto.js';
+import type { ChangeAxisDto, CreateAxisDto } from './dto/axis-sheet.dto.js';
+import type { MaintenanceDto } from './dto/axis-care.dto.js';
 import { Machine } from './machine.entity.js';
 import { TuningRevision } from './tuning-revision.entity.js';
 

@@ -10,8 +10,14 @@ import { RetentionSettings } from './retention-settings.service.js';
 const HOUR = 3_600;
 const DAY = 24 * HOUR;
 
-/** Every estimate is kept this long, s; of older ones the last of each hour: a busy axis makes one every few seconds. */
-export const ESTIMATES_WHOLE = DAY;
+/**
+ * Of estimates older than `after` the last of each `unit` stays, both in s. A busy axis makes one every few seconds: a
+ * day of all of them would be some 12 MB an axis, more than three years of one an hour. A day's chart shows 600 points.
+ */
+export const ESTIMATES_THINNED = [
+  { after: 2 * HOUR, unit: 120 },
+  { after: DAY, unit: HOUR },
+] as const;
 
 /** One axis is looked at every so often, ms. */
 const STEP_MS = 100;
@@ -38,8 +44,10 @@ export class RetentionService {
   private readonly log = new Logger(RetentionService.name);
   private statements: Statements | null = null;
   private lastAxis = 0;
-  /** Up to where an axis's estimates are thinned, s since the Unix epoch; found anew after a start. */
-  private readonly thinned = new Map<number, number>();
+  /** Up to where an axis's estimates are thinned to a unit, s since the Unix epoch, by unit; found anew after a start. */
+  private readonly thinned = new Map<number, Map<number, number>>(
+    ESTIMATES_THINNED.map(({ unit }) => [unit, new Map()]),
+  );
 
   constructor(
     @InjectDataSource() private readonly dataSource: DataSource,
@@ -61,20 +69,25 @@ export class RetentionService {
       const kept = this.settings.get();
       for (const [table, kind, statement] of prune)
         this.count(table, statement.run(found.id, now - kept[kind]).changes);
-      this.thin(found.id, now - ESTIMATES_WHOLE);
+      // What the coarser unit is due for is left to it.
+      let from = now - kept.estimates;
+      for (const { after, unit } of [...ESTIMATES_THINNED].reverse()) {
+        this.thin(found.id, from, now - after, unit);
+        from = now - after;
+      }
     } catch (error) {
       this.log.warn(`Old rows could not be deleted: ${(error as Error).message}`);
     }
   }
 
-  private thin(axisId: number, until: number): void {
-    const from =
-      this.thinned.get(axisId) ?? Math.floor((until - this.settings.get().estimates) / HOUR) * HOUR;
-    const to = Math.min(from + THINNED_PER_STEP, Math.floor(until / HOUR) * HOUR);
+  private thin(axisId: number, earliest: number, until: number, unit: number): void {
+    const thinned = this.thinned.get(unit)!;
+    const from = thinned.get(axisId) ?? Math.floor(earliest / unit) * unit;
+    const to = Math.min(from + THINNED_PER_STEP, Math.floor(until / unit) * unit);
     if (to <= from) return;
-    const { changes } = this.statements!.thin.run({ axisId, from, to, limit: ROWS_PER_STEP });
+    const { changes } = this.statements!.thin.run({ axisId, from, to, unit, limit: ROWS_PER_STEP });
     this.count('plant_estimate_row', changes);
-    if (changes < ROWS_PER_STEP) this.thinned.set(axisId, to);
+    if (changes < ROWS_PER_STEP) thinned.set(axisId, to);
   }
 
   private count(table: string, rows: number): void {
@@ -98,7 +111,7 @@ function prepare(database: Database): Statements {
          SELECT "axisId", "t" FROM (
            SELECT "axisId", "t", lead("t") OVER (ORDER BY "t") AS "next" FROM "plant_estimate_row"
            WHERE "axisId" = @axisId AND "t" >= @from AND "t" < @to)
-         WHERE CAST("next" / ${HOUR} AS integer) = CAST("t" / ${HOUR} AS integer)
+         WHERE CAST("next" / @unit AS integer) = CAST("t" / @unit AS integer)
          LIMIT @limit)`,
     ),
   };

@@ -3,7 +3,7 @@ import type { DataSource } from 'typeorm';
 import { afterAll, beforeAll, beforeEach, expect, test } from 'vitest';
 import { KIND_OF, RETENTION, RETENTION_KINDS, type Retention } from '../../src/storage/retention.js';
 import type { RetentionSettings } from '../../src/storage/retention-settings.service.js';
-import { ESTIMATES_WHOLE, RetentionService } from '../../src/storage/retention.service.js';
+import { RetentionService } from '../../src/storage/retention.service.js';
 
 const NOW = 1_764_600_000;
 const HOUR = 3_600;
@@ -71,10 +71,11 @@ test('a backlog goes in steps of 500 rows, the oldest first', () => {
   expect(left('indicator_second', 3)).toEqual([]);
 });
 
-test('of estimates older than a day the last of each hour stays; younger ones all stay', () => {
-  const day = Math.floor((NOW - ESTIMATES_WHOLE) / HOUR) * HOUR;
+test('of estimates older than a day the last of each hour stays', () => {
+  const day = Math.floor((NOW - 24 * HOUR) / HOUR) * HOUR;
   const old = [-7_200, -7_199.5, -3_700, -3_600, -1_800.25, -0.5].map((dt) => day + dt);
-  const young = [0, 1.5, 2, 3_600, 3_601].map((dt) => day + dt);
+  // The finer thinning begins a day back, within this hour; the rest of the hour waits for the coarser.
+  const young = [0, 119.5, 120, 3_600, 3_721].map((dt) => day + dt);
   for (const axisId of [3, 9]) put('plant_estimate_row', axisId, [...old, ...young]);
   // Three years in steps of ten days, two axes and a turn.
   steps(3 * 112);
@@ -82,7 +83,27 @@ test('of estimates older than a day the last of each hour stays; younger ones al
     expect(left('plant_estimate_row', axisId)).toEqual([day - 3_700, day - 0.5, ...young]);
   // An hour later the next hour is thinned too.
   steps(3, NOW + HOUR);
-  expect(left('plant_estimate_row', 3)).toEqual([day - 3_700, day - 0.5, day + 2, day + 3_600, day + 3_601]);
+  expect(left('plant_estimate_row', 3)).toEqual([
+    day - 3_700,
+    day - 0.5,
+    day + 120,
+    day + 3_600,
+    day + 3_721,
+  ]);
+});
+
+test('of estimates older than two hours the last of each two minutes stays, of younger ones all', () => {
+  const edge = Math.floor((NOW - 2 * HOUR) / 120) * 120;
+  // One every five seconds, from an hour before the edge to half an hour after it.
+  const times = Array.from({ length: 1_080 }, (_, k) => edge - HOUR + 5 * k + 0.25);
+  put('plant_estimate_row', 3, times);
+  steps(12);
+  const whole = times.filter((t) => t >= edge);
+  const lastOfTwoMinutes = times.filter((t) => t < edge && (t + 5) % 120 < 5);
+  expect(lastOfTwoMinutes).toHaveLength(30);
+  expect(left('plant_estimate_row', 3)).toEqual([...lastOfTwoMinutes, ...whole]);
+  steps(3, NOW + 120);
+  expect(left('plant_estimate_row', 3)).toHaveLength(30 + whole.length - 23);
 });
 
 test('inside somebody else’s transaction nothing is deleted', () => {

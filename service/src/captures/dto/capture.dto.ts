@@ -12,7 +12,7 @@ import {
   MinLength,
   ValidateNested,
 } from 'class-validator';
-import { IntervalDto } from '../../fleet/dto/axis.dto.js';
+import { IntervalDto } from '../../fleet/dto/axis-estimate.dto.js';
 import type { Verdict } from '../../identification/plant-estimate.js';
 import { NullableNumber, NullableText, PageOf, PageQuery } from '../../page.js';
 import {

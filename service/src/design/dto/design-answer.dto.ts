@@ -1,5 +1,5 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
-import { GainsDto } from '../../fleet/dto/axis.dto.js';
+import { GainsDto } from '../../fleet/dto/axis-sheet.dto.js';
 import { NullableNumber } from '../../page.js';
 
 export class ComplexDto {

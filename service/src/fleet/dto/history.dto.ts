@@ -5,7 +5,8 @@ import { STRUCTURES, type Structure } from '../../control/pole-placement.js';
 import { PatternDto } from '../../design/dto/pattern.dto.js';
 import { NullableNumber, NullableText, PageOf, PageQuery } from '../../page.js';
 import type { TuningSource } from '../tuning-revision.entity.js';
-import { AxisEstimateDto, GainsDto, PlantDto } from './axis.dto.js';
+import { AxisEstimateDto } from './axis-estimate.dto.js';
+import { GainsDto, PlantDto } from './axis-sheet.dto.js';
 
 export class SpanQuery extends PageQuery {
   @ApiPropertyOptional({ description: 'Default: one day back (estimates), one hour back (indicators)' })

@@ -20,14 +20,8 @@ import {
   type Structure,
 } from '../../control/pole-placement.js';
 import { PatternDto } from '../../design/dto/pattern.dto.js';
-import {
-  AxisEstimateDto,
-  AxisMoveDto,
-  GainsDto,
-  PlantDto,
-  RatioPointDto,
-  TolerancesDto,
-} from '../../fleet/dto/axis.dto.js';
+import { AxisEstimateDto, RatioPointDto } from '../../fleet/dto/axis-estimate.dto.js';
+import { AxisMoveDto, GainsDto, PlantDto, TolerancesDto } from '../../fleet/dto/axis-sheet.dto.js';
 import type { CauseName } from '../../identification/probable-cause.js';
 import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
 import { lambdaOf } from '../evidence.js';

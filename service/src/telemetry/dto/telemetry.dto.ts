@@ -1,6 +1,6 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { ArrayMaxSize, IsArray, IsString, Length } from 'class-validator';
-import { GainsDto } from '../../fleet/dto/axis.dto.js';
+import { GainsDto } from '../../fleet/dto/axis-sheet.dto.js';
 import { STRUCTURES, type Gains, type Structure } from '../../control/pole-placement.js';
 import { MAX_AXES, MAX_EPOCH_LENGTH } from '../gateway-sessions.service.js';
 
