@@ -8,7 +8,7 @@ import { CheckpointWriter } from '../dist/telemetry/checkpoint-writer.js';
 import { ProductionAxis } from '../test/support/production-axis.js';
 import { startProcess } from '../test/support/service-process.js';
 import { makeFleet, type BenchFleet } from './intake/fleet.js';
-import { accessToken } from './intake/run-load.js';
+import { accessToken, metrics } from './intake/run-load.js';
 import { round, type BenchRecord } from './measure.js';
 
 /** Axes of the checkpoints, and how many seconds of them. */
@@ -21,6 +21,7 @@ const DAYS = Number(process.env.BENCH_STORAGE_DAYS ?? 90);
 const ASKED = Number(process.env.BENCH_STORAGE_REQUESTS ?? 100);
 const CHART_POINTS = 600;
 const DAY = 86_400;
+const CPU = 'process_cpu_seconds_total';
 
 /** Writing by the checkpoint, and histories of a large plant by the built service over HTTP. */
 export default async function bench(): Promise<BenchRecord[]> {
@@ -189,7 +190,9 @@ async function histories(): Promise<BenchRecord[]> {
         [`fleet list of ${AXES} axes`, () => 'axes?limit=1000'],
       ] as const) {
         const times: number[] = [];
+        const before = (await metrics(service.url))(CPU)!;
         for (let k = 0; k < ASKED; k++) times.push(await ask(path(k)));
+        const cpu = (1e3 * ((await metrics(service.url))(CPU)! - before)) / ASKED;
         times.sort((a, b) => a - b);
         records.push({
           name: `history, ${what}: p95`,
@@ -197,7 +200,7 @@ async function histories(): Promise<BenchRecord[]> {
           unit: 'ms',
           floor: 50,
           ratio: round(times[Math.ceil(0.95 * ASKED) - 1]! / 50),
-          note: `by HTTP, ${ASKED} requests, median ${round(times[Math.floor(ASKED / 2)]!)}; floor: what is asked of it; ${rows} minutes of ${AXES} axes in the file`,
+          note: `by HTTP, ${ASKED} requests, median ${round(times[Math.floor(ASKED / 2)]!)}, ${round(cpu)} ms of the service’s CPU each; floor: what is asked of it; ${rows} minutes of ${AXES} axes in the file`,
         });
       }
       return records;

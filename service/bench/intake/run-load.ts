@@ -57,7 +57,8 @@ export async function load(
   }));
 }
 
-async function metrics(url: string): Promise<(name: string) => number | null> {
+/** The service's figures now, by name. */
+export async function metrics(url: string): Promise<(name: string) => number | null> {
   const text = await (await fetch(`${url}/metrics`)).text();
   return (name) => {
     const line = text.split('\n').find((row) => row.startsWith(`${name} `));

@@ -12,6 +12,7 @@ import { tell } from '../events.js';
 import type { PlantEstimate } from '../identification/plant-estimate.js';
 import { RecentSeconds } from '../indicators/recent-seconds.js';
 import { LIVE_STATES, Proposal } from '../proposals/proposal.entity.js';
+import { AxesAtHand } from '../telemetry/axes-at-hand.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { TelemetryGateway } from '../telemetry/telemetry.gateway.js';
 import { groupBy } from '../group-by.js';
@@ -49,6 +50,7 @@ export class AxesService {
     private readonly intake: IntakeService,
     private readonly gateway: TelemetryGateway,
     private readonly recent: RecentSeconds,
+    private readonly axesAtHand: AxesAtHand,
     private readonly emitter: EventEmitter2,
   ) {}
 
@@ -65,19 +67,16 @@ export class AxesService {
   /** The person's axes that fit the query, worst first. */
   async list(query: AxisQuery, user: SignedInUser): Promise<AxisDto[]> {
     const { siteId, machineId, state, actuator, q } = query;
-    const axes = await this.dataSource.getRepository(Axis).find({
-      where: {
-        siteId: In(sitesOf(user).filter((id) => siteId === undefined || id === siteId)),
-        ...(machineId !== undefined && { machineId }),
-        ...(state && { state }),
-        ...(actuator && { actuator }),
-      },
-      relations: { machine: true, site: true },
-    });
+    const sites = sitesOf(user).filter((id) => siteId === undefined || id === siteId);
     const text = q?.trim().toLowerCase();
-    const found = text
-      ? axes.filter(({ tag, name, machine }) => `${tag} ${name} ${machine.name}`.toLowerCase().includes(text))
-      : axes;
+    const found = (await this.axesAtHand.all()).filter(
+      (axis) =>
+        sites.includes(axis.siteId) &&
+        (machineId === undefined || axis.machineId === machineId) &&
+        (!state || axis.state === state) &&
+        (!actuator || axis.actuator === actuator) &&
+        (!text || `${axis.tag} ${axis.name} ${axis.machine.name}`.toLowerCase().includes(text)),
+    );
     const dtos = await this.toDtos(found);
     return dtos.sort(
       (a, b) =>
@@ -92,7 +91,7 @@ export class AxesService {
   }
 
   /** Axes with everything a tile shows, in five queries however many there are. */
-  private async toDtos(axes: Axis[]): Promise<AxisDto[]> {
+  private async toDtos(axes: readonly Axis[]): Promise<AxisDto[]> {
     if (axes.length === 0) return [];
     const ids = axes.map(({ id }) => id);
     const [alerts, proposals, tunings, trails] = await Promise.all([
@@ -101,16 +100,22 @@ export class AxesService {
         select: { id: true, axisId: true, state: true },
         where: { axisId: In(ids), state: In([...LIVE_STATES]) },
       }),
-      this.dataSource.getRepository(TuningRevision).findBy({ axisId: In(ids) }),
+      this.dataSource
+        .getRepository(TuningRevision)
+        .createQueryBuilder('tuning')
+        .innerJoin(Axis, 'axis', 'axis.id = tuning.axisId AND axis.revision = tuning.revision')
+        .where({ axisId: In(ids) })
+        .getMany(),
       this.trails(axes),
     ]);
     const alertsOf = groupBy(alerts, ({ axisId }) => axisId);
-    const tuningOf = new Map(tunings.map((tuning) => [`${tuning.axisId} ${tuning.revision}`, tuning]));
+    const tuningOf = new Map(tunings.map((tuning) => [tuning.axisId, tuning]));
+    const proposalOf = new Map(proposals.map((proposal) => [proposal.axisId, proposal]));
     return axes.map((axis) => {
       const pipeline = this.intake.pipeline(axis.id);
-      const tuning = tuningOf.get(`${axis.id} ${axis.revision}`);
+      const tuning = tuningOf.get(axis.id);
       const indicators = this.recent.over(axis.id);
-      const proposal = proposals.find(({ axisId }) => axisId === axis.id);
+      const proposal = proposalOf.get(axis.id);
       const lastSampleAt = pipeline?.lastSampleAt ?? null;
       return {
         id: axis.id,
@@ -169,7 +174,7 @@ export class AxesService {
    * Former estimates over the baseline: of each of `TRAIL_POINTS` equal stretches of `TRAIL_REACH` the newest, one seek
    * in the index each. What was found is kept, but for the running stretch.
    */
-  private async trails(axes: Axis[]): Promise<Map<number, RatioPointDto[]>> {
+  private async trails(axes: readonly Axis[]): Promise<Map<number, RatioPointDto[]>> {
     const running = Math.floor(Date.now() / 1000 / TRAIL_STEP);
     const stretches = Array.from({ length: TRAIL_POINTS }, (_, k) => running - TRAIL_POINTS + 1 + k);
     const wanted = axes.flatMap(({ id, baseline }) => {

@@ -5,10 +5,10 @@ import type { DataSource, EntitySubscriberInterface } from 'typeorm';
 import { Axis } from '../fleet/axis.entity.js';
 
 /** What is read with an axis. */
-const TABLES = ['axis', 'site'];
+const TABLES = ['axis', 'machine', 'site'];
 
 /**
- * All axes with their sites, read again only after one was written: who looks at every axis at every beat would
+ * All axes with their machines and sites, read again only after one was written: who looks at every axis at every beat would
  * otherwise build a thousand entities a second. Take them as they are, do not change them.
  *
  * The database itself tells of every write on its connection, by triggers that last as long as the connection does:
@@ -35,7 +35,7 @@ export class AxesAtHand implements EntitySubscriberInterface<Axis> {
 
   all(): Promise<readonly Axis[]> {
     if (!this.axes) {
-      const reading = this.dataSource.getRepository(Axis).find({ relations: { site: true } });
+      const reading = this.dataSource.getRepository(Axis).find({ relations: { machine: true, site: true } });
       this.axes = reading;
       reading.catch(() => this.axes === reading && this.forget());
     }
