@@ -13,8 +13,8 @@ export default defineConfig({
           environment: 'node',
           include: ['test/**/*.test.ts', 'src/**/*.test.ts'],
           pool: 'forks',
-          testTimeout: 30_000,
-          hookTimeout: 60_000,
+          testTimeout: 120_000,
+          hookTimeout: 120_000,
         },
       },
       {
@@ -25,7 +25,7 @@ export default defineConfig({
           environment: 'jsdom',
           include: ['test/**/*.test.{ts,tsx}', 'src/**/*.test.{ts,tsx}'],
           setupFiles: ['./test/setup.ts'],
-          testTimeout: 20_000,
+          testTimeout: 60_000,
         },
       },
       {

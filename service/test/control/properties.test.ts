@@ -91,7 +91,8 @@ describe('properties', () => {
         const a = stepFigures(plant, fast, structure);
         const b = stepFigures(slowPlant, slow, structure);
         expect(near(a.overshootPct, b.overshootPct, 1e-6, 1e-7)).toBe(true);
-        expect(near(a.riseTime! * k, b.riseTime, 1e-6)).toBe(true);
+        // passages are found to about 1e-8 of the response's own time, however short a rise between them
+        expect(near(a.riseTime! * k, b.riseTime, 1e-6, 1e-7 * b.settlingTime!)).toBe(true);
         // settling may jump where an extremum just touches the band
         if (Math.abs(Math.abs(a.overshootPct!) - 2) > 1e-3)
           expect(near(a.settlingTime! * k, b.settlingTime, 1e-4)).toBe(true);
