@@ -85,7 +85,9 @@ export function dataSourceOptions(database: string): DataSourceOptions {
     prepareDatabase: (db: Database) => {
       db.pragma('synchronous = NORMAL');
       db.pragma('foreign_keys = ON');
-      db.pragma('busy_timeout = 5000');
+      // Only another program can hold a lock. Waiting for it stops the intake too, so it is short: background work
+      // tries again at its next beat.
+      db.pragma('busy_timeout = 50');
       // 32 MiB of log before its pages go into the file: a fleet's checkpoint rewrites the same pages every second.
       db.pragma('wal_autocheckpoint = 8192');
       // A long reader, such as an integrity check, lets the log grow; when it is gone the file shrinks to this again.

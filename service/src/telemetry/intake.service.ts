@@ -36,6 +36,10 @@ const longestCheckpoint = new Gauge({
   name: 'polewright_checkpoint_longest_seconds',
   help: 'Longest checkpoint since the service started',
 });
+const checkpointFailures = new Counter({
+  name: 'polewright_checkpoint_failures_total',
+  help: 'Checkpoints that could not be written and were tried again',
+});
 const gapsTotal = new Counter({
   name: 'polewright_sequence_gaps_total',
   help: 'Gaps in a gateway’s sequence',
@@ -251,6 +255,7 @@ export class IntakeService implements OnApplicationBootstrap, OnApplicationShutd
       return written;
     } catch (error) {
       this.failedCheckpoints++;
+      checkpointFailures.inc();
       this.log.error(
         `Checkpoint failed ${this.failedCheckpoints} time(s) in a row: ${(error as Error).message}`,
       );
