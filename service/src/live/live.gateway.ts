@@ -34,17 +34,24 @@ interface LiveSocket extends Socket {
 }
 
 const EVERY_MS = 500;
-/** A page that does not answer within this time, ms, gets the newest state when it does. */
-const ANSWER_WITHIN_MS = 5_000;
+/**
+ * A page that does not answer within this time, ms, is cut off: it connects again and begins with the newest state,
+ * and until then nothing is kept for it.
+ */
+const ANSWER_WITHIN_MS = 10_000;
 
 /**
  * What pages see live, `/live`. Values are conflated per page: at most two messages a second, the next one only after
- * the page has answered the former, so a slow browser skips and never queues.
+ * the page has answered the former, so a slow browser skips and never queues; a stalled one is cut off.
  */
 @WebSocketGateway({ namespace: '/live', cors: false, transports: ['websocket'], perMessageDeflate: false })
 export class LiveGateway implements OnGatewayInit<Namespace> {
   @WebSocketServer()
   private readonly namespace: Namespace;
+
+  get answerWithinMs(): number {
+    return ANSWER_WITHIN_MS;
+  }
 
   constructor(
     private readonly auth: AuthService,
@@ -69,7 +76,7 @@ export class LiveGateway implements OnGatewayInit<Namespace> {
   /** Says what the page shows now; it replaces what it showed before. */
   @SubscribeMessage('watch')
   watch(@ConnectedSocket() socket: LiveSocket, @MessageBody() body: unknown): { ok: boolean } {
-    const { fleet, axes, trace } = (body ?? {}) as { fleet?: unknown; axes?: unknown; trace?: unknown };
+    const { fleet, axes, trace, traceRate } = (body ?? {}) as Record<string, unknown>;
     const allowed = typeof trace === 'number' && this.maySee(socket, trace) ? trace : null;
     socket.data.watch = {
       fleet: fleet === true,
@@ -78,7 +85,9 @@ export class LiveGateway implements OnGatewayInit<Namespace> {
       sent: new Map(),
     };
     const pipeline = allowed === null ? undefined : this.intake.pipeline(allowed);
-    socket.data.trace = pipeline ? new TraceBuffer(pipeline.facts) : null;
+    socket.data.trace = pipeline
+      ? new TraceBuffer(pipeline.facts, Number.isFinite(traceRate) ? (traceRate as number) : undefined)
+      : null;
     this.traceWhatIsWatched();
     return { ok: true };
   }
@@ -131,10 +140,13 @@ export class LiveGateway implements OnGatewayInit<Namespace> {
   ): void {
     socket.data.busy = true;
     socket
-      .timeout(ANSWER_WITHIN_MS)
+      .timeout(this.answerWithinMs)
       .emitWithAck('values', message)
-      .catch(() => undefined)
-      .finally(() => (socket.data.busy = false));
+      .then(
+        () => (socket.data.busy = false),
+        // Not disconnect(): that would tell the page not to come back.
+        () => socket.conn.close(),
+      );
   }
 
   @OnEvent('alert.changed')

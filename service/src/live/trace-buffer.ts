@@ -13,8 +13,8 @@ export interface TraceMessage {
   output: number[];
 }
 
-/** Points a second that a live chart gets at most. */
-const POINTS_PER_SECOND = 200;
+/** Points a second of a live chart that does not say how many it can show, and the bounds of what it may ask for. */
+export const TRACE_RATE = { usual: 200, least: 10, most: 1_000 };
 /** A page that does not fetch for this long, s, loses what is older. */
 const KEEP_SECONDS = 5;
 
@@ -25,9 +25,16 @@ const KEEP_SECONDS = 5;
 export class TraceBuffer {
   private points: [time: number, target: number, position: number, output: number][] = [];
   private readonly stretch: number;
+  private readonly most: number;
 
-  constructor(private readonly facts: { id: number; resolution: number; sampleTime: number }) {
-    this.stretch = Math.max(1, Math.round(2 / (POINTS_PER_SECOND * facts.sampleTime)));
+  /** @param rate points a second that the chart can show: two a pixel, a least and a largest */
+  constructor(
+    private readonly facts: { id: number; resolution: number; sampleTime: number },
+    rate = TRACE_RATE.usual,
+  ) {
+    const bounded = Math.min(TRACE_RATE.most, Math.max(TRACE_RATE.least, rate));
+    this.stretch = Math.max(1, Math.ceil(2 / (bounded * facts.sampleTime)));
+    this.most = bounded * KEEP_SECONDS;
   }
 
   push({ target, position, output, startUs, sampleTimeUs }: FrameBlock): void {
@@ -52,8 +59,7 @@ export class TraceBuffer {
       keep(Math.min(least, most));
       if (least !== most) keep(Math.max(least, most));
     }
-    const most = POINTS_PER_SECOND * KEEP_SECONDS;
-    if (this.points.length > most) this.points = this.points.slice(-most);
+    if (this.points.length > this.most) this.points = this.points.slice(-this.most);
   }
 
   take(): TraceMessage | null {

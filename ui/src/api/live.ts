@@ -45,6 +45,8 @@ export interface Watch {
   fleet?: boolean;
   axes?: number[];
   trace?: number;
+  /** Points a second that the trace's chart can show. */
+  traceRate?: number;
 }
 
 /** Whether values arrive, and when the last ones did. */

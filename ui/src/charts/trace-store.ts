@@ -4,6 +4,9 @@ import type { LiveTrace } from '../api/live';
 export const SPAN = 20;
 const MOST_POINTS = 6_000;
 
+/** Points a second that a trace as wide as the window can show: two a pixel, the least and the largest. */
+export const traceRate = (): number => Math.min(MOST_POINTS, 2 * window.innerWidth) / SPAN;
+
 export type TraceRows = [
   time: number[],
   target: number[],

@@ -6,7 +6,7 @@ import { useLiveValues, type LiveTile } from '../../api/live';
 import { DriftPlot } from '../../charts/drift-plot';
 import { HistoryChart, type HistoryPoint } from '../../charts/history-chart';
 import { LiveTraceChart } from '../../charts/live-trace';
-import { TraceStore } from '../../charts/trace-store';
+import { TraceStore, traceRate } from '../../charts/trace-store';
 import { Card } from '../../components/card';
 import { ErrorState, Waiting } from '../../components/notices';
 import { Quantity, significant } from '../../components/quantity';
@@ -37,7 +37,7 @@ function AxisView({ axis }: { axis: Axis }) {
   const [tile, setTile] = useState<LiveTile | null>(null);
   const [store] = useState(() => new TraceStore());
   useLiveValues(
-    useMemo(() => ({ axes: [axis.id], trace: axis.id }), [axis.id]),
+    useMemo(() => ({ axes: [axis.id], trace: axis.id, traceRate: traceRate() }), [axis.id]),
     useCallback(
       ({ tiles, trace }) => {
         const own = tiles.find(({ id }) => id === axis.id);
