@@ -70,6 +70,10 @@ const OLD_AFTER: Record<Changed['what'], string[]> = {
   person: ['people'],
 };
 
+/** How long further changes are waited for before a query is asked again, ms: the list of a whole fleet is long, and a
+ * tile's state comes with the live values anyway. */
+const SETTLES_MS: Record<string, number> = { axes: 2_000 };
+
 function setStatus(next: Partial<LiveStatus>): void {
   status = { ...status, ...next };
   for (const listener of statusListeners) listener();
@@ -102,12 +106,14 @@ function connect(): void {
   });
   const pending = new Set<string>();
   socket.on('changed', ({ what }: Changed) => {
-    if (pending.size === 0)
+    for (const key of OLD_AFTER[what]) {
+      if (pending.has(key)) continue;
+      pending.add(key);
       setTimeout(() => {
-        for (const key of pending) void queryClient.invalidateQueries({ queryKey: [key] });
-        pending.clear();
-      }, 250);
-    for (const key of OLD_AFTER[what]) pending.add(key);
+        pending.delete(key);
+        void queryClient.invalidateQueries({ queryKey: [key] });
+      }, SETTLES_MS[key] ?? 250);
+    }
   });
 }
 
