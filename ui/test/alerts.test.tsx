@@ -5,40 +5,8 @@ import type { Role } from '../src/api/policy';
 import { edgeOf } from '../src/features/alerts/alert-card';
 import type { Alert } from '../src/features/alerts/alerts-api';
 import { Component as AlertsPage } from '../src/features/alerts/alerts-page';
+import { alertOf, RAISED } from './alert-of';
 import { ADA, refusal, showPage, serviceOfTests } from './show-page';
-
-const RAISED = new Date(Date.now() - 12 * 60_000).toISOString();
-
-const alertOf = (differs: Partial<Alert>): Alert => ({
-  id: 7,
-  siteId: 1,
-  siteName: 'Tile Hall',
-  timeZone: 'Europe/London',
-  machineName: 'Tile press',
-  axisId: 3,
-  axisTag: 'PR-01 ram',
-  axisName: 'Press ram',
-  rule: 'output-saturation',
-  title: 'output at its limit',
-  priority: 'high',
-  state: 'unacknowledged',
-  raisedAt: RAISED,
-  acknowledgedAt: null,
-  acknowledgedBy: null,
-  returnedAt: null,
-  shelvedUntil: null,
-  shelvedBy: null,
-  shelveReason: null,
-  value: 18.4,
-  threshold: 5,
-  unit: '%',
-  message: 'Output at its limit for 18.4 % of moving time, allowed 5 %',
-  action: 'check supply pressure at the press manifold',
-  nextStepAt: null,
-  proposalId: null,
-  events: [],
-  ...differs,
-});
 
 const service = serviceOfTests();
 const listed = (...alerts: Alert[]): void => service.current.list('/api/v1/alerts', alerts);

@@ -9,6 +9,7 @@ export const queryClient = new QueryClient({
       retry: (failures, error) => failures < 2 && !(error instanceof Problem && error.status < 500),
       refetchOnWindowFocus: true,
     },
-    mutations: { retry: false },
+    // Sent at once, connection or not: what cannot go out says so instead of waiting unseen.
+    mutations: { retry: false, networkMode: 'always' },
   },
 });

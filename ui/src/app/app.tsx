@@ -3,6 +3,7 @@ import { Notifications } from '@mantine/notifications';
 import { QueryClientProvider } from '@tanstack/react-query';
 import { useEffect } from 'react';
 import { RouterProvider } from 'react-router-dom';
+import { sendKept } from '../api/kept-acknowledgements';
 import { followSession } from '../api/live';
 import { queryClient } from '../api/query-client';
 import { refreshSession, signedOut } from '../api/session';
@@ -12,7 +13,12 @@ import { router } from './router';
 export function App() {
   useEffect(() => {
     refreshSession().catch(signedOut);
-    return followSession();
+    const unfollow = followSession();
+    const stopSending = sendKept();
+    return () => {
+      unfollow();
+      stopSending();
+    };
   }, []);
   return (
     <MantineProvider theme={theme} cssVariablesResolver={cssVariables} defaultColorScheme="auto">

@@ -2,6 +2,7 @@ import { Button } from '@mantine/core';
 import { useMutation } from '@tanstack/react-query';
 import { useState } from 'react';
 import { Link } from 'react-router-dom';
+import { useKept } from '../../api/kept-acknowledgements';
 import { may } from '../../api/policy';
 import { useSession } from '../../api/use-session';
 import { SiteTime } from '../../components/site-time';
@@ -32,6 +33,7 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
   const [shelving, setShelving] = useState(false);
   const take = useMutation({ mutationFn: () => acknowledge(alert.id) });
   const unshelving = useMutation({ mutationFn: () => unshelve(alert.id) });
+  const kept = useKept(alert.id);
   const edge = edgeOf(alert);
   const told = alert.events.filter(
     ({ at, action }) => (action === 'told' || action === 'nobody on call') && at >= alert.raisedAt,
@@ -97,13 +99,18 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
           ))}
         </ul>
       )}
+      {kept && (
+        <p role="status" style={{ fontWeight: 560 }}>
+          Your acknowledgement is kept here and goes out when the connection is back.
+        </p>
+      )}
       {refusal && (
         <p role="alert" className={classes.refusal}>
           {refusal.message}
         </p>
       )}
       <div className={classes.actions}>
-        {allowed && acknowledgeable && (
+        {allowed && acknowledgeable && !kept && (
           <Button size="lg" loading={take.isPending} onClick={() => take.mutate()}>
             Acknowledge
           </Button>

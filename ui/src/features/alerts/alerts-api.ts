@@ -1,5 +1,6 @@
 import { infiniteQueryOptions, queryOptions } from '@tanstack/react-query';
 import { answer, client, type Schemas } from '../../api/client';
+import { sendOrKeep } from '../../api/kept-acknowledgements';
 import { queryClient } from '../../api/query-client';
 
 export type Alert = Schemas['AlertDto'];
@@ -54,8 +55,13 @@ async function changed(request: Promise<Alert>): Promise<Alert> {
   }
 }
 
-export const acknowledge = (id: number) =>
-  changed(answer(client.POST('/api/v1/alerts/{id}/acknowledge', { params: { path: { id } }, body: {} })));
+/** Acknowledges; without a connection it is kept, answers null, and goes out by itself later. */
+export async function acknowledge(id: number): Promise<Alert | null> {
+  const sent = sendOrKeep(id);
+  const keptHere = (await sent.catch(() => undefined)) === null;
+  // Without a connection nothing can be asked for again either.
+  return keptHere ? null : changed(sent as Promise<Alert>);
+}
 
 export const shelve = (id: number, until: Date, reason: string) =>
   changed(

@@ -59,8 +59,8 @@ export function Component() {
 }
 
 function Open({ siteId }: { siteId: number | undefined }) {
-  const { data, error, isPending, refetch } = useQuery(openAlertsQuery(siteId));
-  const { connected } = useLiveStatus();
+  const { data, error, isPending, refetch, dataUpdatedAt } = useQuery(openAlertsQuery(siteId));
+  const { connected, lastAt } = useLiveStatus();
   if (error && !data) return <ErrorState error={error} what="The alerts" onRetry={() => void refetch()} />;
   if (isPending) return <Waiting heights={[24, 220, 220]} />;
   const waiting = data.items.filter(
@@ -75,6 +75,9 @@ function Open({ siteId }: { siteId: number | undefined }) {
           {taken} acknowledged
         </span>
         {connected && ' · live'}
+        {!connected && lastAt && (
+          <b style={{ color: 'var(--out)' }}> · no connection, last update {clock(dataUpdatedAt)}</b>
+        )}
       </p>
       {data.items.length === 0 ? (
         <EmptyState title="Nothing needs you">
@@ -90,6 +93,10 @@ function Open({ siteId }: { siteId: number | undefined }) {
     </>
   );
 }
+
+/** On the reader's own clock, such as 14:03. */
+const clock = (at: number): string =>
+  new Date(at).toLocaleTimeString('en-GB', { hour: '2-digit', minute: '2-digit' });
 
 function Past({ siteId }: { siteId: number | undefined }) {
   const { data, error, isPending, refetch, hasNextPage, fetchNextPage, isFetchingNextPage } =
