@@ -17,6 +17,17 @@ export interface Settings {
   /** The demo's mail inbox, shown by the page; null without one. */
   MAIL_INBOX_URL: string | null;
   JWT_SECRET: string;
+  /** The account that sends SMS; null: none is sent. */
+  SMS: SmsSettings | null;
+}
+
+export interface SmsSettings {
+  accountSid: string;
+  authToken: string;
+  /** The number that they come from, ITU-T E.164. */
+  from: string;
+  /** Where the interface is, when not at Twilio's own address. */
+  apiUrl: string | null;
 }
 
 export class SettingsError extends Error {}
@@ -52,6 +63,7 @@ export function readSettings(env: NodeJS.ProcessEnv): Settings {
     MAIL_FROM: env.MAIL_FROM ?? 'Polewright <polewright@tarnwick.example>',
     MAIL_INBOX_URL: demo ? (env.MAIL_INBOX_URL ?? 'http://127.0.0.1:4603') : null,
     JWT_SECRET: env.JWT_SECRET ?? secretOf(dataDir),
+    SMS: smsOf(env),
   };
 }
 
@@ -60,6 +72,17 @@ function makeFolder(path: string): void {
   if (existsSync(path)) return;
   makeFolder(dirname(path));
   mkdirSync(path);
+}
+
+/** SMS is on when all three of the account's values are there, and wrong when only some are. */
+function smsOf(env: NodeJS.ProcessEnv): SmsSettings | null {
+  const { SMS_ACCOUNT_SID: accountSid, SMS_AUTH_TOKEN: authToken, SMS_FROM: from } = env;
+  if (!accountSid && !authToken && !from) return null;
+  if (!accountSid?.startsWith('AC') || !authToken || !/^\+[1-9]\d{6,14}$/.test(from ?? ''))
+    throw new SettingsError(
+      'SMS needs SMS_ACCOUNT_SID (it begins with AC), SMS_AUTH_TOKEN and SMS_FROM (a number such as +441632960123), or none of them.',
+    );
+  return { accountSid, authToken, from: from!, apiUrl: env.SMS_API_URL ?? null };
 }
 
 /** The signing secret of this installation, made at the first start and kept beside the database. */

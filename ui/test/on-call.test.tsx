@@ -4,6 +4,7 @@ import axe from 'axe-core';
 import { describe, expect, test } from 'vitest';
 import type { Schemas } from '../src/api/client';
 import { Component as AcknowledgePage } from '../src/features/alerts/acknowledge-page';
+import { Component as ProfilePage } from '../src/features/auth/profile-page';
 import { Component as HandOverPage } from '../src/features/on-call/hand-over-page';
 import { Component as RatesPage } from '../src/features/on-call/rates-page';
 import { refusal, serviceOfTests, showPage } from './show-page';
@@ -175,4 +176,55 @@ test('the rates stand beside the published figures, and the chart can be read by
   await userEvent.click(screen.getByText('The same as a table'));
   expect(await screen.findByRole('region', { name: 'Table of Alerts' })).toHaveTextContent('30 Nov320');
   expect(await violations()).toEqual([]);
+});
+
+describe('how one is told', () => {
+  const choices: Schemas['ChoicesDto'] = {
+    dailyDigest: true,
+    phone: null,
+    smsAlerts: false,
+    smsOffered: true,
+    pushKey: 'key',
+    subscriptions: [
+      { id: 4, endpoint: 'https://push.example/a', browser: 'Firefox on Android', createdAt: at(-1) },
+    ],
+  };
+  const show = (differs: Partial<typeof choices>, role: 'engineer' | 'technician'): void => {
+    service.current.on('GET /api/v1/notification-choices', () => ({
+      status: 200,
+      body: { ...choices, ...differs },
+    }));
+    showPage(ProfilePage, '/profile', role);
+  };
+
+  test('SMS wants a number; what is chosen is saved', async () => {
+    show({}, 'engineer');
+    service.current.on('PUT /api/v1/notification-choices', () => ({ status: 200, body: choices }));
+    await userEvent.click(await screen.findByLabelText('Alerts also by SMS'));
+    await userEvent.click(screen.getByRole('button', { name: 'Save my choices' }));
+    expect(await screen.findByText('A number such as +44 1632 960123')).toBeInTheDocument();
+    await userEvent.type(screen.getByLabelText('Phone number'), '+44 1632 960123');
+    await userEvent.click(screen.getByLabelText(/One mail each morning/));
+    await userEvent.click(screen.getByRole('button', { name: 'Save my choices' }));
+    expect(await screen.findByText('Your choices are saved.')).toBeInTheDocument();
+    expect(service.current.bodies('PUT /api/v1/notification-choices')).toEqual([
+      { dailyDigest: false, smsAlerts: true, phone: '+441632960123' },
+    ]);
+    expect(await violations()).toEqual([]);
+  });
+
+  test('a browser is taken off the list; a browser that cannot says so; no SMS where none is offered', async () => {
+    show({ smsOffered: false }, 'technician');
+    service.current.on('DELETE /api/v1/notification-choices/browsers/4', () => {
+      service.current.on('GET /api/v1/notification-choices', () => ({
+        status: 200,
+        body: { ...choices, smsOffered: false, subscriptions: [] },
+      }));
+      return { status: 204 };
+    });
+    await userEvent.click(await screen.findByRole('button', { name: /off for Firefox on Android/ }));
+    await waitFor(() => expect(screen.queryByText('Firefox on Android')).toBeNull());
+    expect(screen.getByText(/cannot show push messages/)).toBeInTheDocument();
+    expect(screen.queryByLabelText('Alerts also by SMS')).toBeNull();
+  });
 });

@@ -7,10 +7,12 @@ import { RecentSeconds } from '../indicators/recent-seconds.js';
 import { AcknowledgeLinksService } from '../notifications/acknowledge-links.service.js';
 import { axisPicture } from '../notifications/axis-picture.js';
 import { MailOutboxService } from '../notifications/mail-outbox.service.js';
+import { QuickNoticesService } from '../notifications/quick-notices.service.js';
 import type { Settings } from '../settings.js';
 import { IntakeService } from '../telemetry/intake.service.js';
 import { alertMail } from './alert-mail.js';
 import type { Alert } from './alert.entity.js';
+import { RULE_TITLES } from './rules.js';
 
 /** Who is told. */
 export interface Told {
@@ -24,6 +26,7 @@ export interface Told {
 export class AlertNoticesService {
   constructor(
     private readonly outbox: MailOutboxService,
+    private readonly quick: QuickNoticesService,
     private readonly links: AcknowledgeLinksService,
     private readonly recent: RecentSeconds,
     private readonly intake: IntakeService,
@@ -34,7 +37,7 @@ export class AlertNoticesService {
    * Writes what is to go out, in the unit of work of the step that tells.
    *
    * @param alert with its axis, machine and site
-   * @returns the ways in words, such as "mail"
+   * @returns the ways in words, such as "mail, push"
    */
   async tell(manager: EntityManager, alert: Alert, person: Told, step: number, at: Date): Promise<string> {
     const key = `alert ${alert.id} raised ${alert.raisedAt.getTime()} step ${step}`;
@@ -48,7 +51,19 @@ export class AlertNoticesService {
       picture: this.pictureOf(alert.axis),
       ...alertMail(alert, step, publicUrl, acknowledgeUrl),
     });
-    return 'mail';
+    const quick = await this.quick.tell(
+      manager,
+      {
+        key,
+        userId: person.userId,
+        title: `${alert.axis.tag}: ${RULE_TITLES[alert.rule]}`,
+        body: `${alert.message} Do: ${alert.action}`,
+        alertId: alert.id,
+        siteId: alert.siteId,
+      },
+      at,
+    );
+    return ['mail', ...quick].join(', ');
   }
 
   private pictureOf(axis: Axis): { svg: string; text: string } {

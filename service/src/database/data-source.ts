@@ -15,6 +15,7 @@ import { MoveRecord } from '../indicators/move-record.entity.js';
 import { PlantEstimateRow } from '../indicators/plant-estimate.entity.js';
 import { AcknowledgeLink } from '../notifications/acknowledge-link.entity.js';
 import { Mail } from '../notifications/mail.entity.js';
+import { PushSubscription } from '../notifications/push-subscription.entity.js';
 import { Invitation } from '../people/invitation.entity.js';
 import { UserRole } from '../people/user-role.entity.js';
 import { User } from '../people/user.entity.js';
@@ -38,6 +39,7 @@ import { ProposalVersions1764637000200 } from './migrations/1764637000200-propos
 import { RotaLayers1764738000100 } from './migrations/1764738000100-rota-layers.js';
 import { OutboxAttempts1764738000200 } from './migrations/1764738000200-outbox-attempts.js';
 import { Storage1764737500100 } from './migrations/1764737500100-storage.js';
+import { NotificationChoices1764738000300 } from './migrations/1764738000300-notification-choices.js';
 
 export const ENTITIES = [
   Site,
@@ -70,6 +72,7 @@ export const ENTITIES = [
   HandoverNote,
   Mail,
   AcknowledgeLink,
+  PushSubscription,
   Capture,
   RetentionSetting,
   StorageMeasurement,
@@ -104,6 +107,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       RotaLayers1764738000100,
       OutboxAttempts1764738000200,
       Storage1764737500100,
+      NotificationChoices1764738000300,
     ],
     migrationsRun: true,
     synchronize: false,

@@ -5,11 +5,13 @@ import { AuditService } from '../audit/audit.service.js';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
 import { Transactions } from '../database/transactions.js';
 import { User } from '../people/user.entity.js';
-import { Mail, type MailState } from './mail.entity.js';
+import { Mail, type Channel, type MailState } from './mail.entity.js';
 
 export interface OutgoingMail {
   /** What the mail is about, once: a second mail with the same key is dropped. */
   key: string;
+  /** "mail" where not given. */
+  channel?: Channel;
   to: string;
   subject: string;
   text: string;
@@ -46,6 +48,7 @@ export class MailOutboxService {
       .into(Mail)
       .values({
         key: mail.key,
+        channel: mail.channel ?? 'mail',
         to: mail.to,
         subject: mail.subject,
         text: mail.text,

@@ -9,6 +9,8 @@ import type { Settings } from '../settings.js';
 import { Refused, Uncertain, type ChannelSender } from './channels.js';
 import { groupFlood } from './mail-grouping.js';
 import { Mail, type Channel } from './mail.entity.js';
+import { WebPush } from './push.js';
+import { Sms } from './sms.js';
 import { Smtp } from './smtp.js';
 
 /** Messages that are sent at once. */
@@ -35,7 +37,7 @@ export const retryDelay = (attempts: number): number =>
 @Injectable()
 export class MailSenderService implements OnApplicationShutdown {
   private readonly log = new Logger('Mail');
-  private readonly channels: Partial<Record<Channel, ChannelSender>>;
+  private readonly channels: Record<Channel, ChannelSender>;
   private readonly publicUrl: string;
   private running: Promise<void> | null = null;
   private stopped = false;
@@ -45,9 +47,11 @@ export class MailSenderService implements OnApplicationShutdown {
     @InjectRepository(Mail) private readonly mails: Repository<Mail>,
     private readonly transactions: Transactions,
     smtp: Smtp,
+    push: WebPush,
+    sms: Sms,
     config: ConfigService<Settings, true>,
   ) {
-    this.channels = { mail: smtp };
+    this.channels = { mail: smtp, push, sms };
     this.publicUrl = config.get('PUBLIC_URL', { infer: true });
   }
 
@@ -100,9 +104,7 @@ export class MailSenderService implements OnApplicationShutdown {
     const attempts = mail.attempts + 1;
     let outcome: Partial<Mail>;
     try {
-      const channel = this.channels[mail.channel];
-      if (!channel) throw new Refused(`There is no way out by ${mail.channel} here`);
-      await channel.send(mail);
+      await this.channels[mail.channel].send(mail);
       outcome = { state: 'sent', sentAt: new Date(), error: null };
     } catch (error) {
       const gaveUp = attempts >= MAX_ATTEMPTS || error instanceof Refused;

@@ -4,6 +4,7 @@ import { AuthModule } from '../auth/auth.module.js';
 import { NotificationsModule } from '../notifications/notifications.module.js';
 import { RotaModule } from '../rota/rota.module.js';
 import { AcknowledgeController } from './acknowledge.controller.js';
+import { DigestService } from './digest.service.js';
 import { HandOverController } from './hand-over.controller.js';
 import { HandOverService } from './hand-over.service.js';
 import { LinkAcknowledgementService } from './link-acknowledgement.service.js';
@@ -13,6 +14,6 @@ import { RatesService } from './rates.service.js';
 @Module({
   imports: [AlertsModule, AuthModule, NotificationsModule, RotaModule],
   controllers: [AcknowledgeController, HandOverController],
-  providers: [LinkAcknowledgementService, HandOverService, RatesService],
+  providers: [LinkAcknowledgementService, HandOverService, RatesService, DigestService],
 })
 export class OnCallModule {}

@@ -29,6 +29,17 @@ export class User {
   @Column({ default: false })
   demo: boolean;
 
+  /** One mail each morning about the sites on which they are an engineer. */
+  @Column({ default: true })
+  dailyDigest: boolean;
+
+  /** For SMS, in the form of ITU-T E.164. */
+  @Column({ type: 'text', nullable: true })
+  phone: string | null;
+
+  @Column({ default: false })
+  smsAlerts: boolean;
+
   @Column({ type: 'datetime', nullable: true })
   lastSignInAt: Date | null;
 

@@ -13,6 +13,8 @@ import { MailOutboxService, type OutgoingMail } from '../../src/notifications/ma
 import { MAX_ATTEMPTS, MailSenderService, retryDelay } from '../../src/notifications/mail-sender.service.js';
 import { composeMail, PICTURE_CID } from '../../src/notifications/mail-text.js';
 import { Mail } from '../../src/notifications/mail.entity.js';
+import { WebPush } from '../../src/notifications/push.js';
+import { Sms } from '../../src/notifications/sms.js';
 import { Smtp } from '../../src/notifications/smtp.js';
 import type { Settings } from '../../src/settings.js';
 import { addPerson, startPeople, type PeopleApp } from '../people/people-app.js';
@@ -133,6 +135,8 @@ describe('outbox', () => {
       mails,
       new Transactions(dataSource),
       people.app.get(Smtp),
+      people.app.get(WebPush),
+      people.app.get(Sms),
       config as ConfigService<Settings, true>,
     );
     await sender.tick();

@@ -1,8 +1,10 @@
 import request from 'supertest';
+import { Like } from 'typeorm';
 import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from 'vitest';
 import { Alert, AlertEvent } from '../../src/alerts/alert.entity.js';
 import { EscalationService } from '../../src/alerts/escalation.service.js';
 import { Axis } from '../../src/fleet/axis.entity.js';
+import { DigestService } from '../../src/on-call/digest.service.js';
 import { AcknowledgeLink } from '../../src/notifications/acknowledge-link.entity.js';
 import { Mail } from '../../src/notifications/mail.entity.js';
 import { UserRole } from '../../src/people/user-role.entity.js';
@@ -231,5 +233,31 @@ describe('the rates', () => {
     expect(body.published).toMatchObject({ acceptablePerDay: 150, manageablePerDay: 300, floodAlerts: 10 });
     await viewer.get(`/api/v1/on-call/rates?siteId=${axis.siteId}&days=0`).expect(400);
     await viewer.get('/api/v1/on-call/rates?siteId=999').expect(404);
+  });
+});
+
+describe('the morning’s digest', () => {
+  it('goes once to the engineers of a site at seven on its clock, and to nobody who switched it off', async () => {
+    vi.restoreAllMocks();
+    await toldAlert();
+    const digest = service.app.get(DigestService);
+    const mails = () =>
+      service.dataSource
+        .getRepository(Mail)
+        .find({ where: { key: Like(`digest ${axis.siteId} %`) }, order: { to: 'ASC' } });
+    // A day on which the site is not new: London is an hour before UTC's eight in summer.
+    const day = '2031-07-01T';
+    await digest.sendDue(new Date(`${day}05:59:00Z`));
+    expect(await mails()).toEqual([]);
+    const users = service.dataSource.getRepository(User);
+    await users.update({ email: 'saskia.thornby@tarnwick.example' }, { dailyDigest: false });
+    await digest.sendDue(new Date(`${day}06:00:30Z`));
+    await digest.sendDue(new Date(`${day}06:01:30Z`));
+    const sent = await mails();
+    expect(sent.map(({ to }) => to)).toEqual(['approver@tarnwick.example', 'engineer@tarnwick.example']);
+    expect(sent[0]!.text).toContain('Alerts: 1 open');
+    expect(sent[0]!.text).toContain(`${axis.tag}: following error beyond tolerance, unacknowledged`);
+    await digest.sendDue(new Date('2031-07-02T12:00:00Z'));
+    expect(await mails()).toHaveLength(2);
   });
 });

@@ -58,6 +58,7 @@ export async function startPeople(
     MAIL_FROM: 'Polewright <polewright@tarnwick.example>',
     MAIL_INBOX_URL: null,
     JWT_SECRET: 'a secret of this test only',
+    SMS: null,
     ...changed,
   };
   const module = await Test.createTestingModule({

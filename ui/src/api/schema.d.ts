@@ -1310,6 +1310,54 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/notification-choices": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["ChoicesController_get"];
+        put: operations["ChoicesController_set"];
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/notification-choices/browsers": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["ChoicesController_subscribe"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/notification-choices/browsers/{id}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post?: never;
+        delete: operations["ChoicesController_unsubscribe"];
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/acknowledge/{token}": {
         parameters: {
             query?: never;
@@ -3008,6 +3056,47 @@ export interface components {
         };
         DemoInboxDto: {
             items: components["schemas"]["DemoMessageDto"][];
+        };
+        SubscriptionDto: {
+            id: number;
+            endpoint: string;
+            /** @example Firefox on Android */
+            browser: string;
+            /** Format: date-time */
+            createdAt: string;
+        };
+        ChoicesDto: {
+            /** @description One mail each morning about the sites on which one is an engineer */
+            dailyDigest: boolean;
+            /** @description For SMS, in the form of ITU-T E.164: +441632960123 */
+            phone: string | null;
+            /** @description Alerts also by SMS, where the installation offers it */
+            smsAlerts: boolean;
+            /** @description Whether this installation sends SMS */
+            smsOffered: boolean;
+            /** @description What a browser needs to subscribe to push messages (RFC 8292) */
+            pushKey: string;
+            /** @description Browsers that show push messages */
+            subscriptions: components["schemas"]["SubscriptionDto"][];
+        };
+        SetChoicesDto: {
+            /** @description One mail each morning about the sites on which one is an engineer */
+            dailyDigest: boolean;
+            /** @description For SMS, in the form of ITU-T E.164: +441632960123 */
+            phone: string | null;
+            /** @description Alerts also by SMS, where the installation offers it */
+            smsAlerts: boolean;
+        };
+        SubscriptionKeysDto: {
+            p256dh: string;
+            auth: string;
+        };
+        SubscribeDto: {
+            /** @description Where the browser's maker takes messages for it */
+            endpoint: string;
+            keys: components["schemas"]["SubscriptionKeysDto"];
+            /** @example Firefox on Android */
+            browser: string;
         };
         AcknowledgeLinkDto: {
             /**
@@ -5793,6 +5882,90 @@ export interface operations {
                 content: {
                     "application/json": components["schemas"]["DemoInboxDto"];
                 };
+            };
+        };
+    };
+    ChoicesController_get: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ChoicesDto"];
+                };
+            };
+        };
+    };
+    ChoicesController_set: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["SetChoicesDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ChoicesDto"];
+                };
+            };
+        };
+    };
+    ChoicesController_subscribe: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["SubscribeDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ChoicesDto"];
+                };
+            };
+        };
+    };
+    ChoicesController_unsubscribe: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            204: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content?: never;
             };
         };
     };

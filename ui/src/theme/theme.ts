@@ -35,11 +35,13 @@ export const theme = createTheme({
   headings: { fontFamily: "'Work Sans Variable', 'Work Sans', system-ui, sans-serif", fontWeight: '620' },
   colors: { verdigris, dark },
   primaryColor: 'verdigris',
-  // The same in both schemes: white on it has 5.6:1, and it has 3.1:1 on the dark ground.
-  primaryShade: 6,
+  primaryShade: { light: 6, dark: 4 },
   defaultRadius: 4,
   cursorType: 'pointer',
   respectReducedMotion: true,
+  autoContrast: true,
+  // Dark letters on the dark scheme's lighter verdigris: white would have 3.2:1 there.
+  luminanceThreshold: 0.22,
 });
 
 /** Our colours by meaning, for both schemes, and Mantine's own grounds set to them. */

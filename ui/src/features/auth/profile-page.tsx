@@ -6,6 +6,7 @@ import { sitesQuery } from '../../api/sites';
 import { answer, client } from '../../api/client';
 import { useSession } from '../../api/use-session';
 import { Card } from '../../components/card';
+import { ChoicesCard } from '../notifications/choices-card';
 
 const LEAST_LENGTH = 10;
 
@@ -41,6 +42,7 @@ export function Component() {
           </div>
         ))}
       </Card>
+      <ChoicesCard />
       <Card title="Change your password">
         <form onSubmit={form.onSubmit((values) => change.mutate(values))}>
           <PasswordInput

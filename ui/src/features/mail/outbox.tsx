@@ -60,7 +60,7 @@ export function Outbox() {
                   <td className="nowrap">
                     <SiteTime at={mail.createdAt} timeZone={OWN_ZONE} />
                   </td>
-                  <td>{mail.to}</td>
+                  <td>{mail.channel === 'mail' ? mail.to : `${mail.channel} ${mail.to}`}</td>
                   <td>
                     {mail.alertId === null ? (
                       mail.subject
