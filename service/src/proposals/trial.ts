@@ -1,3 +1,4 @@
+import type { Interval } from '../identification/plant-estimate.js';
 import type { RecordedMove } from '../indicators/move-recorder.js';
 
 /** A figure of the same kind of moves before and after new gains: medians, and whether they differ. */
@@ -9,6 +10,8 @@ export interface ComparedFigure {
   pWorse: number;
   /** One-sided p that "after" is no smaller; small means better. */
   pBetter: number;
+  /** By how much with its 95 % interval: % of before; of a figure in %, points. Trials before 2026-12 lack it. */
+  change?: Interval;
 }
 
 export interface TrialResult {
@@ -38,7 +41,7 @@ const LEAST_CHANGE = 0.05;
  * Each move after the change is matched with the kind (distance, direction, duration) that it shares with at least
  * one move before; peak and RMS error are divided by the median of their kind before, so that kinds pool. Whether the
  * two samples differ is judged by the Wilcoxon–Mann–Whitney rank test (normal approximation with ties corrected;
- * Wilcoxon 1945, Mann & Whitney 1947).
+ * Wilcoxon 1945, Mann & Whitney 1947), by how much by `shiftBetween`, of errors in their logarithms.
  */
 export function compareMoves(
   before: readonly RecordedMove[],
@@ -72,6 +75,7 @@ export function compareMoves(
           : median(pairs.after.map(({ move }) => figure(move))),
       pWorse: pGreater,
       pBetter: pLess,
+      ...(relative ? inPerCent(a, b) : { change: shiftBetween(a, b) }),
     };
   };
   const peak = compare((move) => move.peakError, true);
@@ -83,6 +87,9 @@ export function compareMoves(
     (saturated.pWorse < LEVEL && saturated.after > saturated.before + 1);
   const better = changed && peak.after < peak.before && peak.pBetter < LEVEL;
   const verdict = worse ? 'worse' : better ? 'better' : 'no different';
+  const range = peak.change
+    ? ` (${signed(peak.change.value)} %, with 95 % confidence between ${signed(peak.change.low)} and ${signed(peak.change.high)} %)`
+    : '';
   const mm = (value: number): string => (value < 0.1 ? value.toFixed(3) : value.toFixed(2));
   return {
     ...base,
@@ -90,7 +97,7 @@ export function compareMoves(
     rmsFollowingError: rms,
     saturatedPct: saturated,
     verdict,
-    sentence: `Median peak following error of the same moves ${mm(peak.before)} → ${mm(peak.after)} mm over ${pairs.before.length} moves before and ${pairs.after.length} after: ${verdict}.`,
+    sentence: `Median peak following error of the same moves ${mm(peak.before)} → ${mm(peak.after)} mm${range} over ${pairs.before.length} moves before and ${pairs.after.length} after: ${verdict}.`,
   };
 }
 
@@ -124,6 +131,34 @@ export function median(values: readonly number[]): number {
   const sorted = [...values].sort((a, b) => a - b);
   const middle = sorted.length >> 1;
   return sorted.length % 2 === 1 ? sorted[middle]! : (sorted[middle - 1]! + sorted[middle]!) / 2;
+}
+
+const signed = (percent: number): string =>
+  `${percent < -0.5 ? '−' : percent >= 0.5 ? '+' : ''}${Math.abs(percent).toFixed(0)}`;
+
+/** The shift of logarithms as a change in %; none where a value is 0. */
+function inPerCent(a: readonly number[], b: readonly number[]): { change?: Interval } {
+  if ([...a, ...b].some((value) => !(value > 0))) return {};
+  const { value, low, high } = shiftBetween(a.map(Math.log), b.map(Math.log));
+  const percent = (ln: number): number => 100 * Math.expm1(ln);
+  return { change: { value: percent(value), low: percent(low), high: percent(high) } };
+}
+
+/**
+ * By how much b lies above a: the median of all n_a·n_b differences with its 95 % interval from their order
+ * statistics, those at n_a·n_b/2 ∓ 1.96·√(n_a·n_b·(n_a + n_b + 1)/12) (J. L. Hodges & E. L. Lehmann 1963; the
+ * approximation as in M. Hollander & D. A. Wolfe, Nonparametric Statistical Methods, from memory).
+ */
+export function shiftBetween(a: readonly number[], b: readonly number[]): Interval {
+  const differences = Float64Array.from(a.flatMap((before) => b.map((after) => after - before))).sort();
+  const pairs = differences.length;
+  const reach = 1.959964 * Math.sqrt((pairs * (a.length + b.length + 1)) / 12);
+  const rank = Math.min(Math.max(Math.round(pairs / 2 - reach), 1), Math.ceil(pairs / 2));
+  return {
+    value: median([...differences]),
+    low: differences[rank - 1]!,
+    high: differences[pairs - rank]!,
+  };
 }
 
 /**

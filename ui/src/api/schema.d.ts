@@ -2479,6 +2479,8 @@ export interface components {
             pWorse: number;
             /** @description Rank test, one-sided: small means better */
             pBetter: number;
+            /** @description After against before, Hodges–Lehmann with its 95 % interval: % of before; of a figure in %, points */
+            change?: components["schemas"]["IntervalDto"];
         };
         TrialDto: {
             /** Format: date-time */

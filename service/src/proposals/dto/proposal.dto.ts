@@ -1,3 +1,4 @@
+import { IntervalDto } from '../../fleet/dto/axis-estimate.dto.js';
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Transform, Type } from 'class-transformer';
 import {
@@ -227,6 +228,13 @@ class ComparedDto {
 
   @ApiProperty({ description: 'Rank test, one-sided: small means better' })
   pBetter: number;
+
+  @ApiPropertyOptional({
+    type: IntervalDto,
+    description:
+      'After against before, Hodges–Lehmann with its 95 % interval: % of before; of a figure in %, points',
+  })
+  change?: IntervalDto;
 }
 
 class MovesDto {

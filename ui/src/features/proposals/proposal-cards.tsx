@@ -277,14 +277,14 @@ export function WhatBinds({ binding }: { binding: NonNullable<Proposal['binding'
 
 export function Trial({ trial }: { trial: NonNullable<Proposal['trial']> }) {
   const rows = [
-    ['peakFollowingError', 'peak following error, mm', 3],
-    ['rmsFollowingError', 'RMS following error, mm', 3],
-    ['saturatedPct', 'time at the limit, %', 1],
+    ['peakFollowingError', 'peak following error, mm', 3, '%'],
+    ['rmsFollowingError', 'RMS following error, mm', 3, '%'],
+    ['saturatedPct', 'time at the limit, %', 1, 'points'],
   ] as const;
   return (
     <Card
       title={`Trial: ${trial.verdict}`}
-      sub={`the same moves before (${trial.moves.before}) and after (${trial.moves.after}); medians, rank test`}
+      sub={`the same moves before (${trial.moves.before}) and after (${trial.moves.after}); medians, change with its 95 % interval, rank test`}
     >
       <p style={{ margin: '0 0 10px' }}>{trial.sentence}</p>
       {trial.peakFollowingError && (
@@ -294,12 +294,13 @@ export function Trial({ trial }: { trial: NonNullable<Proposal['trial']> }) {
               <th>Measured</th>
               <th>before</th>
               <th>after</th>
+              <th>change</th>
               <th>p better</th>
               <th>p worse</th>
             </tr>
           </thead>
           <tbody>
-            {rows.map(([name, label, digits]) => {
+            {rows.map(([name, label, digits, unit]) => {
               const figure = trial[name];
               return (
                 figure && (
@@ -309,6 +310,7 @@ export function Trial({ trial }: { trial: NonNullable<Proposal['trial']> }) {
                     <td>
                       <b style={{ fontWeight: 600 }}>{figure.after.toFixed(digits)}</b>
                     </td>
+                    <td>{figure.change ? changeText(figure.change, unit) : '–'}</td>
                     <td>{probability(figure.pBetter)}</td>
                     <td>{probability(figure.pWorse)}</td>
                   </tr>
@@ -321,6 +323,15 @@ export function Trial({ trial }: { trial: NonNullable<Proposal['trial']> }) {
     </Card>
   );
 }
+
+const changeText = ({ value, low, high }: { value: number; low: number; high: number }, unit: string) => {
+  const sign = (x: number): string =>
+    x
+      .toFixed(1)
+      .replace(/^-(0\.0)$/, '$1')
+      .replace('-', '−');
+  return `${sign(value)} (${sign(low)} … ${sign(high)}) ${unit}`;
+};
 
 const probability = (p: number): string => (p < 0.001 ? '< 0.001' : p.toFixed(3));
 
