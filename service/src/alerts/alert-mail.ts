@@ -1,8 +1,6 @@
+import { escapeHtml } from '../notifications/mail-text.js';
 import type { Alert } from './alert.entity.js';
 import { RULE_TITLES } from './rules.js';
-
-const escape = (text: string): string =>
-  text.replace(/[&<>"]/g, (c) => ({ '&': '&amp;', '<': '&lt;', '>': '&gt;', '"': '&quot;' })[c]!);
 
 /**
  * The mail about an alert that nobody has acknowledged: what, where, what to do, and the ways to acknowledge it.
@@ -37,13 +35,13 @@ export function alertMail(
     subject,
     text: `${lines.join('\n\n')}\n\nAcknowledge: ${acknowledgeUrl}\n\nOpen the alert: ${link}\n\n${safety}\n`,
     html: `<div style="font:16px/1.5 'Work Sans',Arial,sans-serif;color:#1C2733;max-width:560px">
-<h1 style="font-size:20px;margin:0 0 4px">${escape(axis.tag)}: ${escape(RULE_TITLES[alert.rule])}</h1>
-<p style="margin:0 0 14px;color:#5B6672">${escape(axis.name)}. ${escape(where)}</p>
-<p style="margin:0 0 10px"><strong>${escape(alert.message)}</strong></p>
-<p style="margin:0 0 10px">${escape(lines[2]!)}</p>
-<p style="margin:0 0 18px">${escape(lines[3]!)}</p>
-<p style="margin:0 0 14px"><a href="${escape(acknowledgeUrl)}" style="background:#1F7A6D;color:#fff;padding:12px 20px;border-radius:4px;text-decoration:none;font-weight:600">Acknowledge …</a></p>
-<p style="margin:0 0 18px"><a href="${escape(link)}">Open the alert</a></p>
-<p style="margin:0;color:#5B6672;font-size:13px">${escape(safety)}</p></div>`,
+<h1 style="font-size:20px;margin:0 0 4px">${escapeHtml(axis.tag)}: ${escapeHtml(RULE_TITLES[alert.rule])}</h1>
+<p style="margin:0 0 14px;color:#5B6672">${escapeHtml(axis.name)}. ${escapeHtml(where)}</p>
+<p style="margin:0 0 10px"><strong>${escapeHtml(alert.message)}</strong></p>
+<p style="margin:0 0 10px">${escapeHtml(lines[2]!)}</p>
+<p style="margin:0 0 18px">${escapeHtml(lines[3]!)}</p>
+<p style="margin:0 0 14px"><a href="${escapeHtml(acknowledgeUrl)}" style="background:#1F7A6D;color:#fff;padding:12px 20px;border-radius:4px;text-decoration:none;font-weight:600">Acknowledge …</a></p>
+<p style="margin:0 0 18px"><a href="${escapeHtml(link)}">Open the alert</a></p>
+<p style="margin:0;color:#5B6672;font-size:13px">${escapeHtml(safety)}</p></div>`,
   };
 }
