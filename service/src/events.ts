@@ -24,7 +24,7 @@ export interface Events {
   /** A gateway read gains back from a controller. */
   'gains.read-back': { axisId: number; revision: number; gains: Gains };
   /** A gateway has said hello and was answered with the running gains of these axes. */
-  'gateway.greeted': { axisIds: number[] };
+  'gateway.greeted': { gatewayId: number; axisIds: number[] };
   'tuning.applied': { axisId: number; siteId: number; revision: number };
   'axis.changed': { axisId: number; siteId: number };
   'axis.state-changed': { axisId: number; siteId: number };

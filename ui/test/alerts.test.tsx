@@ -4,6 +4,7 @@ import { describe, expect, test } from 'vitest';
 import type { Role } from '../src/api/policy';
 import { edgeOf } from '../src/features/alerts/alert-card';
 import type { Alert } from '../src/features/alerts/alerts-api';
+import { Component as AlertPage } from '../src/features/alerts/alert-page';
 import { Component as AlertsPage } from '../src/features/alerts/alerts-page';
 import { alertOf, RAISED } from './alert-of';
 import { ADA, refusal, showPage, serviceOfTests } from './show-page';
@@ -84,6 +85,42 @@ describe('the alerts page', () => {
     await userEvent.click(screen.getByRole('button', { name: 'Try again' }));
     expect(await screen.findByText('Unacknowledged, high')).toBeInTheDocument();
   });
+});
+
+test('marks, what happens otherwise and by when; out of service with a reason on the alert’s own page', async () => {
+  const alert = alertOf({
+    chattering: true,
+    stale: true,
+    levelUnknownSince: RAISED,
+    consequence: 'Parts are made out of tolerance.',
+    respondBy: RAISED,
+  });
+  const out = alertOf({
+    state: 'out-of-service',
+    outOfServiceBy: ADA.name,
+    outOfServiceReason: 'Encoder on order',
+  });
+  service.current.on('GET /api/v1/alerts/7', () => ({ status: 200, body: alert }));
+  service.current.on('POST /api/v1/alerts/7/take-out-of-service', () => {
+    service.current.on('GET /api/v1/alerts/7', () => ({ status: 200, body: out }));
+    return { status: 200, body: out };
+  });
+  showPage(AlertPage, '/alerts/7', 'engineer', '/alerts/:id');
+  const marks = await screen.findByRole('list', { name: 'Marks' });
+  expect(within(marks).getAllByRole('listitem')).toHaveLength(3);
+  expect(screen.getByText(/If nothing is done: Parts are made out of tolerance/)).toHaveTextContent(
+    'Respond by',
+  );
+  await userEvent.click(screen.getByRole('button', { name: 'Take out of service …' }));
+  const dialog = await screen.findByRole('dialog');
+  expect(within(dialog).getByRole('button', { name: 'Take it out of service' })).toBeDisabled();
+  await userEvent.type(within(dialog).getByLabelText(/^Reason/), 'Encoder on order');
+  await userEvent.click(within(dialog).getByRole('button', { name: 'Take it out of service' }));
+  expect(await screen.findByText(/by Ada Fenn: Encoder on order/)).toBeInTheDocument();
+  expect(screen.getByRole('button', { name: 'Return to service' })).toBeInTheDocument();
+  expect(service.current.bodies('POST /api/v1/alerts/7/take-out-of-service')).toEqual([
+    { reason: 'Encoder on order' },
+  ]);
 });
 
 describe('shelving', () => {

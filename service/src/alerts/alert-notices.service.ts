@@ -37,10 +37,20 @@ export class AlertNoticesService {
    * Writes what is to go out, in the unit of work of the step that tells.
    *
    * @param alert with its axis, machine and site
+   * @param step such as "step 2": what this is, once while the alert stands
+   * @param number how many times the person on call has been told with this
    * @returns the ways in words, such as "mail, push"
    */
-  async tell(manager: EntityManager, alert: Alert, person: Told, step: number, at: Date): Promise<string> {
-    const key = `alert ${alert.id} raised ${alert.raisedAt.getTime()} step ${step}`;
+  async tell(
+    manager: EntityManager,
+    alert: Alert,
+    person: Told,
+    step: string,
+    number: number,
+    at: Date,
+  ): Promise<string> {
+    // After a shelf or maintenance its steps are taken anew: what they say is no copy of what was said before.
+    const key = `alert ${alert.id} since ${(alert.standsSince ?? alert.raisedAt).getTime()} ${step}`;
     const acknowledgeUrl = await this.links.make(manager, alert, person.userId, at);
     const publicUrl = this.config.get('PUBLIC_URL', { infer: true });
     await this.outbox.enqueue(manager, {
@@ -49,7 +59,7 @@ export class AlertNoticesService {
       alertId: alert.id,
       siteId: alert.siteId,
       picture: this.pictureOf(alert.axis),
-      ...alertMail(alert, step, publicUrl, acknowledgeUrl),
+      ...alertMail(alert, number, publicUrl, acknowledgeUrl),
     });
     const quick = await this.quick.tell(
       manager,

@@ -17,9 +17,13 @@ export const ALERT_STATES = [
   'returned-unacknowledged',
   'shelved',
   'suppressed',
+  'out-of-service',
   'normal',
 ] as const;
-/** Alert states by ANSI/ISA-18.2: `normal` is over, `suppressed` by design while the axis is in maintenance. */
+/**
+ * Alert states by ANSI/ISA-18.2: `normal` is over; `suppressed` is by design, while the axis is in maintenance or its
+ * gateway is known down; `out-of-service` was set by a person and ends by a person.
+ */
 export type AlertState = (typeof ALERT_STATES)[number];
 
 export const PRIORITIES = ['high', 'medium', 'low'] as const;
@@ -28,6 +32,7 @@ export type Priority = (typeof PRIORITIES)[number];
 @Entity()
 @Index(['axisId', 'rule'], { unique: true, where: `"state" <> 'normal'` })
 @Index(['state'])
+@Index('IDX_alert_raisedAt', ['raisedAt'])
 export class Alert {
   @PrimaryGeneratedColumn()
   id: number;
@@ -73,6 +78,20 @@ export class Alert {
   @Column({ type: 'text', nullable: true })
   shelveReason: string | null;
 
+  /** Why it is suppressed, in a sentence; null while it is not. */
+  @Column({ type: 'text', nullable: true })
+  suppressedBecause: string | null;
+
+  @Column({ type: 'text', nullable: true })
+  outOfServiceBy: string | null;
+
+  @Column({ type: 'text', nullable: true })
+  outOfServiceReason: string | null;
+
+  /** The gateway for all of whose silent axes this alert speaks; null for an alert about its own axis only. */
+  @Column({ type: 'integer', nullable: true })
+  gatewayId: number | null;
+
   /** What was measured when it was raised or last looked at, in the rule's unit. */
   @Column('real')
   value: number;
@@ -87,9 +106,25 @@ export class Alert {
   @Column()
   action: string;
 
-  /** How many mails have gone out about it. */
+  /** What happens when nobody does anything. */
+  @Column({ type: 'text', nullable: true })
+  consequence: string | null;
+
+  /** s from when it began to stand in which somebody should respond; null where nothing is said. */
+  @Column({ type: 'integer', nullable: true })
+  respondWithin: number | null;
+
+  /** When it last became unacknowledged: raised, raised again, or back from a shelf, suppression or out of service. */
+  @Column({ type: 'datetime', nullable: true })
+  standsSince: Date | null;
+
+  /** Steps of the escalation taken since then. */
   @Column({ default: 0 })
   stepsTaken: number;
+
+  /** When the site's fallback was last told because nobody was on call; null when that was not needed. */
+  @Column({ type: 'datetime', nullable: true })
+  fallbackToldAt: Date | null;
 
   /** When the next person is told unless somebody acknowledges; null when nobody is to be told. */
   @Column({ type: 'datetime', nullable: true })

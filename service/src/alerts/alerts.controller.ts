@@ -2,7 +2,6 @@ import {
   BadRequestException,
   Body,
   Controller,
-  ForbiddenException,
   Get,
   HttpCode,
   NotFoundException,
@@ -14,12 +13,14 @@ import {
 } from '@nestjs/common';
 import { ApiBearerAuth, ApiOkResponse, ApiTags } from '@nestjs/swagger';
 import { InjectDataSource } from '@nestjs/typeorm';
-import { In, LessThan, Not, type DataSource } from 'typeorm';
+import { In, type DataSource } from 'typeorm';
 import { CurrentUser } from '../auth/current-user.decorator.js';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
 import { pageOf, type Page } from '../page.js';
 import { LIVE_STATES, Proposal } from '../proposals/proposal.entity.js';
-import { Alert, PRIORITIES, type AlertState } from './alert.entity.js';
+import { AlertMarks } from './alert-marks.service.js';
+import { AlertRulesService } from './alert-rules.service.js';
+import type { Alert } from './alert.entity.js';
 import { AlertsService } from './alerts.service.js';
 import {
   AcknowledgeDto,
@@ -30,6 +31,7 @@ import {
   AlertRulesDto,
   ChangeAlertRuleDto,
   AlertNoteDto,
+  OutOfServiceDto,
   ShelveDto,
 } from './dto/alert.dto.js';
 import { RULE, RULES, RULE_TITLES, type RuleName } from './rules.js';
@@ -42,6 +44,7 @@ const LONGEST_SHELF_MS = 30 * 86_400_000;
 export class AlertsController {
   constructor(
     private readonly alerts: AlertsService,
+    private readonly marks: AlertMarks,
     @InjectDataSource() private readonly dataSource: DataSource,
   ) {}
 
@@ -51,25 +54,14 @@ export class AlertsController {
   async list(@Query() query: AlertQuery, @CurrentUser() user: SignedInUser): Promise<Page<AlertDto>> {
     const { limit, cursor, state, axisId, siteId } = query;
     const from = wholeNumber(cursor ?? '0');
-    const rows = await this.dataSource.getRepository(Alert).find({
-      where: {
-        siteId: In(sitesOf(user).filter((id) => siteId === undefined || id === siteId)),
-        state: state === 'open' ? Not('normal') : state,
-        ...(axisId !== undefined && { axisId }),
-        ...(state !== 'open' && from > 0 && { id: LessThan(from) }),
-      },
-      relations: { axis: { machine: true, site: true }, events: true },
-      order: { id: 'DESC' },
-      ...(state !== 'open' && { take: limit + 1 }),
-    });
-    // Open alerts are few (one per axis and rule) and come by urgency; what is over is paged by number.
-    if (state === 'open') rows.sort(byUrgency).splice(0, from);
-    const proposals = await this.proposalsOf(rows.map((alert) => alert.axisId));
+    const siteIds = sitesOf(user).filter((id) => siteId === undefined || id === siteId);
+    const rows = await this.alerts.list({ siteIds, state, axisId, limit, from });
+    const dtos = await this.dtosOf(rows.slice(0, limit));
     return pageOf(
       rows,
       limit,
       (last) => String(state === 'open' ? from + limit : last.id),
-      (alert) => AlertDto.of(alert, proposals.get(alert.axisId) ?? null),
+      ({ id }) => dtos.get(id)!,
     );
   }
 
@@ -77,7 +69,7 @@ export class AlertsController {
   @ApiOkResponse({ type: AlertDto })
   async get(@Param('id', ParseIntPipe) id: number, @CurrentUser() user: SignedInUser): Promise<AlertDto> {
     const alert = await this.alerts.get(id, user);
-    return AlertDto.of(alert, (await this.proposalsOf([alert.axisId])).get(alert.axisId) ?? null);
+    return (await this.dtosOf([alert])).get(id)!;
   }
 
   @Post(':id/acknowledge')
@@ -131,6 +123,40 @@ export class AlertsController {
     return this.get(id, user);
   }
 
+  @Post(':id/take-out-of-service')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async takeOutOfService(
+    @Param('id', ParseIntPipe) id: number,
+    @Body() { reason }: OutOfServiceDto,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
+    await this.alerts.takeOutOfService(id, user, reason);
+    return this.get(id, user);
+  }
+
+  @Post(':id/return-to-service')
+  @HttpCode(200)
+  @ApiOkResponse({ type: AlertDto })
+  async returnToService(
+    @Param('id', ParseIntPipe) id: number,
+    @CurrentUser() user: SignedInUser,
+  ): Promise<AlertDto> {
+    await this.alerts.returnToService(id, user);
+    return this.get(id, user);
+  }
+
+  private async dtosOf(alerts: readonly Alert[]): Promise<Map<number, AlertDto>> {
+    const proposals = await this.proposalsOf(alerts.map(({ axisId }) => axisId));
+    const marks = await this.marks.of(alerts, new Date());
+    return new Map(
+      alerts.map((alert) => [
+        alert.id,
+        AlertDto.of(alert, proposals.get(alert.axisId) ?? null, marks.get(alert.id)!),
+      ]),
+    );
+  }
+
   /** The live proposal of each axis. */
   private async proposalsOf(axisIds: number[]): Promise<Map<number, number>> {
     if (axisIds.length === 0) return new Map();
@@ -146,7 +172,7 @@ export class AlertsController {
 @ApiBearerAuth()
 @Controller('alert-rules')
 export class AlertRulesController {
-  constructor(private readonly alerts: AlertsService) {}
+  constructor(private readonly rules: AlertRulesService) {}
 
   @Get()
   @ApiOkResponse({ type: AlertRulesDto })
@@ -163,42 +189,15 @@ export class AlertRulesController {
   ): Promise<AlertRuleDto> {
     const known = RULES.find((name) => name === rule);
     if (!known) throw new NotFoundException(`There is no rule "${rule}"; there are ${RULES.join(', ')}`);
-    if (sitesOf(user, 'alert-rule.change').length === 0)
-      throw new ForbiddenException('Only engineers and approvers may change rules');
-    await this.alerts.changeRule(known, change, user);
+    await this.rules.change(known, change, user);
     return this.dto(known);
   }
 
   private dto(rule: RuleName): AlertRuleDto {
     const { unit, relative } = RULE[rule];
-    const { threshold, deadband, onDelay, offDelay, priority, mailAfter } = this.alerts.settingsOf(rule);
-    return {
-      rule,
-      title: RULE_TITLES[rule],
-      unit,
-      relative,
-      threshold,
-      deadband,
-      onDelay,
-      offDelay,
-      priority,
-      mailAfter,
-    };
+    return { rule, title: RULE_TITLES[rule], unit, relative, ...this.rules.settingsOf(rule) };
   }
 }
-
-const URGENCY: AlertState[] = [
-  'unacknowledged',
-  'returned-unacknowledged',
-  'acknowledged',
-  'shelved',
-  'suppressed',
-];
-
-const byUrgency = (a: Alert, b: Alert): number =>
-  URGENCY.indexOf(a.state) - URGENCY.indexOf(b.state) ||
-  PRIORITIES.indexOf(a.priority) - PRIORITIES.indexOf(b.priority) ||
-  b.raisedAt.getTime() - a.raisedAt.getTime();
 
 function wholeNumber(cursor: string): number {
   const value = Number(cursor);

@@ -1,6 +1,7 @@
 import { Injectable } from '@nestjs/common';
 import { InjectRepository } from '@nestjs/typeorm';
 import { Brackets, type EntityManager, Repository, type SelectQueryBuilder } from 'typeorm';
+import type { QueryDeepPartialEntity } from 'typeorm/query-builder/QueryPartialEntity.js';
 import { sitesOf, type SignedInUser } from '../auth/signed-in-user.js';
 import { Transactions } from '../database/transactions.js';
 import { UserRole } from '../people/user-role.entity.js';
@@ -58,27 +59,43 @@ export class AuditService {
    * @param manager of a unit of work of `Transactions`, which runs one at a time: the chain has one end
    */
   async record(manager: EntityManager, record: AuditRecord): Promise<void> {
+    await this.recordAll(manager, [record]);
+  }
+
+  /** The same for many at once, in their order: one look for the end of the chain and few statements. */
+  async recordAll(manager: EntityManager, records: readonly AuditRecord[]): Promise<void> {
+    if (records.length === 0) return;
     const last = await manager.findOne(AuditEntry, {
       select: { id: true, hash: true },
       where: {},
       order: { id: 'DESC' },
     });
-    const previousHash = last?.hash ?? ORIGIN;
-    const entry = {
-      at: new Date(),
-      userId: record.user?.id ?? null,
-      actor: record.user?.name ?? SERVICE_NAME,
-      action: record.action,
-      subjectType: record.subject.type,
-      subjectId: String(record.subject.id),
-      siteId: record.siteId ?? null,
-      note: record.note ?? null,
-      before: asStored(record.before),
-      after: asStored(record.after),
-    };
-    await manager.save(
-      Object.assign(new AuditEntry(), entry, { previousHash, hash: chainHash(previousHash, entry) }),
-    );
+    let previousHash = last?.hash ?? ORIGIN;
+    const entries = records.map((record) => {
+      const content = {
+        at: new Date(),
+        userId: record.user?.id ?? null,
+        actor: record.user?.name ?? SERVICE_NAME,
+        action: record.action,
+        subjectType: record.subject.type,
+        subjectId: String(record.subject.id),
+        siteId: record.siteId ?? null,
+        note: record.note ?? null,
+        before: asStored(record.before),
+        after: asStored(record.after),
+      };
+      const entry = { ...content, previousHash, hash: chainHash(previousHash, content) };
+      previousHash = entry.hash;
+      return entry;
+    });
+    for (let i = 0; i < entries.length; i += BATCH)
+      await manager
+        .createQueryBuilder()
+        .insert()
+        .into(AuditEntry)
+        .values(entries.slice(i, i + BATCH) as QueryDeepPartialEntity<AuditEntry>[])
+        .updateEntity(false)
+        .execute();
   }
 
   /**

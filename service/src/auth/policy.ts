@@ -15,6 +15,7 @@ export const POLICY = {
   'alert.acknowledge': TECHNICIAN_AND_UP,
   'alert.shelve': TECHNICIAN_AND_UP,
   'alert.note': TECHNICIAN_AND_UP,
+  'alert.out-of-service': ENGINEER_AND_UP,
   'alert-rule.change': ENGINEER_AND_UP,
   'axis.maintenance': TECHNICIAN_AND_UP,
   'axis.register': ENGINEER_AND_UP,

@@ -1,7 +1,9 @@
 import type { Database } from 'better-sqlite3';
 import type { DataSourceOptions } from 'typeorm';
 import { AlertRule } from '../alerts/alert-rule.entity.js';
+import { AlertTimer } from '../alerts/alert-timer.entity.js';
 import { Alert, AlertEvent } from '../alerts/alert.entity.js';
+import { ServedAxis } from '../alerts/served-axis.entity.js';
 import { AuditEntry } from '../audit/audit-entry.entity.js';
 import { RefreshToken } from '../auth/refresh-token.entity.js';
 import { Capture } from '../captures/capture.entity.js';
@@ -36,6 +38,7 @@ import { Captures1764634000000 } from './migrations/1764634000000-captures.js';
 import { CheckpointParts1764635000100 } from './migrations/1764635000100-checkpoint-parts.js';
 import { ChangesAtMachines1764637000100 } from './migrations/1764637000100-changes-at-machines.js';
 import { ProposalVersions1764637000200 } from './migrations/1764637000200-proposal-versions.js';
+import { AlertLifeCycle1764736000100 } from './migrations/1764736000100-alert-life-cycle.js';
 import { RotaLayers1764738000100 } from './migrations/1764738000100-rota-layers.js';
 import { OutboxAttempts1764738000200 } from './migrations/1764738000200-outbox-attempts.js';
 import { Storage1764737500100 } from './migrations/1764737500100-storage.js';
@@ -56,6 +59,8 @@ export const ENTITIES = [
   AlertRule,
   Alert,
   AlertEvent,
+  AlertTimer,
+  ServedAxis,
   Proposal,
   ProposalEvent,
   ProposalVersion,
@@ -104,6 +109,7 @@ export function dataSourceOptions(database: string): DataSourceOptions {
       CheckpointParts1764635000100,
       ChangesAtMachines1764637000100,
       ProposalVersions1764637000200,
+      AlertLifeCycle1764736000100,
       RotaLayers1764738000100,
       OutboxAttempts1764738000200,
       Storage1764737500100,

@@ -118,7 +118,7 @@ export class GatewaySessions {
     this.intake.startEpoch(progress, epoch);
     progress.lastSeenAt = serviceNow();
     session.served = served.map(({ id }) => id);
-    tell(this.emitter, 'gateway.greeted', { axisIds: session.served });
+    tell(this.emitter, 'gateway.greeted', { gatewayId: progress.id, axisIds: session.served });
     return {
       axes: served.map((axis, index) => {
         const tuning = tuningOf.get(axis.id);

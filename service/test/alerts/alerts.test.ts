@@ -1,5 +1,5 @@
 import { afterAll, beforeAll, beforeEach, describe, expect, test, vi, type MockInstance } from 'vitest';
-import { AlertsService } from '../../src/alerts/alerts.service.js';
+import { AlertWatch } from '../../src/alerts/alert-watch.service.js';
 import { commission, FakeGateway, type CommissionedAxis } from '../support/fake-gateway.js';
 import { startService, until, type Caller, type Service } from '../support/start-service.js';
 
@@ -29,11 +29,11 @@ let engineer: Caller;
 let technician: Caller;
 let viewer: Caller;
 let stranger: Caller;
-let looks: MockInstance<AlertsService['lookAtAll']>;
+let looks: MockInstance<AlertWatch['lookAtAll']>;
 
 beforeAll(async () => {
   service = await startService();
-  looks = vi.spyOn(service.app.get(AlertsService), 'lookAtAll');
+  looks = vi.spyOn(service.app.get(AlertWatch), 'lookAtAll');
   [admin, engineer, technician, viewer] = (await Promise.all(
     ['admin', 'engineer', 'technician', 'viewer'].map((who) => service.as(who)),
   )) as [Caller, Caller, Caller, Caller];
@@ -233,8 +233,49 @@ describe('shelving', () => {
     );
     const over = await slide.untilAlert('normal');
     expect(over.returnedAt).not.toBeNull();
-    expect(over.events.map(({ action }) => action)).toEqual(['raised', 'shelved', 'taken off the shelf']);
+    expect(over.events.map(({ action }) => action)).toEqual([
+      'raised',
+      'shelved',
+      'returned to normal',
+      'taken off the shelf',
+    ]);
   });
+});
+
+test('out of service: by an engineer with a reason, silent until an engineer returns it', async () => {
+  const outOf = (who: Caller, body: object): ReturnType<Caller['post']> =>
+    who.post(path(alert, 'take-out-of-service')).send(body);
+  await outOf(technician, { reason: 'Encoder on order' }).expect(403);
+  await outOf(stranger, { reason: 'Encoder on order' }).expect(404);
+  for (const body of [{}, { reason: '' }, { reason: 5 }, { reason: 'x'.repeat(2001) }]) {
+    const answer = await outOf(engineer, body).expect(400);
+    expect((answer.body as { errors: { path: string }[] }).errors[0]!.path).toBe('reason');
+  }
+  await engineer.post(path(alert, 'return-to-service')).send({}).expect(409);
+  const { body } = await outOf(engineer, { reason: 'Encoder on order' }).expect(200);
+  expect(body).toMatchObject({
+    state: 'out-of-service',
+    outOfServiceReason: 'Encoder on order',
+    nextStepAt: null,
+  });
+  await outOf(engineer, { reason: 'Again' }).expect(409);
+  await technician.post(path(alert, 'acknowledge')).send({}).expect(409);
+  await twoLooks();
+  expect((await slide.alerts('&state=open')).map(({ state }) => state)).toEqual(['out-of-service']);
+  const back = await engineer.post(path(alert, 'return-to-service')).send({}).expect(200);
+  expect(back.body).toMatchObject({ state: 'unacknowledged', outOfServiceReason: null });
+});
+
+test('a rule counts on every site: who may change it on one of them only is refused', async () => {
+  await service.addPerson('oneside', [{ siteId: service.siteIds[0], role: 'engineer' }]);
+  const oneside = await service.as('oneside');
+  const answer = await oneside.patch('/api/v1/alert-rules/no-signal').send({ threshold: 11 }).expect(403);
+  expect((answer.body as { detail: string }).detail).toMatch(/every site/);
+  const wrong = await engineer
+    .patch('/api/v1/alert-rules/no-signal')
+    .send({ threshold: 5, deadband: 5 })
+    .expect(400);
+  expect((wrong.body as { errors: { path: string }[] }).errors).toMatchObject([{ path: 'deadband' }]);
 });
 
 test('maintenance suppresses an alert; afterwards it is over if the error is, and back if it stands', async () => {

@@ -1,6 +1,6 @@
 import { expect, test } from 'vitest';
 import { AxisLevelsService } from '../../src/alerts/axis-levels.service.js';
-import { lookAtLevel, RULE, type RuleTimer } from '../../src/alerts/rules.js';
+import { idleTimer, lookAtLevel, RULE } from '../../src/alerts/rules.js';
 import type { Axis } from '../../src/fleet/axis.entity.js';
 import type { RecentSeconds } from '../../src/indicators/recent-seconds.js';
 import type { IntakeService } from '../../src/telemetry/intake.service.js';
@@ -12,7 +12,7 @@ test('what a worse trial raised clears when the trial ends, however it ends', ()
   );
   const axis = { id: 1, tolerances: { followingError: 1, saturatedPct: 5 } } as Axis;
   const { measure, defaults } = RULE['trial-regression'];
-  const timer: RuleTimer = { active: false, since: null };
+  const timer = idleTimer();
   const look = (verdict: string | null, at: number): 'raise' | 'clear' | null =>
     lookAtLevel(
       timer,

@@ -2,7 +2,7 @@ import request from 'supertest';
 import { Like } from 'typeorm';
 import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from 'vitest';
 import { Alert, AlertEvent } from '../../src/alerts/alert.entity.js';
-import { AlertsService } from '../../src/alerts/alerts.service.js';
+import { AlertWatch } from '../../src/alerts/alert-watch.service.js';
 import { EscalationService } from '../../src/alerts/escalation.service.js';
 import { Axis } from '../../src/fleet/axis.entity.js';
 import { DigestService } from '../../src/on-call/digest.service.js';
@@ -21,7 +21,7 @@ const alerts = () => service.dataSource.getRepository(Alert);
 beforeAll(async () => {
   service = await startService();
   // The alerts here are put into the table: no beat may judge them by samples that there are none of.
-  service.app.get(AlertsService).lookAtAll = () => Promise.resolve();
+  service.app.get(AlertWatch).lookAtAll = () => Promise.resolve();
   axis = await service.dataSource.getRepository(Axis).findOneByOrFail({ siteId: service.siteIds[0] });
 });
 afterAll(() => service.close());

@@ -9,6 +9,8 @@ const ENGINEER_AND_UP: readonly Role[] = ['engineer', 'approver'];
 const POLICY = {
   'alert.acknowledge': TECHNICIAN_AND_UP,
   'alert.shelve': TECHNICIAN_AND_UP,
+  'alert.out-of-service': ENGINEER_AND_UP,
+  'alert-rule.change': ENGINEER_AND_UP,
   'axis.maintenance': TECHNICIAN_AND_UP,
   'axis.baseline': ENGINEER_AND_UP,
   'capture.take': TECHNICIAN_AND_UP,

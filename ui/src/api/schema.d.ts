@@ -622,6 +622,38 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/api/v1/alerts/{id}/take-out-of-service": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["AlertsController_takeOutOfService"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/api/v1/alerts/{id}/return-to-service": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["AlertsController_returnToService"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/api/v1/alert-rules": {
         parameters: {
             query?: never;
@@ -1890,7 +1922,7 @@ export interface components {
             rule: "output-saturation" | "following-error" | "gain-drift" | "pole-drift" | "dry-friction" | "output-activity" | "no-signal" | "trial-regression";
             priority: string;
             /** @enum {string} */
-            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "out-of-service" | "normal";
         };
         AxisProposalDto: {
             id: number;
@@ -2234,7 +2266,7 @@ export interface components {
             /** @enum {string} */
             priority: "high" | "medium" | "low";
             /** @enum {string} */
-            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "out-of-service" | "normal";
             /** Format: date-time */
             raisedAt: string;
             /** Format: date-time */
@@ -2260,6 +2292,26 @@ export interface components {
              * @description When the next person is told unless somebody acknowledges
              */
             nextStepAt: string | null;
+            /** @description What happens when nobody does anything */
+            consequence: string | null;
+            /**
+             * Format: date-time
+             * @description By when somebody should respond; null once somebody has, or where nothing is said
+             */
+            respondBy: string | null;
+            /** @description Why it is suppressed */
+            suppressedBecause: string | null;
+            outOfServiceBy: string | null;
+            outOfServiceReason: string | null;
+            /**
+             * Format: date-time
+             * @description Since when its level cannot be measured
+             */
+            levelUnknownSince: string | null;
+            /** @description It comes and goes: its deadband or delays are too small */
+            chattering: boolean;
+            /** @description It has stood for more than a day */
+            stale: boolean;
             /** @description The axis’s open proposal */
             proposalId: number | null;
             /** @description Oldest first */
@@ -2283,6 +2335,9 @@ export interface components {
         AlertNoteDto: {
             note: string;
         };
+        OutOfServiceDto: {
+            reason: string;
+        };
         AlertRuleDto: {
             /** @enum {string} */
             rule: "output-saturation" | "following-error" | "gain-drift" | "pole-drift" | "dry-friction" | "output-activity" | "no-signal" | "trial-regression";
@@ -2301,6 +2356,14 @@ export interface components {
             priority: "high" | "medium" | "low";
             /** @description s without acknowledgement until the first mail */
             mailAfter: number;
+            /** @description s for which the level must be unknown before its alert counts as over */
+            unknownAfter: number;
+            /** @description s in which somebody should respond */
+            respondWithin: number;
+            /** @description What happens when nobody does anything */
+            consequence: string;
+            /** @description What to do; null: as worked out from the evidence */
+            whatToDo: string | null;
         };
         AlertRulesDto: {
             items: components["schemas"]["AlertRuleDto"][];
@@ -2314,6 +2377,10 @@ export interface components {
             /** @enum {string} */
             priority?: "high" | "medium" | "low";
             mailAfter?: number;
+            unknownAfter?: number;
+            respondWithin?: number;
+            consequence?: string;
+            whatToDo?: string | null;
         };
         UnitsDto: {
             /**
@@ -3134,7 +3201,7 @@ export interface components {
             /** @enum {string} */
             priority: "high" | "medium" | "low";
             /** @enum {string} */
-            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "out-of-service" | "normal";
             /** Format: date-time */
             raisedAt: string;
             message: string;
@@ -3231,7 +3298,7 @@ export interface components {
             axisTag: string;
             title: string;
             /** @enum {string} */
-            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+            state: "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "out-of-service" | "normal";
             /** Format: date-time */
             raisedAt: string;
         };
@@ -4616,7 +4683,7 @@ export interface operations {
                 /** @description From the former answer’s nextCursor */
                 cursor?: string;
                 /** @description "open" is everything that is not over */
-                state?: "open" | "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "normal";
+                state?: "open" | "unacknowledged" | "acknowledged" | "returned-unacknowledged" | "shelved" | "suppressed" | "out-of-service" | "normal";
                 axisId?: number;
                 siteId?: number;
             };
@@ -4742,6 +4809,52 @@ export interface operations {
                 "application/json": components["schemas"]["AlertNoteDto"];
             };
         };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AlertDto"];
+                };
+            };
+        };
+    };
+    AlertsController_takeOutOfService: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["OutOfServiceDto"];
+            };
+        };
+        responses: {
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AlertDto"];
+                };
+            };
+        };
+    };
+    AlertsController_returnToService: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                id: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
         responses: {
             200: {
                 headers: {

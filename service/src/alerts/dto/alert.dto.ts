@@ -14,6 +14,7 @@ import {
 } from 'class-validator';
 import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
 import { ALERT_STATES, PRIORITIES, type Alert, type AlertState, type Priority } from '../alert.entity.js';
+import type { Marks } from '../alert-marks.service.js';
 import { RULE, RULES, RULE_TITLES, type RuleName } from '../rules.js';
 
 export class AlertEventDto {
@@ -106,13 +107,37 @@ export class AlertDto {
   @NullableTime('When the next person is told unless somebody acknowledges')
   nextStepAt: Date | null;
 
+  @NullableText('What happens when nobody does anything')
+  consequence: string | null;
+
+  @NullableTime('By when somebody should respond; null once somebody has, or where nothing is said')
+  respondBy: Date | null;
+
+  @NullableText('Why it is suppressed')
+  suppressedBecause: string | null;
+
+  @NullableText()
+  outOfServiceBy: string | null;
+
+  @NullableText()
+  outOfServiceReason: string | null;
+
+  @NullableTime('Since when its level cannot be measured')
+  levelUnknownSince: Date | null;
+
+  @ApiProperty({ description: 'It comes and goes: its deadband or delays are too small' })
+  chattering: boolean;
+
+  @ApiProperty({ description: 'It has stood for more than a day' })
+  stale: boolean;
+
   @NullableNumber('The axis’s open proposal')
   proposalId: number | null;
 
   @ApiProperty({ type: [AlertEventDto], description: 'Oldest first' })
   events: AlertEventDto[];
 
-  static of(alert: Alert, proposalId: number | null): AlertDto {
+  static of(alert: Alert, proposalId: number | null, marks: Marks): AlertDto {
     const { axis } = alert;
     return {
       id: alert.id,
@@ -140,6 +165,15 @@ export class AlertDto {
       message: alert.message,
       action: alert.action,
       nextStepAt: alert.nextStepAt,
+      consequence: alert.consequence,
+      respondBy:
+        alert.state === 'unacknowledged' && alert.respondWithin !== null
+          ? new Date((alert.standsSince ?? alert.raisedAt).getTime() + alert.respondWithin * 1000)
+          : null,
+      suppressedBecause: alert.suppressedBecause,
+      outOfServiceBy: alert.outOfServiceBy,
+      outOfServiceReason: alert.outOfServiceReason,
+      ...marks,
       proposalId,
       events: [...alert.events]
         .sort((a, b) => a.id - b.id)
@@ -202,6 +236,14 @@ export class ShelveDto {
   reason: string;
 }
 
+export class OutOfServiceDto {
+  @ApiProperty({ maxLength: 2000 })
+  @IsString()
+  @IsNotEmpty()
+  @MaxLength(2000)
+  reason: string;
+}
+
 export class AlertRuleDto {
   @ApiProperty({ enum: RULES })
   rule: RuleName;
@@ -232,6 +274,18 @@ export class AlertRuleDto {
 
   @ApiProperty({ description: 's without acknowledgement until the first mail' })
   mailAfter: number;
+
+  @ApiProperty({ description: 's for which the level must be unknown before its alert counts as over' })
+  unknownAfter: number;
+
+  @ApiProperty({ description: 's in which somebody should respond' })
+  respondWithin: number;
+
+  @ApiProperty({ description: 'What happens when nobody does anything' })
+  consequence: string;
+
+  @NullableText('What to do; null: as worked out from the evidence')
+  whatToDo: string | null;
 }
 
 export class AlertRulesDto {
@@ -276,8 +330,36 @@ export class ChangeAlertRuleDto {
 
   @ApiPropertyOptional({ minimum: 0, maximum: 86400 })
   @IsOptional()
-  @IsNumber()
+  @IsInt()
   @Min(0)
   @Max(86_400)
   mailAfter?: number;
+
+  @ApiPropertyOptional({ minimum: 60, maximum: 2592000 })
+  @IsOptional()
+  @IsInt()
+  @Min(60)
+  @Max(2_592_000)
+  unknownAfter?: number;
+
+  @ApiPropertyOptional({ minimum: 60, maximum: 2592000 })
+  @IsOptional()
+  @IsInt()
+  @Min(60)
+  @Max(2_592_000)
+  respondWithin?: number;
+
+  @ApiPropertyOptional({ maxLength: 500 })
+  @IsOptional()
+  @IsString()
+  @IsNotEmpty()
+  @MaxLength(500)
+  consequence?: string;
+
+  @ApiPropertyOptional({ type: String, nullable: true, maxLength: 500 })
+  @IsOptional()
+  @IsString()
+  @IsNotEmpty()
+  @MaxLength(500)
+  whatToDo?: string | null;
 }

@@ -10,6 +10,7 @@ import { StateEdge } from '../../components/state-edge';
 import { STATE_COLOUR, STATE_TINT, type AxisState } from '../../components/states';
 import classes from './alerts.module.css';
 import { acknowledge, unshelve, type Alert } from './alerts-api';
+import { Service } from './out-of-service';
 import { ShelveDialog } from './shelve-dialog';
 
 const WORDS: Record<Alert['state'], string> = {
@@ -17,7 +18,8 @@ const WORDS: Record<Alert['state'], string> = {
   acknowledged: 'Acknowledged',
   'returned-unacknowledged': 'Returned to normal, unacknowledged',
   shelved: 'Shelved',
-  suppressed: 'Suppressed: in maintenance',
+  suppressed: 'Suppressed by design',
+  'out-of-service': 'Out of service',
   normal: 'Over',
 };
 
@@ -67,8 +69,10 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
             until <SiteTime at={alert.shelvedUntil} timeZone={alert.timeZone} /> by {alert.shelvedBy}:{' '}
             {alert.shelveReason}
           </>
-        )}{' '}
-        · <SiteTime at={alert.raisedAt} timeZone={alert.timeZone} relative />
+        )}
+        {alert.suppressedBecause && `: ${alert.suppressedBecause}`}
+        {alert.outOfServiceReason && ` by ${alert.outOfServiceBy}: ${alert.outOfServiceReason}`} ·{' '}
+        <SiteTime at={alert.raisedAt} timeZone={alert.timeZone} relative />
         {alert.returnedAt && (
           <>
             , returned to normal <SiteTime at={alert.returnedAt} timeZone={alert.timeZone} />
@@ -90,6 +94,18 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
       </div>
       <p style={{ fontWeight: 560 }}>{alert.message}</p>
       {alert.state !== 'normal' && <p className="soft">Do: {alert.action}</p>}
+      {alert.state !== 'normal' && (alert.consequence || alert.respondBy) && (
+        <p className="soft small">
+          {alert.consequence && `If nothing is done: ${alert.consequence}`}
+          {alert.respondBy && (
+            <>
+              {' '}
+              Respond by <SiteTime at={alert.respondBy} timeZone={alert.timeZone} />.
+            </>
+          )}
+        </p>
+      )}
+      <Marks alert={alert} />
       {told.length > 0 && (
         <ul className={classes.told} aria-label="Who was told">
           {told.map(({ at, action, note }, i) => (
@@ -141,7 +157,24 @@ export function AlertCard({ alert, detailed = false }: { alert: Alert; detailed?
           </Button>
         )}
       </div>
+      {detailed && <Service alert={alert} />}
       {shelving && <ShelveDialog alert={alert} onClose={() => setShelving(false)} />}
     </article>
+  );
+}
+
+/** What makes an alert worth less than it should be. */
+function Marks({ alert: { chattering, stale, levelUnknownSince, timeZone } }: { alert: Alert }) {
+  if (!chattering && !stale && !levelUnknownSince) return null;
+  return (
+    <ul className={classes.told} aria-label="Marks">
+      {chattering && <li>Chattering: it comes and goes</li>}
+      {stale && <li>Stale: it has stood for more than a day</li>}
+      {levelUnknownSince && (
+        <li>
+          Not measured since <SiteTime at={levelUnknownSince} timeZone={timeZone} />
+        </li>
+      )}
+    </ul>
   );
 }

@@ -76,6 +76,16 @@ export const shelve = (id: number, until: Date, reason: string) =>
 export const unshelve = (id: number) =>
   changed(answer(client.POST('/api/v1/alerts/{id}/unshelve', { params: { path: { id } } })));
 
+export const takeOutOfService = (id: number, reason: string) =>
+  changed(
+    answer(
+      client.POST('/api/v1/alerts/{id}/take-out-of-service', { params: { path: { id } }, body: { reason } }),
+    ),
+  );
+
+export const returnToService = (id: number) =>
+  changed(answer(client.POST('/api/v1/alerts/{id}/return-to-service', { params: { path: { id } } })));
+
 export const addNote = (id: number, note: string) =>
   changed(answer(client.POST('/api/v1/alerts/{id}/note', { params: { path: { id } }, body: { note } })));
 
