@@ -1,7 +1,7 @@
 import { applyDecorators } from '@nestjs/common';
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
 import { Type } from 'class-transformer';
-import { IsInt, IsOptional, IsString, Max, Min } from 'class-validator';
+import { IsInt, IsOptional, IsString, Max, Min, ValidateIf } from 'class-validator';
 
 /** `limit` and `cursor` of every list. */
 export class PageQuery {
@@ -18,6 +18,10 @@ export class PageQuery {
   @IsString()
   cursor?: string;
 }
+
+/** A field that may be left out of a change, but is not null: `IsOptional` lets null through. */
+export const MayBeLeftOut = (): PropertyDecorator =>
+  ValidateIf((_object: unknown, value: unknown) => value !== undefined);
 
 /** A page of a list, and where the next one starts; null at the end. */
 export interface Page<T> {

@@ -276,6 +276,12 @@ test('a rule counts on every site: who may change it on one of them only is refu
     .send({ threshold: 5, deadband: 5 })
     .expect(400);
   expect((wrong.body as { errors: { path: string }[] }).errors).toMatchObject([{ path: 'deadband' }]);
+  const none = await engineer
+    .patch('/api/v1/alert-rules/no-signal')
+    .send({ threshold: null, onDelay: 2.5 })
+    .expect(400);
+  const named = (none.body as { errors: { path: string }[] }).errors.map(({ path: at }) => at);
+  expect(new Set(named)).toEqual(new Set(['threshold', 'onDelay']));
 });
 
 test('maintenance suppresses an alert; afterwards it is over if the error is, and back if it stands', async () => {

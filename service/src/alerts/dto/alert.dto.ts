@@ -12,7 +12,7 @@ import {
   MaxLength,
   Min,
 } from 'class-validator';
-import { NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
+import { MayBeLeftOut, NullableNumber, NullableText, NullableTime, PageOf, PageQuery } from '../../page.js';
 import { ALERT_STATES, PRIORITIES, type Alert, type AlertState, type Priority } from '../alert.entity.js';
 import type { Marks } from '../alert-marks.service.js';
 import { RULE, RULES, RULE_TITLES, type RuleName } from '../rules.js';
@@ -298,59 +298,59 @@ export class AlertRulesDto {
 
 export class ChangeAlertRuleDto {
   @ApiPropertyOptional({ minimum: 0 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsNumber()
   @Min(0)
   threshold?: number;
 
   @ApiPropertyOptional({ minimum: 0 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsNumber()
   @Min(0)
   deadband?: number;
 
   @ApiPropertyOptional({ minimum: 0, maximum: 86400 })
-  @IsOptional()
-  @IsNumber()
+  @MayBeLeftOut()
+  @IsInt()
   @Min(0)
   @Max(86_400)
   onDelay?: number;
 
   @ApiPropertyOptional({ minimum: 0, maximum: 86400 })
-  @IsOptional()
-  @IsNumber()
+  @MayBeLeftOut()
+  @IsInt()
   @Min(0)
   @Max(86_400)
   offDelay?: number;
 
   @ApiPropertyOptional({ enum: PRIORITIES })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsIn(PRIORITIES)
   priority?: Priority;
 
   @ApiPropertyOptional({ minimum: 0, maximum: 86400 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   @Min(0)
   @Max(86_400)
   mailAfter?: number;
 
   @ApiPropertyOptional({ minimum: 60, maximum: 2592000 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   @Min(60)
   @Max(2_592_000)
   unknownAfter?: number;
 
   @ApiPropertyOptional({ minimum: 60, maximum: 2592000 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   @Min(60)
   @Max(2_592_000)
   respondWithin?: number;
 
   @ApiPropertyOptional({ maxLength: 500 })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsString()
   @IsNotEmpty()
   @MaxLength(500)

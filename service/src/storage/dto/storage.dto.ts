@@ -1,6 +1,6 @@
 import { ApiProperty, ApiPropertyOptional } from '@nestjs/swagger';
-import { IsInt, IsOptional, IsString, Matches } from 'class-validator';
-import { NullableTime, NullableNumber, NullableText } from '../../page.js';
+import { IsInt, IsString, Matches } from 'class-validator';
+import { MayBeLeftOut, NullableTime, NullableNumber, NullableText } from '../../page.js';
 import { RETENTION_KINDS, type RetentionKind } from '../retention.js';
 
 export class RetentionDto {
@@ -26,27 +26,27 @@ export class RetentionDto {
 /** What is left out stays as it is. */
 export class ChangeRetentionDto implements Partial<Record<RetentionKind, number>> {
   @ApiPropertyOptional({ description: 's' })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   seconds?: number;
 
   @ApiPropertyOptional({ description: 's' })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   minutes?: number;
 
   @ApiPropertyOptional({ description: 's' })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   hours?: number;
 
   @ApiPropertyOptional({ description: 's' })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   estimates?: number;
 
   @ApiPropertyOptional({ description: 's' })
-  @IsOptional()
+  @MayBeLeftOut()
   @IsInt()
   alertCaptures?: number;
 }
