@@ -25,15 +25,12 @@ export class SampleRecorder {
   private readonly kept = new Map<number, KeptBlock[]>();
   private readonly recordings = new Map<number, Recording[]>();
 
-  /** Takes a block that the intake has taken; its arrays are views on the message and are copied. */
+  /**
+   * Takes a block that the intake has taken. Its arrays are views on the message, which nobody writes to again and
+   * whose other blocks are kept as long: a copy would cost a tenth of the intake and save no memory.
+   */
   push(axisId: number, { startUs, sampleTimeUs, target, position, output }: FrameBlock): void {
-    const block = {
-      startUs,
-      sampleTimeUs,
-      target: target.slice(),
-      position: position.slice(),
-      output: output.slice(),
-    };
+    const block = { startUs, sampleTimeUs, target, position, output };
     const past = this.kept.get(axisId) ?? [];
     // A clock that went back, or a time from the future before: what is older says nothing about now.
     if (past.length > 0 && past.at(-1)!.startUs >= startUs) past.length = 0;
