@@ -3,7 +3,7 @@ import { sampledMaxSensitivity } from '../src/control/sampled-margins.js';
 import type { Axis } from '../src/fleet/axis.entity.js';
 import { causeOf } from '../src/fleet/cause-of.js';
 import { expectedOf, recommend } from '../src/proposals/evidence.js';
-import { median } from '../src/proposals/trial.js';
+import { median } from '../src/proposals/rank-statistics.js';
 import { AxisPipeline } from '../src/telemetry/axis-pipeline.js';
 import { randomSource } from '../test/identification/test-axis.js';
 import { ProductionAxis } from '../test/support/production-axis.js';

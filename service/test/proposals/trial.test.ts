@@ -1,7 +1,8 @@
 import { describe, expect, test } from 'vitest';
 import type { RecordedMove } from '../../src/indicators/move-recorder.js';
 import { CHECKLIST, missingFrom } from '../../src/proposals/checklist.js';
-import { compareMoves, LEAST_MOVES, median, rankTest, shiftBetween } from '../../src/proposals/trial.js';
+import { median, rankTest, shiftBetween } from '../../src/proposals/rank-statistics.js';
+import { compareMoves, LEAST_MOVES } from '../../src/proposals/trial.js';
 import { randomSource } from '../identification/test-axis.js';
 
 describe('the rank test', () => {
